@@ -1,0 +1,146 @@
+"""CoefficientSet: what a density is made from, checked once and then trusted.
+
+Inside, every coefficient is n_m of n(r) = Σ n_m exp(+2πi m·x), in the unit of the density.
+``engine.assembly`` makes a set from a laboratory's columns and resolves their sign convention.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from engine.arrays import BoolArray, ComplexArray, FloatArray, IntArray, as_positive
+from engine.errors import InputError
+from engine.lattice import Lattice
+from engine.series import Series
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Tally:
+    """What became of the rows a set was made from; nothing leaves a set uncounted.
+
+    Attributes
+    ----------
+    rows : int
+        Rows read.
+    repeats_joined : int
+        Rows that repeated another row exactly.
+    mates_joined : int
+        Friedel pairs given on both sides and averaged.
+    beyond_resolution : int
+        Coefficients outside the resolution limits (pairs count once where the density is real).
+    zero_term : str
+        ``measured`` (a row), ``given`` (as the mean) or ``absent``.
+    """
+
+    rows: int
+    repeats_joined: int = 0
+    mates_joined: int = 0
+    beyond_resolution: int = 0
+    zero_term: str = "absent"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class CoefficientSet:
+    """Fourier coefficients of a density on a lattice.
+
+    Attributes
+    ----------
+    lattice : Lattice
+    indices : int64, shape (N, d)
+        Distinct, in lexical order. For a real density one of each Friedel pair, the one
+        whose last index other than zero is positive; the other follows by
+        n_{-m} = conj(n_m).
+    values : complex128, shape (N,)
+        n_m in the density's unit; where the phase is unknown, |n_m|.
+    phase_known : bool, shape (N,)
+    sigma : float64, shape (N,), or None
+        Standard uncertainty of |n_m|, in the density's unit.
+    phase_sigma : float64, shape (N,), or None
+        Standard uncertainty of the phase, radians.
+    merit : float64, shape (N,), or None
+        Figure of merit, the mean resultant length of the phase's distribution, 0…1.
+    real : bool
+        Whether the density is real.
+    unit : str
+        Unit of the density.
+    tally : Tally
+    """
+
+    lattice: Lattice
+    indices: IntArray
+    values: ComplexArray
+    phase_known: BoolArray
+    sigma: FloatArray | None
+    phase_sigma: FloatArray | None
+    merit: FloatArray | None
+    real: bool
+    unit: str
+    tally: Tally
+
+    @property
+    def count(self) -> int:
+        """Coefficients held (pairs count once where the density is real)."""
+        return int(self.values.size)
+
+    @property
+    def unphased(self) -> int:
+        """How many of them have no phase."""
+        return int(np.count_nonzero(~self.phase_known))
+
+    def phased(self) -> CoefficientSet:
+        """Those with a phase."""
+        return self.select(self.phase_known)
+
+    def select(self, kept: BoolArray) -> CoefficientSet:
+        """The rows where `kept` (bool, shape (N,)) is true."""
+
+        def part(column: FloatArray | None) -> FloatArray | None:
+            return None if column is None else column[kept]
+
+        return replace(
+            self,
+            indices=np.asfortranarray(self.indices[kept]),
+            values=self.values[kept],
+            phase_known=self.phase_known[kept],
+            sigma=part(self.sigma),
+            phase_sigma=part(self.phase_sigma),
+            merit=part(self.merit),
+        )
+
+    def within(self, *, d_min: float | None = None, d_max: float | None = None) -> CoefficientSet:
+        """Those with d_min ≤ d ≤ d_max (Å); the zero term always stays.
+
+        Raises
+        ------
+        InputError
+            A limit is not a positive length, or d_min exceeds d_max.
+        """
+        low = 0.0 if d_min is None else as_positive(d_min, "d_min", "Å")
+        high = np.inf if d_max is None else as_positive(d_max, "d_max", "Å")
+        if low > high:
+            raise InputError("d_min", f"= {low:g} Å exceeds d_max = {high:g} Å", "exchange the two")
+        spacing = self.lattice.spacings(self.indices)
+        # A limit typed with a few digits must not cut the very reflection it was read from.
+        margin = 1e-9
+        kept = (spacing >= low * (1 - margin)) & (spacing <= high * (1 + margin))
+        kept |= ~self.indices.any(axis=1)
+        if kept.all():
+            return self
+        chosen = self.select(kept)
+        beyond = self.tally.beyond_resolution + int(np.count_nonzero(~kept))
+        return replace(chosen, tally=replace(self.tally, beyond_resolution=beyond))
+
+    def resolution(self) -> tuple[float, float] | None:
+        """Smallest and largest spacing d held (Å), the zero term aside; None without any."""
+        others = self.indices[self.indices.any(axis=1)]
+        if not others.size:
+            return None
+        magnitudes = self.lattice.magnitudes(others)
+        return float(2 * np.pi / magnitudes.max()), float(2 * np.pi / magnitudes.min())
+
+    def series(self) -> Series:
+        """The sum of the coefficients whose phase is known."""
+        known = self if self.unphased == 0 else self.phased()
+        return Series(self.lattice, known.indices, known.values, self.real)

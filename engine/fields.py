@@ -1,0 +1,189 @@
+"""A density and its relatives: each a factor on the coefficients, then the same sum.
+
+density          n_G
+gradient         i G n_G, one series per Cartesian component
+gradient_magnitude  the length of that vector
+laplacian        −|G|² n_G
+autocorrelation  V |n_G|², the Patterson function (Patterson, Phys. Rev. 46 (1934) 372); needs no
+                 phases
+response         equal coefficients on exactly the G that are summed, scaled to 1 at the origin: the
+                 point-spread function of the measured set
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import Literal, get_args
+
+import numpy as np
+
+from engine.arrays import ComplexArray, FloatArray
+from engine.averages import Average
+from engine.coefficients import CoefficientSet
+from engine.errors import InputError
+from engine.series import Series
+from engine.windows import NO_WINDOW, Window, gaussian
+
+FieldKind = Literal["density", "gradient", "gradient_magnitude", "laplacian", "autocorrelation", "response"]
+FIELD_KINDS: tuple[FieldKind, ...] = get_args(FieldKind)
+
+PHASES_DECIDE = "A density is only as good as its phases: wrong ones give a wrong map that looks as sharp."
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Treatment:
+    """What is made of a set before it is summed.
+
+    Attributes
+    ----------
+    field : FieldKind
+    window : Window
+        Termination window.
+    sharpen : float
+        B in Å² of a factor exp(B s²), s = |G|/4π; negative smooths.
+    average : Average or None
+        Region that each sample is averaged over.
+    apply_merit : bool
+        Multiply each coefficient by its figure of merit m, the best coefficient in the
+        least-squares sense (Blow & Crick, Acta Cryst. 12 (1959) 794).
+    self_term : float
+        Subtracted from every |n_G|² of an autocorrelation, in the density's unit squared: takes
+        the origin peak away.
+    """
+
+    field: FieldKind = "density"
+    window: Window = NO_WINDOW
+    sharpen: float = 0.0
+    average: Average | None = None
+    apply_merit: bool = False
+    self_term: float = 0.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Summands:
+    """What is to be summed for a field, and what was done to get it.
+
+    Attributes
+    ----------
+    series : tuple of Series
+        One per component.
+    components : tuple of str
+        Their names; empty for a scalar field.
+    magnitude : bool
+        The field is the length of the vector that the components form.
+    unit : str
+    applied : tuple of str
+        Every step taken, in words.
+    unphased : int
+        Coefficients left out because their phase is unknown.
+    """
+
+    series: tuple[Series, ...]
+    components: tuple[str, ...]
+    magnitude: bool
+    unit: str
+    applied: tuple[str, ...]
+    unphased: int
+
+
+def summands(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
+    """The series of a field of a set.
+
+    Raises
+    ------
+    InputError
+        No coefficient is left to sum, the figure of merit is asked for and absent, or an option
+        does not belong to the field.
+    """
+    if treatment.self_term and treatment.field != "autocorrelation":
+        raise InputError("self_term", "belongs to the field autocorrelation alone", "leave it out")
+    if treatment.apply_merit and coefficients.merit is None:
+        raise InputError("apply_merit", "the set has no figures of merit", "give the column merit")
+    if not math.isfinite(treatment.sharpen):
+        raise InputError("sharpen", "is not a finite number", "give B in Å²")
+    needs_phases = treatment.field != "autocorrelation"
+    used = coefficients.phased() if needs_phases else coefficients
+    if used.count == 0:
+        raise InputError(
+            "phase_deg", "no coefficient has a phase", "give phases, or ask for the autocorrelation"
+        )
+    lattice, indices = used.lattice, used.indices
+    factors, applied = _factors(used, treatment)
+    made: tuple[Series, ...]
+    components: tuple[str, ...]
+    length = {1: "Å", 2: "Å²", 3: "Å³"}[lattice.dimension]
+    if treatment.field == "response":
+        series = Series(lattice, indices, factors.astype(np.complex128), used.real)
+        peak = float(series.doubled().real.sum()) if used.real else float(factors.sum())
+        if not abs(peak) > 0:
+            raise InputError("window", "leaves no coefficient", "choose another window or average")
+        scaled = Series(lattice, indices, series.values / peak, used.real)
+        made, components, unit = (scaled,), (), "1"
+    elif treatment.field == "autocorrelation":
+        squares = (np.abs(used.values) ** 2 - treatment.self_term) * lattice.volume
+        if treatment.self_term:
+            applied.append(f"self term {treatment.self_term:g} subtracted from every |n|²")
+        made, components = (_with(used, squares * factors),), ()
+        unit = "arbitrary" if used.unit == "arbitrary" else f"({used.unit})²·{length}"
+    elif treatment.field in ("gradient", "gradient_magnitude"):
+        wavevectors = lattice.wavevectors(indices)
+        made = tuple(_with(used, 1j * wave * used.values * factors) for wave in wavevectors.T)
+        components = ("x", "y", "z")[: lattice.dimension]
+        unit = _per(used.unit, "Å")
+    elif treatment.field == "laplacian":
+        values = -(lattice.magnitudes(indices) ** 2) * used.values * factors
+        made, components, unit = (_with(used, values),), (), _per(used.unit, "Å²")
+    else:
+        made, components, unit = (_with(used, used.values * factors),), (), used.unit
+    magnitude = treatment.field == "gradient_magnitude"
+    return Summands(
+        series=tuple(_without_zeros(one) for one in made),
+        components=() if magnitude else components,
+        magnitude=magnitude,
+        unit=unit,
+        applied=tuple(applied),
+        unphased=coefficients.count - used.count,
+    )
+
+
+def _factors(used: CoefficientSet, treatment: Treatment) -> tuple[FloatArray, list[str]]:
+    """Window, sharpening, average and merit as one real factor, and in words."""
+    lattice = used.lattice
+    magnitudes = lattice.magnitudes(used.indices)
+    g_max = float(magnitudes.max(initial=0.0))
+    factors = np.ones(used.count)
+    applied = []
+    if g_max > 0:
+        factors *= treatment.window.factors(magnitudes, g_max)
+        applied.append(treatment.window.describe(lattice.dimension, g_max))
+    if treatment.sharpen:
+        factors *= gaussian(magnitudes, treatment.sharpen)
+        verb = "sharpened" if treatment.sharpen > 0 else "smoothed"
+        applied.append(f"{verb} by exp(B s²) with B = {treatment.sharpen:g} Å²")
+    if treatment.average is not None:
+        factors *= treatment.average.factors(lattice, used.indices)
+        applied.append(treatment.average.describe())
+    if used.merit is not None and treatment.field not in ("autocorrelation", "response"):
+        if treatment.apply_merit:
+            factors *= used.merit
+            applied.append("each coefficient multiplied by its figure of merit")
+        else:
+            applied.append("figures of merit were given and not applied")
+    return factors, applied
+
+
+def _with(used: CoefficientSet, values: ComplexArray | FloatArray) -> Series:
+    return Series(used.lattice, used.indices, values.astype(np.complex128), used.real)
+
+
+def _without_zeros(series: Series) -> Series:
+    """Drop terms that a factor made exactly zero; they cost time and add nothing."""
+    kept = series.values != 0
+    if kept.all():
+        return series
+    return Series(series.lattice, np.asfortranarray(series.indices[kept]), series.values[kept], series.real)
+
+
+def _per(unit: str, length: str) -> str:
+    return unit if unit == "arbitrary" else f"{unit}/{length}"

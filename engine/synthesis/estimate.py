@@ -1,0 +1,93 @@
+"""What a synthesis will cost, and the shape that every method shares."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal, Protocol
+
+import numpy as np
+from numpy.typing import DTypeLike
+
+from engine.arrays import AnyArray
+
+Method = Literal["direct", "cascade", "nonuniform"]
+Precision = Literal["double", "single"]
+
+DEFAULT_TOLERANCE = 1e-9
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Demand:
+    """How a sum is to be done.
+
+    Attributes
+    ----------
+    precision : {"double", "single"}
+    tolerance : float
+        Largest error wanted, relative to the largest |value|; a method may do better. Single
+        precision ends at 1e-5.
+    threads : int
+    """
+
+    precision: Precision = "double"
+    tolerance: float = DEFAULT_TOLERANCE
+    threads: int = 1
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Estimate:
+    """Cost of one method for one series on one sampling, known before anything is allocated.
+
+    Attributes
+    ----------
+    method : Method
+    seconds : float
+        Rough; for choosing between methods and for deciding whether to show progress.
+    workspace : int
+        Bytes held at the peak beside the output.
+    accuracy : float
+        Error to expect, relative to the largest |value|.
+    """
+
+    method: Method
+    seconds: float
+    workspace: int
+    accuracy: float
+
+
+class Source(Protocol):
+    """A prepared sum, computed in blocks of planes along the first axis of the sampling.
+
+    Attributes
+    ----------
+    planes : int
+        Samples along the first axis.
+    block : int
+        Planes that are best computed together.
+    concurrent : bool
+        Whether blocks may be computed by several threads at once; where not, one block uses
+        the threads itself.
+    """
+
+    planes: int
+    block: int
+    concurrent: bool
+
+    def compute(self, start: int, stop: int, out: AnyArray) -> None:
+        """Write the planes start … stop−1 into `out`, shape (stop − start, *rest)."""
+
+
+def result_dtype(real: bool, precision: Precision) -> np.dtype[np.generic]:
+    """Type of a value."""
+    kinds: dict[tuple[bool, Precision], DTypeLike] = {
+        (True, "double"): np.float64,
+        (True, "single"): np.float32,
+        (False, "double"): np.complex128,
+        (False, "single"): np.complex64,
+    }
+    return np.dtype(kinds[real, precision])
+
+
+def rounding(precision: Precision) -> float:
+    """Error that arithmetic alone leaves, relative to the largest |value|: some hundred ulp."""
+    return 1e-12 if precision == "double" else 1e-5
