@@ -84,9 +84,7 @@ def as_indices(value: ArrayLike, size: int, name: str | Sequence[str | int]) -> 
     if np.any(whole != vector):
         raise InputError(name, "holds a number that is not whole", "give integer indices")
     if not np.any(whole):
-        raise InputError(
-            name, "is all zero, which names no direction", "give at least one index other than 0"
-        )
+        raise InputError(name, "is all zero, which names no direction", "give at least one index other than 0")
     if np.any(np.abs(whole) > MAX_INDEX):
         raise InputError(name, f"holds an index beyond ±{MAX_INDEX}", "give smaller indices")
     return whole.astype(np.int64)

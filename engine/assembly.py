@@ -172,9 +172,7 @@ def _read(lattice: Lattice, columns: Columns, missing_phase: MissingPhase) -> _R
         if column is not None:
             _refuse_rows(column < 0, name, "is negative", "give standard uncertainties of 0 or more")
     if merit is not None:
-        _refuse_rows(
-            (merit < 0) | (merit > 1), "merit", "lies outside 0…1", "give figures of merit from 0 to 1"
-        )
+        _refuse_rows((merit < 0) | (merit > 1), "merit", "lies outside 0…1", "give figures of merit from 0 to 1")
     return _Rows(
         indices,
         values,
@@ -215,9 +213,7 @@ def _index_column(column: ArrayLike, name: str) -> IntArray:
     _refuse_rows(~np.isfinite(array), name, "is not a finite number", "give integer indices")
     whole = np.rint(array)
     _refuse_rows(whole != array, name, "is not a whole number", "give integer indices")
-    _refuse_rows(
-        np.abs(whole) > MAX_INDEX, name, f"lies beyond ±{MAX_INDEX}", "check the indices and the cell"
-    )
+    _refuse_rows(np.abs(whole) > MAX_INDEX, name, f"lies beyond ±{MAX_INDEX}", "check the indices and the cell")
     return whole.astype(np.int64)
 
 
@@ -227,9 +223,7 @@ def _column(column: ArrayLike | None, name: str, size: int) -> FloatArray | None
     array = _numbers(column, name)
     if array.shape != (size,):
         have = array.size if array.ndim == 1 else "an array of"
-        raise InputError(
-            name, f"has {have} rows where the indices have {size}", "give columns of equal length"
-        )
+        raise InputError(name, f"has {have} rows where the indices have {size}", "give columns of equal length")
     if name != "phase_deg":
         _refuse_rows(~np.isfinite(array), name, "is not a finite number", "give finite numbers")
     return array
@@ -307,9 +301,7 @@ def _join_mates(rows: _Rows) -> tuple[_Rows, int]:
         return rows, 0
     left, right = rows.take(pair), rows.take(pair + 1)
     both = left.known & right.known
-    gap = np.where(
-        both, np.abs(left.values - right.values), np.abs(np.abs(left.values) - np.abs(right.values))
-    )
+    gap = np.where(both, np.abs(left.values - right.values), np.abs(np.abs(left.values) - np.abs(right.values)))
     size = np.maximum(np.abs(left.values), np.abs(right.values))
     allowed = MATE_AGREEMENT * np.hypot(_spread(left, both), _spread(right, both)) + ROUNDING * size
     apart = np.flatnonzero(gap > allowed)
@@ -351,9 +343,7 @@ def _spread(rows: _Rows, with_phase: BoolArray) -> FloatArray:
     return np.hypot(amplitude, across)
 
 
-def _averaged(
-    left: _Rows, right: _Rows, both: BoolArray
-) -> tuple[ComplexArray, FloatArray | None, FloatArray | None]:
+def _averaged(left: _Rows, right: _Rows, both: BoolArray) -> tuple[ComplexArray, FloatArray | None, FloatArray | None]:
     """Mean of two mates weighted by 1/σ² (equally where a σ is missing or zero), and its σ."""
     share, sigma = _weights(left.sigma, right.sigma)
     modulus = share * np.abs(left.values) + (1 - share) * np.abs(right.values)
@@ -368,9 +358,7 @@ def _averaged(
     return values, sigma, phase_sigma
 
 
-def _weights(
-    left: FloatArray | None, right: FloatArray | None
-) -> tuple[FloatArray | float, FloatArray | None]:
+def _weights(left: FloatArray | None, right: FloatArray | None) -> tuple[FloatArray | float, FloatArray | None]:
     if left is None or right is None:
         return 0.5, None
     usable = (left > 0) & (right > 0)

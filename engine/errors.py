@@ -54,9 +54,7 @@ class InputError(EngineError):
         return type(self), (self.path, self.reason, self.cure, self.rows)
 
     @classmethod
-    def for_rows(
-        cls, path: str | Sequence[str | int], rows: NDArray[np.intp], reason: str, cure: str
-    ) -> InputError:
+    def for_rows(cls, path: str | Sequence[str | int], rows: NDArray[np.intp], reason: str, cure: str) -> InputError:
         """A fault of several rows: the first few are named, all are counted."""
         named = ", ".join(str(int(row)) for row in rows[:ROWS_NAMED].tolist())
         more = f" and {rows.size - ROWS_NAMED} more" if rows.size > ROWS_NAMED else ""

@@ -131,10 +131,7 @@ def prepare(
     treatment = treatment or Treatment()
     parts = summands(coefficients, treatment)
     count = len(parts.series)
-    output = (
-        math.prod(sampling.shape)
-        * result_dtype(parts.series[0].real, (demand or Demand()).precision).itemsize
-    )
+    output = math.prod(sampling.shape) * result_dtype(parts.series[0].real, (demand or Demand()).precision).itemsize
     if max_bytes is not None and output * (1 if count == 1 else count + 1) > max_bytes:
         raise TooLargeError(
             "samples",
@@ -179,9 +176,7 @@ def perform(work: Work, *, out: AnyArray | None = None, progress: Progress | Non
     if out is None:
         out = np.empty(work.shape, dtype=work.dtype)
     elif out.shape != work.shape or out.dtype != work.dtype or not out.flags.c_contiguous:
-        raise InputError(
-            "out", "does not fit the values", f"give a contiguous array {work.shape} of {work.dtype}"
-        )
+        raise InputError("out", "does not fit the values", f"give a contiguous array {work.shape} of {work.dtype}")
     tracker = Tracker()
     count = len(work.plans)
     for number, one in enumerate(work.plans):
@@ -276,13 +271,9 @@ def _notes(work: Work) -> tuple[str, ...]:
     if work.parts.unphased:
         notes.append(f"{work.parts.unphased} of {given.count} coefficients have no phase and are left out.")
     if tally.beyond_resolution:
-        notes.append(
-            f"{tally.beyond_resolution} coefficients lie outside the resolution limits and are left out."
-        )
+        notes.append(f"{tally.beyond_resolution} coefficients lie outside the resolution limits and are left out.")
     if tally.mates_joined:
-        notes.append(
-            f"{tally.mates_joined} Friedel pairs were given on both sides, agree, and were averaged."
-        )
+        notes.append(f"{tally.mates_joined} Friedel pairs were given on both sides, agree, and were averaged.")
     if tally.repeats_joined:
         notes.append(f"{tally.repeats_joined} rows repeat others exactly and were counted once.")
     notes.append("The series ends with the coefficients given; ripples of termination are in the values.")

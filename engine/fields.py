@@ -105,9 +105,7 @@ def summands(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
     needs_phases = treatment.field != "autocorrelation"
     used = coefficients.phased() if needs_phases else coefficients
     if used.count == 0:
-        raise InputError(
-            "phase_deg", "no coefficient has a phase", "give phases, or ask for the autocorrelation"
-        )
+        raise InputError("phase_deg", "no coefficient has a phase", "give phases, or ask for the autocorrelation")
     lattice, indices = used.lattice, used.indices
     factors, applied = _factors(used, treatment)
     made: tuple[Series, ...]

@@ -118,9 +118,7 @@ class Lattice:
         return cls.from_vectors([[a, 0.0], [b * cosine, b * sine]])
 
     @classmethod
-    def from_parameters(
-        cls, a: float, b: float, c: float, alpha: float, beta: float, gamma: float
-    ) -> Lattice:
+    def from_parameters(cls, a: float, b: float, c: float, alpha: float, beta: float, gamma: float) -> Lattice:
         """Crystal lattice from lengths (Å) and angles (degrees).
 
         a_1 lies along Cartesian x and a_2 in the xy plane (International Tables for
@@ -145,9 +143,7 @@ class Lattice:
             )
         c_y = c * (cos_alpha - cos_beta * cos_gamma) / sin_gamma
         c_z = c * math.sqrt(squared) / sin_gamma
-        return cls.from_vectors(
-            [[a, 0.0, 0.0], [b * cos_gamma, b * sin_gamma, 0.0], [c * cos_beta, c_y, c_z]]
-        )
+        return cls.from_vectors([[a, 0.0, 0.0], [b * cos_gamma, b * sin_gamma, 0.0], [c * cos_beta, c_y, c_z]])
 
     def wavevectors(self, indices: IntArray) -> FloatArray:
         """Cartesian G = Σ m_i g_i, Å⁻¹; indices (N, d) -> (N, d)."""

@@ -95,8 +95,6 @@ def edges_grid(
     cartesian = lattice.to_cartesian(spans)
     unit = cartesian / np.linalg.norm(cartesian, axis=1)[:, None]
     if math.sqrt(max(float(np.linalg.det(unit @ unit.T)), 0.0)) < FLATTEST:
-        raise InputError(
-            labels[-1], "lies along the other edges or nearly so", "give edges that span a region"
-        )
+        raise InputError(labels[-1], "lies along the other edges or nearly so", "give edges that span a region")
     divisions = np.array(counts) - 1 if include_end else np.array(counts)
     return AffineGrid(start, spans / divisions[:, None], tuple(counts), labels, (0.0,) * p)

@@ -37,9 +37,7 @@ def plane(
         small.
     """
     _refuse_stack(lattice, "edge_1")
-    return edges_grid(
-        lattice, origin, (edge_1, edge_2), shape, ("edge_1", "edge_2"), include_end, coordinates
-    )
+    return edges_grid(lattice, origin, (edge_1, edge_2), shape, ("edge_1", "edge_2"), include_end, coordinates)
 
 
 def lattice_plane(
@@ -82,9 +80,7 @@ def lattice_plane(
     for name, length in (("width", width), ("height", height)):
         ratio = as_positive(length, name, "Å") / step
         if ratio > 1e9:
-            raise InputError(
-                "spacing", f"is {step:g} Å for a {name} of {length:g} Å", "give a coarser spacing"
-            )
+            raise InputError("spacing", f"is {step:g} Å for a {name} of {length:g} Å", "give a coarser spacing")
         counts.append(math.floor(ratio * (1 + 1e-12)) + 1)
     wavevector = lattice.wavevectors(indices[None, :])[0]
     middle = np.zeros(3) if centre is None else as_fractional(lattice, centre, coordinates, "centre")

@@ -63,9 +63,7 @@ def fill(
         list(pool.map(share, shares))
 
 
-def stream(
-    source: Source, dtype: np.dtype[np.generic], rest: tuple[int, ...], threads: int
-) -> Iterator[AnyArray]:
+def stream(source: Source, dtype: np.dtype[np.generic], rest: tuple[int, ...], threads: int) -> Iterator[AnyArray]:
     """Yield blocks of planes in order, each a new array of shape (planes of the block, *rest)."""
 
     def work(block: tuple[int, int]) -> AnyArray:

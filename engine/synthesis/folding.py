@@ -57,9 +57,7 @@ def find_fold(grid: AffineGrid) -> Fold | None:
     for step in grid.steps:
         fractions = [Fraction(float(x)).limit_denominator(LARGEST) for x in step]
         length = math.lcm(*(fraction.denominator for fraction in fractions))
-        exact = all(
-            abs(float(fraction) - x) <= 4 * math.ulp(x) for fraction, x in zip(fractions, step, strict=True)
-        )
+        exact = all(abs(float(fraction) - x) <= 4 * math.ulp(x) for fraction, x in zip(fractions, step, strict=True))
         if not exact or length > LARGEST:
             return None
         translations.append([int(fraction * length) for fraction in fractions])

@@ -105,8 +105,7 @@ def plan(
         least = output + min(one.workspace for one in estimates)
         raise TooLargeError(
             "samples",
-            f"the work would take {least / 2**20:,.0f} MiB, more than the limit of "
-            f"{(max_bytes or 0) / 2**20:,.0f} MiB",
+            f"the work would take {least / 2**20:,.0f} MiB, more than the limit of {(max_bytes or 0) / 2**20:,.0f} MiB",
             "ask for fewer samples, fewer coefficients or single precision, or raise the limit",
         )
     best = min(affordable, key=lambda one: one.seconds)

@@ -1,0 +1,160 @@
+"""The command ``densityloom``."""
+
+from __future__ import annotations
+
+import argparse
+import ipaddress
+import os
+import socket
+import sys
+from collections.abc import Sequence
+from importlib.metadata import version
+from pathlib import Path
+
+import uvicorn
+from tqdm import tqdm
+
+from engine.evaluate import Work
+from engine.synthesis import Progress
+from service import intake, pipeline
+from service.encoders.negotiation import ROW_FORMATS, formats_of
+from service.problems import Problem
+from service.settings import load_settings
+from service.spool import Spool
+from service.terminal import render
+
+SILENT_SECONDS = 1.5
+"""Work that is over by then shows no progress."""
+TABLE_TYPES = {".csv": intake.CSV, ".npz": intake.NPZ}
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command; returns its exit code."""
+    parser = _parser()
+    options = parser.parse_args(arguments)
+    try:
+        return int(options.action(options))
+    except Problem as problem:
+        print(f"densityloom: {problem.detail}", file=sys.stderr)
+        for place in problem.places[1:]:
+            print(f"  {place.pointer}: {place.reason}. {place.cure}.", file=sys.stderr)
+    except (ValueError, OSError) as fault:
+        print(f"densityloom: {fault}", file=sys.stderr)
+    except KeyboardInterrupt:
+        print("densityloom: interrupted, nothing was written", file=sys.stderr)
+        return 130
+    return 2
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(prog="densityloom", description="Real-space densities from Fourier coefficients.")
+    parser.add_argument("--version", action="version", version=f"densityloom {version('densityloom')}")
+    actions = parser.add_subparsers(required=True, metavar="ACTION")
+
+    serve = actions.add_parser("serve", help="run the REST service")
+    serve.add_argument("--host", default="127.0.0.1", help="address to listen on (default: this machine only)")
+    serve.add_argument("--port", type=int, default=8420)
+    serve.add_argument("--workers", type=int, default=1, help="server processes; each has its own computing workers")
+    serve.set_defaults(action=_serve)
+
+    run = actions.add_parser("run", help="compute one request without a server")
+    run.add_argument("request", type=Path, help="JSON file; its member product names what is wanted")
+    run.add_argument("--columns", type=Path, help="CSV or .npz file with the columns of the set")
+    run.add_argument(
+        "--out", type=Path, help=f"file to write, by its ending: {', '.join(ROW_FORMATS)}; without it, show the field"
+    )
+    run.add_argument("--threads", type=int, default=_cores(), help="default: all cores")
+    run.set_defaults(action=_run)
+    return parser
+
+
+def _cores() -> int:
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+def _serve(options: argparse.Namespace) -> int:
+    load_settings()
+    if not _is_loopback(options.host):
+        print(
+            f"densityloom: listening on {options.host}: anyone who can reach it can have work computed. "
+            "Put a proxy that asks for credentials before it.",
+            file=sys.stderr,
+        )
+    uvicorn.run(
+        "service.app:create_app",
+        factory=True,
+        host=options.host,
+        port=options.port,
+        workers=options.workers,
+        # The faster parser puts no bound on the size of a header.
+        http="h11",
+        server_header=False,
+        timeout_graceful_shutdown=10,
+    )
+    return 0
+
+
+def _is_loopback(host: str) -> bool:
+    try:
+        return ipaddress.ip_address(host).is_loopback
+    except ValueError:
+        found = socket.getaddrinfo(host, None)
+        return all(ipaddress.ip_address(entry[4][0]).is_loopback for entry in found)
+
+
+def _run(options: argparse.Namespace) -> int:
+    settings = load_settings()
+    if options.threads < 1:
+        raise ValueError("--threads: give at least 1")
+    document = intake.decode(options.request.read_bytes())
+    table = None
+    if options.columns is not None:
+        media_type = TABLE_TYPES.get(options.columns.suffix)
+        if media_type is None:
+            raise ValueError(f"--columns: {options.columns.name} does not end in {' or '.join(TABLE_TYPES)}")
+        table = intake.Table(media_type, options.columns.read_bytes())
+    product, request = intake.check(None, document, table, max_body_bytes=settings.max_body_bytes)
+    form = _form(product, options.out)
+    partial = options.out and options.out.with_name(f".{options.out.name}.partial")
+    with Spool.at(partial) if partial else Spool.unnamed() as spool:
+        try:
+            done = pipeline.run(product, request, form, spool, settings, threads=options.threads, watch=_watch)
+        except BaseException:
+            if partial:
+                partial.unlink(missing_ok=True)
+            raise
+    if partial:
+        partial.replace(options.out)
+    print(render(done.coefficients, done.field))
+    print(f"  {done.seconds:.3g} s" + (f", written to {options.out}" if options.out else ""))
+    return 0
+
+
+def _form(product: str, out: Path | None) -> str:
+    if out is None:
+        return "npy"
+    form = out.suffix.removeprefix(".")
+    if form not in formats_of(product):
+        raise ValueError(f"--out: a {product} is written as {', '.join(formats_of(product))}, not {out.suffix or out}")
+    return form
+
+
+def _watch(work: Work) -> Progress:
+    bar = tqdm(
+        total=1.0,
+        desc=f"{work.plans[0].method}, about {work.seconds:.0f} s",
+        delay=SILENT_SECONDS,
+        leave=False,
+        bar_format="{desc} {percentage:3.0f}% |{bar}| {remaining} left",
+    )
+
+    def report(done: int, total: int) -> None:
+        bar.update(done / total - bar.n)
+        if done == total:
+            bar.close()
+
+    return report
+
+
+if __name__ == "__main__":
+    sys.exit(main())

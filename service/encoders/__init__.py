@@ -1,0 +1,1 @@
+"""Fields to bytes, and which bytes a client wants."""

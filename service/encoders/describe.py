@@ -1,0 +1,96 @@
+"""What travels with the values: the answer's members without the values themselves."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from engine.arrays import AnyArray
+from engine.coefficients import CoefficientSet
+from engine.evaluate import Field
+from engine.fields import FieldKind
+from engine.sampling import AffineGrid
+from engine.statistics import Statistics
+
+SIGN_CONVENTION = "n(r) = sum over G of n_G exp(+i G·r); F(hkl) = integral over one cell of rho(r) exp(+2 pi i h·x) dV"
+
+
+def describe(product: str, field: FieldKind, coefficients: CoefficientSet, made: Field) -> dict[str, Any]:
+    """Everything but the values, as plain data."""
+    tally = coefficients.tally
+    resolution = made.resolution
+    return {
+        "product": product,
+        "field": field,
+        "unit": made.unit,
+        "shape": list(made.values.shape),
+        "components": list(made.components),
+        "axes": [
+            {
+                "label": axis.label,
+                "unit": "Å",
+                "start": axis.start,
+                "step": axis.step,
+                "count": axis.count,
+                "direction": axis.direction.tolist(),
+            }
+            for axis in made.axes
+        ],
+        "origin": _origin(coefficients, made),
+        "summary": {
+            **_numbers(made.statistics),
+            "coefficients": {
+                "rows": tally.rows,
+                "summed": made.summed,
+                "without_phase": made.unphased,
+                "beyond_resolution": tally.beyond_resolution,
+                "friedel_pairs_averaged": tally.mates_joined,
+                "repeats_joined": tally.repeats_joined,
+                "zero_term": tally.zero_term,
+            },
+            "resolution": None if resolution is None else {"d_min": resolution[0], "d_max": resolution[1], "unit": "Å"},
+            "method": "+".join(made.methods),
+            "accuracy": made.accuracy,
+            "sign_convention": SIGN_CONVENTION,
+        },
+        "applied": list(made.applied),
+        "notes": list(made.notes),
+    }
+
+
+def columns(coefficients: CoefficientSet, made: Field) -> list[tuple[str, AnyArray]]:
+    """Profiles and points as named columns: coordinates, then values."""
+    if made.axes:
+        axis = made.axes[0]
+        found: list[tuple[str, AnyArray]] = [(f"{axis.label}_angstrom", axis.coordinates())]
+    else:
+        positions = made.sampling.positions()
+        names = {1: ("x_3",), 2: ("x_1", "x_2"), 3: ("x_1", "x_2", "x_3")}[coefficients.lattice.dimension]
+        found = [(name, column) for name, column in zip(names, positions.T, strict=True)]
+    parts = [("", made.values)]
+    if made.components:
+        parts = [(f"_{name}", made.values[..., place]) for place, name in enumerate(made.components)]
+    for suffix, values in parts:
+        if values.dtype.kind == "c":
+            found += [(f"value{suffix}_real", values.real), (f"value{suffix}_imag", values.imag)]
+        else:
+            found.append((f"value{suffix}", values))
+    return found
+
+
+def _origin(coefficients: CoefficientSet, made: Field) -> dict[str, list[float]] | None:
+    if not isinstance(made.sampling, AffineGrid):
+        return None
+    origin = made.sampling.origin
+    return {"fractional": origin.tolist(), "cartesian": coefficients.lattice.to_cartesian(origin).tolist()}
+
+
+def _numbers(statistics: Statistics) -> dict[str, Any]:
+    mean: Any = statistics.mean
+    if isinstance(mean, complex):
+        mean = {"real": mean.real, "imag": mean.imag}
+    return {
+        "minimum": statistics.minimum,
+        "maximum": statistics.maximum,
+        "mean": mean,
+        "rms": statistics.rms,
+    }

@@ -1,0 +1,87 @@
+"""Which form an answer takes: ``?format=`` first, else the Accept header (RFC 9110 §12.5.1)."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from service.problems import Problem
+
+ARRAY_FORMATS = ("json", "npy", "npz")
+ROW_FORMATS = (*ARRAY_FORMATS, "csv")
+"""Profiles and points are rows and may be had as CSV too."""
+
+MEDIA_TYPES = {
+    "json": "application/json",
+    "npy": "application/x-npy",
+    "npz": "application/x-npz",
+    "csv": "text/csv; charset=utf-8",
+}
+
+
+@dataclass(frozen=True, slots=True)
+class _Range:
+    kind: str
+    subtype: str
+    quality: float
+
+    def covers(self, media_type: str) -> bool:
+        kind, subtype = media_type.split(";")[0].split("/")
+        return self.kind in ("*", kind) and self.subtype in ("*", subtype)
+
+    def specificity(self) -> int:
+        return (self.kind != "*") + (self.subtype != "*")
+
+
+def formats_of(product: str) -> tuple[str, ...]:
+    """Formats a product may be had in."""
+    return ROW_FORMATS if product in ("profile", "points") else ARRAY_FORMATS
+
+
+def choose(product: str, accept: str | None, wanted: str | None) -> str:
+    """The format of an answer.
+
+    Raises
+    ------
+    Problem
+        406: the format is unknown for the product, or the client accepts none of its formats.
+    """
+    formats = formats_of(product)
+    if wanted is not None:
+        if wanted not in formats:
+            raise _unacceptable(product, f"format={wanted[:20]!r}")
+        return wanted
+    ranges = _parse(accept or "*/*")
+    best, best_quality = None, 0.0
+    for name in formats:
+        covering = [one for one in ranges if one.covers(MEDIA_TYPES[name])]
+        if covering:
+            quality = max(covering, key=_Range.specificity).quality
+            if quality > best_quality:
+                best, best_quality = name, quality
+    if best is None:
+        raise _unacceptable(product, "the Accept header")
+    return best
+
+
+def _unacceptable(product: str, what: str) -> Problem:
+    listed = ", ".join(f"{name} ({MEDIA_TYPES[name].split(';')[0]})" for name in formats_of(product))
+    return Problem("not-acceptable", f"A {product} is answered as {listed}; {what} asks for none of them.")
+
+
+def _parse(accept: str) -> list[_Range]:
+    ranges = []
+    for item in accept.split(","):
+        media, *parameters = (part.strip() for part in item.split(";"))
+        kind, slash, subtype = media.lower().partition("/")
+        if not slash:
+            continue
+        quality = 1.0
+        for parameter in parameters:
+            name, _, value = parameter.partition("=")
+            if name.strip().lower() == "q":
+                try:
+                    quality = min(max(float(value), 0.0), 1.0)
+                except ValueError:
+                    quality = 0.0
+        ranges.append(_Range(kind, subtype, quality))
+    return ranges

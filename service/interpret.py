@@ -1,0 +1,290 @@
+"""From a request's model to the engine's objects: the only place that knows both."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from engine import averages, sampling
+from engine.assembly import INDEX_COLUMNS, Columns, assemble
+from engine.averages import Average
+from engine.coefficients import CoefficientSet
+from engine.fields import Treatment
+from engine.lattice import Lattice
+from engine.sampling import Sampling
+from engine.windows import Window
+from service.problems import at, located
+from service.schemas.coefficient_set import INDEX_NAMES, Cell, CoefficientSetIn
+from service.schemas.products import GridIn, PointsIn, ProductIn, ProfileIn, SliceIn
+
+CELL_PARAMETERS = ("a", "b", "c", "alpha", "beta", "gamma")
+
+
+def coefficient_set(request: ProductIn, *, max_coefficients: int) -> CoefficientSet:
+    """The set of a request, cut to its resolution limits.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    given = request.set
+    lattice = _lattice(given.cell)
+    names = INDEX_COLUMNS[lattice.dimension]
+    for name in INDEX_NAMES:
+        present = getattr(given, name) is not None
+        if present != (name in names):
+            kind = {1: "layer stack", 2: "planar lattice", 3: "crystal"}[lattice.dimension]
+            raise at(
+                ("set", name),
+                f"is {'given' if present else 'absent'}, but the cell is that of a {kind}",
+                f"give the index columns {', '.join(names)}",
+            )
+    rows = len(getattr(given, names[0]))
+    if rows > max_coefficients:
+        raise at(
+            ("set", names[0]),
+            f"has {rows:,} rows, more than the limit of {max_coefficients:,}",
+            "send fewer coefficients, or have the limit raised",
+            kind="too-costly",
+        )
+    with located("set", renamed={"real": ("real",)}):
+        made = assemble(
+            lattice,
+            Columns(
+                indices=[getattr(given, name) for name in names],
+                amplitude=given.amplitude,
+                phase_deg=given.phase_deg,
+                real=given.real,
+                imag=given.imag,
+                sigma=given.sigma,
+                phase_sigma_deg=given.phase_sigma_deg,
+                merit=given.merit,
+            ),
+            values=given.values,
+            density=given.density,
+            mean=_mean(given),
+            missing_phase=request.missing_phase,
+            unit=given.unit,
+        )
+    with located("resolution"):
+        return made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
+
+
+def treatment(request: ProductIn, lattice: Lattice) -> Treatment:
+    """What is made of the set before it is summed.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    with located("window"):
+        window = Window(request.window.kind, request.window.b)
+    # The caller states the self term in the square of what the columns carry.
+    scale = lattice.volume**2 if request.set.values == "structure_factor" else 1.0
+    return Treatment(
+        field=request.field,
+        window=window,
+        sharpen=request.sharpen,
+        average=_average(request, lattice),
+        apply_merit=request.apply_merit,
+        self_term=request.self_term / scale,
+    )
+
+
+def samples(request: ProductIn, lattice: Lattice) -> Sampling:
+    """Where the request wants values.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    if isinstance(request, ProfileIn):
+        return _line(request, lattice)
+    if isinstance(request, SliceIn):
+        return _plane(request, lattice)
+    if isinstance(request, GridIn):
+        return _volume(request, lattice)
+    if isinstance(request, PointsIn):
+        with located():
+            return sampling.points(lattice, request.positions, coordinates=request.coordinates)
+    raise TypeError(f"no sampling for {type(request).__name__}")
+
+
+def _lattice(cell: Cell) -> Lattice:
+    given = cell.model_fields_set - {name for name in type(cell).model_fields if getattr(cell, name) is None}
+    with located("set", "cell"):
+        if given == {"period"} and cell.period is not None:
+            return Lattice.from_period(cell.period)
+        if given == {"vectors"} and cell.vectors is not None:
+            return Lattice.from_vectors(cell.vectors)
+        if given == {"a", "b", "gamma"}:
+            return Lattice.from_planar_parameters(*(getattr(cell, name) for name in ("a", "b", "gamma")))
+        if given == set(CELL_PARAMETERS):
+            return Lattice.from_parameters(*(getattr(cell, name) for name in CELL_PARAMETERS))
+    raise at(
+        ("set", "cell"),
+        f"has {', '.join(sorted(given)) or 'nothing'}, which describes no lattice",
+        "give a, b, c, alpha, beta, gamma; or a, b, gamma; or vectors; or period",
+    )
+
+
+def _mean(given: CoefficientSetIn) -> float | complex | None:
+    if given.mean_imag is None:
+        return given.mean
+    if given.mean is None:
+        raise at(("set", "mean"), "is absent where mean_imag is given", "give both parts")
+    return complex(given.mean, given.mean_imag)
+
+
+def _average(request: ProductIn, lattice: Lattice) -> Average | None:
+    average = request.average
+    if average is None:
+        return None
+    needed = {"lateral": (), "slab": ("thickness",), "box": ("edges",), "ball": ("radius",)}[average.kind]
+    allowed = {*needed, "kind", *(("normal",) if average.kind in ("lateral", "slab") else ())}
+    for name in needed:
+        if getattr(average, name) is None:
+            raise at(("average", name), "is absent", f"an average of the kind {average.kind} needs it")
+    for name in sorted(average.model_fields_set - allowed):
+        raise at(("average", name), f"has no meaning for the kind {average.kind}", "leave it out")
+    with located("average"):
+        if average.kind == "ball" and average.radius is not None:
+            return averages.ball(average.radius)
+        if average.kind == "box" and average.edges is not None:
+            return averages.box(lattice, average.edges)
+        normal = average.normal or _own_normal(request, lattice)
+        if average.kind == "slab" and average.thickness is not None:
+            return averages.slab(lattice, normal, average.thickness)
+        return averages.lateral(lattice, normal)
+
+
+def _own_normal(request: ProductIn, lattice: Lattice) -> Sequence[int]:
+    if isinstance(request, ProfileIn) and request.normal_to is not None:
+        return request.normal_to
+    if isinstance(request, SliceIn) and request.plane is not None:
+        return request.plane
+    if lattice.dimension == 1:
+        return [1]
+    raise at(("average", "normal"), "is absent", "give the indices of the planes averaged over")
+
+
+def _line(request: ProfileIn, lattice: Lattice) -> Sampling:
+    form = _one_of(request, {"from": ("start", "end"), "along": ("along",), "normal_to": ("normal_to",)})
+    if form == "from":
+        _only(request, ("start", "end"), ("origin", "length"))
+        with located():
+            return sampling.line(
+                lattice,
+                request.start or [],
+                request.end or [],
+                request.samples,
+                include_end=request.include_end,
+                coordinates=request.coordinates,
+            )
+    if form == "along":
+        _only(request, ("along",), ("length",))
+        with located():
+            return sampling.lattice_line(
+                lattice,
+                request.along or [],
+                request.samples,
+                origin=request.origin,
+                include_end=request.include_end,
+                coordinates=request.coordinates,
+            )
+    with located():
+        return sampling.normal_line(
+            lattice,
+            request.normal_to or [],
+            request.samples,
+            length=request.length,
+            origin=request.origin,
+            include_end=request.include_end,
+            coordinates=request.coordinates,
+        )
+
+
+def _plane(request: SliceIn, lattice: Lattice) -> Sampling:
+    edges = ("origin", "edge_1", "edge_2", "shape")
+    if _one_of(request, {"edge_1": edges, "plane": ("plane", "width", "height", "spacing")}) == "edge_1":
+        _only(request, edges, ("offset", "centre", "width", "height", "spacing"))
+        with located():
+            return sampling.plane(
+                lattice,
+                request.origin or [],
+                request.edge_1 or [],
+                request.edge_2 or [],
+                _pair(request.shape or []),
+                include_end=request.include_end,
+                coordinates=request.coordinates,
+            )
+    _only(request, (), ("origin", "shape", "include_end"))
+    with located():
+        return sampling.lattice_plane(
+            lattice,
+            request.plane or [],
+            offset=request.offset,
+            width=request.width or 0.0,
+            height=request.height or 0.0,
+            spacing=request.spacing or 0.0,
+            centre=request.centre,
+            coordinates=request.coordinates,
+        )
+
+
+def _volume(request: GridIn, lattice: Lattice) -> Sampling:
+    if request.edges is not None:
+        _only(request, ("origin", "edges", "shape"), ("spacing",))
+        renamed: dict[str, tuple[str | int, ...]] = {f"edge_{j + 1}": ("edges", j) for j in range(3)}
+        with located(renamed=renamed):
+            return sampling.box(
+                lattice,
+                request.origin or [],
+                request.edges,
+                request.shape or [],
+                include_end=request.include_end,
+                coordinates=request.coordinates,
+            )
+    _only(request, (), ("origin", "include_end"))
+    with located():
+        if _one_of(request, {"shape": ("shape",), "spacing": ("spacing",)}) == "shape":
+            return sampling.full_cell(lattice, request.shape or [])
+        return sampling.full_cell_by_spacing(lattice, request.spacing or 0.0)
+
+
+def _pair(shape: Sequence[int]) -> tuple[int, int]:
+    if len(shape) != 2:
+        raise at(("shape",), f"has {len(shape)} counts", "give 2, one per edge")
+    return shape[0], shape[1]
+
+
+def _one_of(request: ProductIn, forms: dict[str, tuple[str, ...]]) -> str:
+    """Which form a request uses, by the field that leads it; all fields of the form must be there."""
+    leads = {form: names[0] if form != "edge_1" else "edge_1" for form, names in forms.items()}
+    used = [form for form, lead in leads.items() if getattr(request, lead) is not None]
+    if len(used) != 1:
+        listed = "; or ".join(", ".join(_alias(name) for name in names) for names in forms.values())
+        raise at(
+            (used[1],) if used else (_alias(next(iter(forms))),),
+            "says a second time where the samples are"
+            if used
+            else "is absent, and nothing else says where the samples are",
+            f"give one of: {listed}",
+        )
+    _only(request, forms[used[0]], ())
+    return used[0]
+
+
+def _only(request: ProductIn, needed: Sequence[str], barred: Sequence[str]) -> None:
+    for name in needed:
+        if getattr(request, name) is None:
+            raise at((_alias(name),), "is absent", f"it belongs to the others: {', '.join(map(_alias, needed))}")
+    for name in barred:
+        if name in request.model_fields_set:
+            raise at((_alias(name),), "does not belong to the form of request used", "leave it out")
+
+
+def _alias(name: str) -> str:
+    return {"start": "from", "end": "to"}.get(name, name)

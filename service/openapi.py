@@ -1,0 +1,147 @@
+"""The OpenAPI document: bodies that are parsed by hand are described by hand, from the same models."""
+
+from __future__ import annotations
+
+from typing import Any, Literal
+
+from fastapi import FastAPI
+from fastapi.openapi.utils import get_openapi
+from pydantic import BaseModel
+from pydantic.json_schema import models_json_schema
+
+from service.encoders.negotiation import MEDIA_TYPES, formats_of
+from service.intake import CSV, JSON, MULTIPART, NPZ
+from service.problems import MEDIA_TYPE as PROBLEM
+from service.problems import TITLES
+from service.schemas.answers import Answer, ProblemDocument
+from service.schemas.products import PRODUCTS
+
+_SCHEMAS = "#/components/schemas/"
+
+SUMMARIES = {
+    "profile": "Values along a line",
+    "slice": "Values on a plane",
+    "grid": "Values in the whole cell or a box",
+    "points": "Values at free points",
+}
+
+DESCRIPTION = """Send Fourier coefficients, get the density they stand for, n(r) = Σ n_G exp(iG·r), on a line, a
+plane, the whole cell, a box or at free points.
+
+* Answers are JSON, NumPy `.npy` or `.npz`, and CSV for profiles and points: by `Accept` or `?format=`.
+* Bodies are JSON; or a form (`multipart/form-data`) with the parts `request` (JSON without columns) and
+  `columns` (CSV or `.npz` with the columns of the set).
+* Errors are problem documents (RFC 9457) that name the place by JSON pointer and say how to mend it.
+* A density is only as good as its phases: wrong ones give a wrong map that looks as sharp.
+"""
+
+_FILM = {
+    "cell": {"period": 17.4},
+    "values": "structure_factor",
+    "l": [1, 2, 3, 4],
+    "amplitude": [12.1, 41.3, 8.7, 22.8],
+    "phase_deg": [0, 180, 0, 0],
+    "unit": "e/Å³",
+}
+_CRYSTAL = {
+    "cell": {"a": 3.02, "b": 3.02, "c": 17.4, "alpha": 90, "beta": 90, "gamma": 120},
+    "values": "structure_factor",
+    "h": [0, 0, 1],
+    "k": [0, 0, 0],
+    "l": [3, 6, 2],
+    "amplitude": [41.3, 22.8, 15.2],
+    "phase_deg": [180, 0, 35],
+}
+EXAMPLES: dict[str, dict[str, Any]] = {
+    "profile": {"set": _FILM, "from": [0], "to": [1], "samples": 128},
+    "slice": {"set": _CRYSTAL, "plane": [0, 0, 1], "offset": 4.35, "width": 12, "height": 12, "spacing": 0.1},
+    "grid": {"set": _CRYSTAL, "spacing": 0.3},
+    "points": {"set": _CRYSTAL, "positions": [[0, 0, 0.25], [0.333, 0.667, 0.25]]},
+}
+
+
+def operation(product: str) -> dict[str, Any]:
+    """What FastAPI is told of the endpoint of a product."""
+    schema = {"$ref": _SCHEMAS + PRODUCTS[product].__name__}
+    example = {"summary": f"A small {product}", "value": EXAMPLES[product]}
+    return {
+        "operation_id": product,
+        "summary": SUMMARIES[product],
+        "description": f"{PRODUCTS[product].__doc__} The answer's form is chosen by `Accept` or `?format=`.",
+        "responses": {200: {"description": "The values", "content": _answers(product)}, **_problems()},
+        "openapi_extra": {
+            "parameters": [
+                {
+                    "name": "format",
+                    "in": "query",
+                    "required": False,
+                    "description": "form of the answer; goes before Accept",
+                    "schema": {"type": "string", "enum": list(formats_of(product))},
+                }
+            ],
+            "requestBody": {
+                "required": True,
+                "content": {
+                    JSON: {"schema": schema, "examples": {"small": example}},
+                    MULTIPART: {
+                        "schema": {
+                            "type": "object",
+                            "required": ["request"],
+                            "properties": {
+                                "request": {"type": "object", "description": "the request without columns in its set"},
+                                "columns": {"type": "string", "format": "binary"},
+                            },
+                        },
+                        "encoding": {"request": {"contentType": JSON}, "columns": {"contentType": f"{CSV}, {NPZ}"}},
+                    },
+                },
+            },
+        },
+    }
+
+
+def _answers(product: str) -> dict[str, Any]:
+    content: dict[str, Any] = {}
+    for name in formats_of(product):
+        schema: dict[str, Any] = {"type": "string", "format": "binary"}
+        if name == "json":
+            schema = {"$ref": _SCHEMAS + Answer.__name__}
+        elif name == "csv":
+            schema = {"type": "string"}
+        content[MEDIA_TYPES[name].split(";")[0]] = {"schema": schema}
+    return content
+
+
+def _problems() -> dict[int | str, dict[str, Any]]:
+    content = {PROBLEM: {"schema": {"$ref": _SCHEMAS + ProblemDocument.__name__}}}
+    kinds = ("malformed-body", "not-acceptable", "body-too-large", "unsupported-media-type", "invalid-request")
+    found: dict[int | str, dict[str, Any]] = {}
+    for kind in (*kinds, "internal", "busy", "timeout"):
+        status, title = TITLES[kind]
+        found[status] = {"description": title, "content": content}
+    return found
+
+
+def install(app: FastAPI) -> None:
+    """Make the app answer /openapi.json with our models among the components."""
+
+    def document() -> dict[str, Any]:
+        if app.openapi_schema is None:
+            made = get_openapi(
+                title=app.title,
+                version=app.version,
+                description=app.description,
+                routes=app.routes,
+                openapi_version="3.1.0",
+            )
+            models: list[tuple[type[BaseModel], Literal["validation", "serialization"]]] = [
+                *((model, "validation") for model in PRODUCTS.values()),
+                (Answer, "serialization"),
+                (ProblemDocument, "serialization"),
+            ]
+            _, schemas = models_json_schema(models, ref_template=_SCHEMAS + "{model}")
+            made.setdefault("components", {}).setdefault("schemas", {}).update(schemas["$defs"])
+            app.openapi_schema = made
+        return app.openapi_schema
+
+    app.openapi = document  # type: ignore[method-assign]

@@ -1,0 +1,34 @@
+"""Is the service alive, and is it ready?"""
+
+from __future__ import annotations
+
+from importlib.metadata import version
+
+from fastapi import APIRouter, Request
+
+from service.problems import Problem
+from service.schemas.health import Live, Ready
+
+LIBRARIES = ("numpy", "scipy", "finufft", "fastapi", "uvicorn", "pydantic")
+
+router = APIRouter(prefix="/health", tags=["health"])
+
+
+@router.get("/live", operation_id="live", summary="The process answers")
+async def live() -> Live:
+    """Answers as long as the event loop turns."""
+    return Live(status="live", version=version("densityloom"))
+
+
+@router.get("/ready", operation_id="ready", summary="Requests can be computed")
+async def ready(request: Request) -> Ready:
+    """Answers 200 once all workers have started, 503 before."""
+    pool = getattr(request.app.state, "pool", None)
+    if pool is None:
+        raise Problem("not-ready", "The workers are starting.", headers={"Retry-After": "2"})
+    return Ready(
+        status="ready",
+        version=version("densityloom"),
+        **pool.state(),
+        libraries={name: version(name) for name in LIBRARIES},
+    )

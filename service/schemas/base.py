@@ -1,0 +1,19 @@
+"""What all request models share."""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal
+
+from pydantic import BaseModel, ConfigDict, Field
+
+
+class Strict(BaseModel):
+    """No unknown keys, no numbers in disguise, nothing that is not finite."""
+
+    model_config = ConfigDict(extra="forbid", strict=True, allow_inf_nan=False, frozen=True)
+
+
+Vector = Annotated[list[float], Field(min_length=1, max_length=3)]
+IndexVector = Annotated[list[int], Field(min_length=1, max_length=3)]
+Counts = Annotated[list[Annotated[int, Field(ge=1)]], Field(min_length=1, max_length=3)]
+Coordinates = Literal["fractional", "cartesian"]

@@ -1,0 +1,87 @@
+"""The process behind the wall: takes one request at a time, computes it, answers.
+
+Started by the pool as ``python -m service.wall.worker DESCRIPTOR``, with its settings on standard
+input.
+"""
+
+from __future__ import annotations
+
+import logging
+import os
+import resource
+import signal
+import socket
+import sys
+from pathlib import Path
+from typing import Any
+
+from service import intake, pipeline
+from service.problems import Problem
+from service.settings import Settings
+from service.spool import Spool
+from service.wall import wire
+
+log = logging.getLogger("densityloom.worker")
+
+
+def main() -> None:
+    """Serve the channel until the server closes it."""
+    # An interrupt from a terminal reaches the whole group; the server decides when to end us.
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+    logging.basicConfig(stream=sys.stderr, format="%(levelname)s %(name)s %(message)s")
+    channel = socket.socket(fileno=int(sys.argv[1]))
+    settings = Settings.model_validate_json(sys.stdin.buffer.read())
+    _bound_memory(settings)
+    wire.send(channel, {"ready": os.getpid()})
+    while True:
+        try:
+            message, descriptors = wire.receive(channel)
+        except wire.Closed:
+            return
+        with Spool(descriptors[0]) as body:
+            answer, made = _serve(message, body, settings)
+        with made:
+            wire.send(channel, answer, [made.descriptor])
+
+
+def _serve(message: dict[str, Any], body: Spool, settings: Settings) -> tuple[dict[str, Any], Spool]:
+    """One request; a fault that nobody foresaw is logged here and told without detail."""
+    made = Spool.unnamed()
+    try:
+        data = bytes(body.view())
+        product, request = intake.read(
+            message["product"], message["content_type"], data, max_body_bytes=settings.max_body_bytes
+        )
+        del data
+        done = pipeline.run(product, request, message["form"], made, settings, threads=settings.compute_threads)
+    except Problem as problem:
+        return _refusal(problem), made
+    except MemoryError:
+        log.exception("a request exceeded the worker's memory")
+        detail = "The work took more memory than was estimated. Ask for fewer samples."
+        return _refusal(Problem("too-costly", detail)), made
+    except Exception:  # the wall's purpose: whatever happens, the client gets an answer
+        log.exception("a request failed")
+        return _refusal(Problem("internal", "The computation failed; the fault has been logged.")), made
+    return {"seconds": done.seconds, "size": made.size}, made
+
+
+def _refusal(problem: Problem) -> dict[str, Any]:
+    return {"problem": problem.to_message()}
+
+
+def _bound_memory(settings: Settings) -> None:
+    """Let an allocation beyond the limits fail here, before the machine runs out."""
+    # What libraries reserve without using counts too, so the bound starts from what is mapped now.
+    try:
+        mapped = int(Path("/proc/self/statm").read_text().split()[0]) * os.sysconf("SC_PAGE_SIZE")
+    except FileNotFoundError:
+        # Elsewhere than on Linux the estimate before the work is the only bound.
+        return
+    spare = 512 * 2**20 + 8 * settings.max_body_bytes
+    bound = mapped + settings.max_memory_bytes + spare
+    resource.setrlimit(resource.RLIMIT_AS, (bound, resource.getrlimit(resource.RLIMIT_AS)[1]))
+
+
+if __name__ == "__main__":
+    main()
