@@ -5,6 +5,7 @@ Public functions pass what they are given through these once; code behind them t
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Sequence
 
 import numpy as np
@@ -66,9 +67,22 @@ def as_positive(value: float, name: str | Sequence[str | int], unit: str) -> flo
     """
     if isinstance(value, bool) or not isinstance(value, int | float | np.integer | np.floating):
         raise InputError(name, "is not a number", f"give a positive number ({unit})")
-    if not np.isfinite(value) or value <= 0:
-        raise InputError(name, f"is {value}", f"give a finite number above zero ({unit})")
+    # Python compares a whole number of any length with a float; a conversion would overflow.
+    if not 0 < value <= sys.float_info.max:
+        raise InputError(name, "is not finite and above zero", f"give a finite number above zero ({unit})")
     return float(value)
+
+
+def as_choice(value: object, choices: Sequence[str], name: str | Sequence[str | int]) -> None:
+    """Refuse a word that is not among those known, which would else be taken for another.
+
+    Raises
+    ------
+    InputError
+        Not one of the choices.
+    """
+    if value not in choices:
+        raise InputError(name, "is not a known word", f"give one of {', '.join(choices)}")
 
 
 def as_indices(value: ArrayLike, size: int, name: str | Sequence[str | int]) -> IntArray:

@@ -12,12 +12,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Literal
+from typing import Literal, get_args
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-from engine.arrays import MAX_INDEX, BoolArray, ComplexArray, FloatArray, IntArray
+from engine.arrays import MAX_INDEX, BoolArray, ComplexArray, FloatArray, IntArray, as_choice
 from engine.coefficients import CoefficientSet, Tally
 from engine.errors import InputError
 from engine.lattice import Lattice
@@ -121,6 +121,9 @@ def assemble(
         0…1, repeated rows or Friedel mates that contradict each other, a zero term given
         twice or not real, missing phases where they are refused.
     """
+    as_choice(values, get_args(Convention), "values")
+    as_choice(density, ("real", "complex"), "density")
+    as_choice(missing_phase, get_args(MissingPhase), "missing_phase")
     rows = _read(lattice, columns, missing_phase)
     read = rows.values.size
     if values == "structure_factor":
@@ -159,11 +162,9 @@ def _read(lattice: Lattice, columns: Columns, missing_phase: MissingPhase) -> _R
             f"a lattice of dimension {lattice.dimension} has the index columns {', '.join(names)}",
             f"give {len(names)} index columns",
         )
-    size = _common_length(columns.indices, names)
-    indices = np.stack(
-        [_index_column(column, name) for column, name in zip(columns.indices, names, strict=True)],
-        axis=1,
-    )
+    given = [_numbers(column, name) for column, name in zip(columns.indices, names, strict=True)]
+    size = _common_length(given, names)
+    indices = np.stack([_index_column(column, name) for column, name in zip(given, names, strict=True)], axis=1)
     values, known = _strengths(columns, size, missing_phase)
     sigma = _column(columns.sigma, "sigma", size)
     phase_sigma = _column(columns.phase_sigma_deg, "phase_sigma_deg", size)
@@ -185,8 +186,8 @@ def _read(lattice: Lattice, columns: Columns, missing_phase: MissingPhase) -> _R
     )
 
 
-def _common_length(columns: Sequence[ArrayLike], names: Sequence[str]) -> int:
-    sizes = [np.shape(column) for column in columns]
+def _common_length(columns: Sequence[FloatArray], names: Sequence[str]) -> int:
+    sizes = [column.shape for column in columns]
     for name, size in zip(names, sizes, strict=True):
         if len(size) != 1:
             raise InputError(name, "is not a plain column of numbers", "give one number a row")
@@ -202,14 +203,16 @@ def _common_length(columns: Sequence[ArrayLike], names: Sequence[str]) -> int:
 
 
 def _numbers(column: ArrayLike, name: str) -> FloatArray:
-    array = np.asarray(column)
+    try:
+        array = np.asarray(column)
+    except ValueError as fault:
+        raise InputError(name, "is not a plain column of numbers", "give one number a row") from fault
     if array.dtype.kind not in "iuf":
         raise InputError(name, "is not a column of real numbers", "give numbers only")
     return np.asarray(array, dtype=np.float64)
 
 
-def _index_column(column: ArrayLike, name: str) -> IntArray:
-    array = _numbers(column, name)
+def _index_column(array: FloatArray, name: str) -> IntArray:
     _refuse_rows(~np.isfinite(array), name, "is not a finite number", "give integer indices")
     whole = np.rint(array)
     _refuse_rows(whole != array, name, "is not a whole number", "give integer indices")

@@ -63,7 +63,7 @@ class InputError(EngineError):
             path,
             f"{reason} ({noun} {named}{more}, counted from 0)",
             cure,
-            rows[:ROWS_NAMED].tolist().tolist(),
+            rows[:ROWS_NAMED].tolist(),
         )
 
 

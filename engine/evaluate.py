@@ -50,8 +50,9 @@ class Work:
     @property
     def bytes(self) -> int:
         """Values and workspace together, at the peak."""
-        scratch = self.bytes_output if self.parts.magnitude else 0
-        return self.bytes_output + scratch + max(one.chosen.workspace for one in self.plans)
+        # A vector is summed into strided memory, its length by way of each component.
+        one = self.plans[0].output if self.parts.components or self.parts.magnitude else 0
+        return self.bytes_output + one + max(part.chosen.workspace for part in self.plans)
 
     @property
     def seconds(self) -> float:
@@ -132,14 +133,16 @@ def prepare(
     parts = summands(coefficients, treatment)
     count = len(parts.series)
     output = math.prod(sampling.shape) * result_dtype(parts.series[0].real, (demand or Demand()).precision).itemsize
-    if max_bytes is not None and output * (1 if count == 1 else count + 1) > max_bytes:
+    # One component is summed at a time, beside the values of all or the length of the vector.
+    others = count if parts.components else int(parts.magnitude)
+    if max_bytes is not None and output * (1 + others) > max_bytes:
         raise TooLargeError(
             "samples",
-            f"the values alone would take {output * count / 2**20:,.0f} MiB, more than the limit of "
+            f"the values alone would take {output * (1 + others) / 2**20:,.0f} MiB, more than the limit of "
             f"{max_bytes / 2**20:,.0f} MiB",
             "ask for fewer samples or single precision, or raise the limit",
         )
-    room = None if max_bytes is None else max_bytes - output * (count - 1 if not parts.magnitude else 1)
+    room = None if max_bytes is None else max_bytes - output * others
     plans = tuple(plan(series, sampling, demand, method=method, max_bytes=room) for series in parts.series)
     dtype = result_dtype(parts.series[0].real, plans[0].demand.precision)
     if parts.magnitude:
@@ -186,8 +189,9 @@ def perform(work: Work, *, out: AnyArray | None = None, progress: Progress | Non
         if work.parts.magnitude:
             component = np.empty(work.sampling.shape, result_dtype(one.series.real, one.demand.precision))
             fill(source, component, threads=threads, progress=report)
-            square = component.real**2 + component.imag**2 if component.dtype.kind == "c" else component**2
-            out[...] = square if number == 0 else out + square
+            if number == 0:
+                out.fill(0)
+            _add_square(out, component)
             if number == count - 1:
                 np.sqrt(out, out=out)
                 tracker.add(out)
@@ -226,6 +230,14 @@ def iterate(work: Work) -> Iterator[AnyArray]:
         raise InputError("field", "has several components", "iterate over a scalar field")
     one = work.plans[0]
     yield from stream(one.prepare(), work.dtype, work.sampling.shape[1:], one.demand.threads)
+
+
+def _add_square(total: AnyArray, component: AnyArray) -> None:
+    """Add |component|² to a real total; the component is overwritten, to need no more memory."""
+    parts = component.view(total.dtype).reshape(*total.shape, -1)
+    np.multiply(parts, parts, out=parts)
+    for part in np.moveaxis(parts, -1, 0):
+        total += part
 
 
 def _share(progress: Progress, number: int, count: int) -> Progress:

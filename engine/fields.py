@@ -18,7 +18,7 @@ from typing import Literal, get_args
 
 import numpy as np
 
-from engine.arrays import ComplexArray, FloatArray
+from engine.arrays import ComplexArray, FloatArray, as_choice
 from engine.averages import Average
 from engine.coefficients import CoefficientSet
 from engine.errors import InputError
@@ -28,6 +28,8 @@ from engine.windows import NO_WINDOW, Window, gaussian
 FieldKind = Literal["density", "gradient", "gradient_magnitude", "laplacian", "autocorrelation", "response"]
 FIELD_KINDS: tuple[FieldKind, ...] = get_args(FieldKind)
 
+STEEPEST = 50.0
+"""Largest believed exponent of a sharpening: beyond it the outermost coefficients are all that is left."""
 PHASES_DECIDE = "A density is only as good as its phases: wrong ones give a wrong map that looks as sharp."
 
 
@@ -102,6 +104,7 @@ def summands(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
         raise InputError("apply_merit", "the set has no figures of merit", "give the column merit")
     if not math.isfinite(treatment.sharpen):
         raise InputError("sharpen", "is not a finite number", "give B in Å²")
+    as_choice(treatment.field, FIELD_KINDS, "field")
     needs_phases = treatment.field != "autocorrelation"
     used = coefficients.phased() if needs_phases else coefficients
     if used.count == 0:
@@ -156,6 +159,12 @@ def _factors(used: CoefficientSet, treatment: Treatment) -> tuple[FloatArray, li
         factors *= treatment.window.factors(magnitudes, g_max)
         applied.append(treatment.window.describe(lattice.dimension, g_max))
     if treatment.sharpen:
+        if treatment.sharpen * (g_max / (4 * math.pi)) ** 2 > STEEPEST:
+            raise InputError(
+                "sharpen",
+                f"multiplies the outermost coefficients by more than exp({STEEPEST:g})",
+                "give a smaller B, in Å²",
+            )
         factors *= gaussian(magnitudes, treatment.sharpen)
         verb = "sharpened" if treatment.sharpen > 0 else "smoothed"
         applied.append(f"{verb} by exp(B s²) with B = {treatment.sharpen:g} Å²")

@@ -62,14 +62,14 @@ class Lattice:
             Not square, not finite, lengths out of range, (nearly) linearly dependent, or
             left-handed.
         """
-        array = np.asarray(vectors)
-        d = array.shape[0] if array.ndim == 2 else 0
-        if array.ndim != 2 or d not in (1, 2, 3):
+        # A copy: the lattice is for ever, the caller's array is not.
+        matrix = as_matrix(vectors, (-1, -1), "vectors").copy()
+        d = matrix.shape[0]
+        if d > 3 or matrix.shape[1] != d:
             raise InputError("vectors", "is not a 1×1, 2×2 or 3×3 matrix", "give one row per direct vector")
-        matrix = as_matrix(vectors, (d, d), "vectors")
-        lengths = np.linalg.norm(matrix, axis=1)
+        lengths = [math.hypot(*row) for row in matrix.tolist()]
         for row, length in enumerate(lengths):
-            _check_length(float(length), ("vectors", row))
+            _check_length(length, ("vectors", row))
         volume = float(np.linalg.det(matrix))
         flatness = abs(volume) / float(np.prod(lengths))
         if flatness < FLATTEST:

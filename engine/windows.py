@@ -8,12 +8,12 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Literal
+from typing import Literal, get_args
 
 import numpy as np
 from scipy import integrate, optimize, special
 
-from engine.arrays import FloatArray, as_positive
+from engine.arrays import FloatArray, as_choice, as_positive
 from engine.errors import InputError
 
 WindowKind = Literal["none", "lanczos", "raised_cosine", "gaussian"]
@@ -31,6 +31,7 @@ class Window:
     b: float | None = None
 
     def __post_init__(self) -> None:
+        as_choice(self.kind, get_args(WindowKind), "kind")
         if self.kind == "gaussian":
             if self.b is None:
                 raise InputError("b", "is absent", "a gaussian window needs b, in Å²")
@@ -85,8 +86,10 @@ def point_width(window: Window, dimension: int, g_max: float) -> float:
             weight = float(window.factors(np.array([u * g_max]), g_max)[0])
             return weight * u ** (dimension - 1) * kernel(u * g_max * radius)
 
-        return float(integrate.quad(integrand, 0, 1, limit=200)[0])
+        return float(integrate.quad(integrand, 0, end, limit=200)[0])
 
+    # Beyond B s² = 40 nothing is left of a gaussian, and a narrow one escapes the quadrature.
+    end = 1.0 if window.b is None else min(1.0, 4 * math.pi * math.sqrt(40 / window.b) / g_max)
     peak = response(0.0)
     d_min = 2 * math.pi / g_max
     outer = 0.25 * d_min

@@ -37,7 +37,7 @@ def render(coefficients: CoefficientSet, made: Field) -> str:
 
 def _chart(values: FloatArray, along: FloatArray, unit: str) -> list[str]:
     """Columns of eighths; each column is the mean of the samples that fall into it."""
-    columns = [part.mean() for part in np.array_split(values, min(COLUMNS, values.size))]
+    columns = _means(values, min(COLUMNS, values.size), axis=0).tolist()
     low, high = min(columns), max(columns)
     span = high - low or 1.0
     heights = [round((value - low) / span * ROWS * 8) for value in columns]
@@ -60,12 +60,19 @@ def _shades(values: FloatArray, steps: list[float]) -> list[str]:
     height = values.shape[1] * steps[1]
     across = min(COLUMNS, values.shape[0])
     up = max(1, min(values.shape[1], round(across * height / width / 2), 2 * ROWS))
-    columns = np.array_split(values, across, axis=0)
-    picked = np.array([[part.mean() for part in np.array_split(column.mean(axis=0), up)] for column in columns])
+    picked = _means(_means(values, across, axis=0), up, axis=1)
     low, high = float(picked.min()), float(picked.max())
     levels = np.rint((picked - low) / ((high - low) or 1.0) * (len(SHADES) - 1)).astype(int)
     lines = ["".join(SHADES[level] for level in row) for row in levels.T[::-1]]
     return [f"  {line}" for line in lines] + [f"  '{SHADES[0]}' {low:.4g} … '{SHADES[-1]}' {high:.4g}"]
+
+
+def _means(values: FloatArray, count: int, axis: int) -> FloatArray:
+    """Means over `count` stretches of one axis, as equal as whole samples allow all along it."""
+    edges = np.arange(count + 1) * values.shape[axis] // count
+    sums = np.add.reduceat(values, edges[:-1], axis=axis)
+    widths = np.diff(edges).reshape([-1 if place == axis else 1 for place in range(values.ndim)])
+    return np.asarray(sums / widths)
 
 
 def _points(positions: FloatArray, values: FloatArray) -> list[str]:

@@ -14,6 +14,9 @@ from engine.sampling.boxes import edges_grid
 from engine.sampling.grids import AffineGrid
 from engine.sampling.positions import Coordinates, as_fractional
 
+TIE = 1e-9
+"""Relative difference below which two lengths count as equal."""
+
 
 def plane(
     lattice: Lattice,
@@ -101,16 +104,18 @@ def in_plane_axes(lattice: Lattice, normal: IntArray) -> tuple[FloatArray, Float
     and normal × that.
 
     The lattice vectors of the plane are the integer solutions of h·u = 0. A basis of them is
-    reduced by the method of Lagrange and Gauss.
+    reduced by the method of Lagrange and Gauss, in whole numbers so that they stay in the plane.
     """
-    first, second = (lattice.to_cartesian(vector.astype(np.float64)) for vector in _plane_basis(normal))
+    one, two = _plane_basis(normal)
     while True:
-        if first @ first > second @ second:
-            first, second = second, first
-        turns = np.rint(first @ second / (first @ first))
-        if turns == 0:
+        first, second = (lattice.to_cartesian(vector.astype(np.float64)) for vector in (one, two))
+        # Vectors of one length, and projections of just a half, must not change places for ever.
+        if second @ second < (1 - TIE) * (first @ first):
+            one, two, first, second = two, one, second, first
+        turns = first @ second / (first @ first)
+        if abs(turns) <= 0.5 + TIE:
             break
-        second = second - turns * first
+        two = two - int(np.rint(turns)) * one
     wavevector = lattice.wavevectors(normal[None, :])[0]
     across = first / np.linalg.norm(first)
     # Of the two ends of the shortest vector take the one that leans towards +x, +y, +z.

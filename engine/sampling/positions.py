@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from typing import Literal
+from typing import Literal, get_args
 
 from numpy.typing import ArrayLike
 
-from engine.arrays import FloatArray, as_matrix, as_vector
+from engine.arrays import FloatArray, as_choice, as_matrix, as_vector
 from engine.errors import InputError
 from engine.lattice import Lattice
 
@@ -21,6 +21,7 @@ def as_fractional(lattice: Lattice, value: ArrayLike, coordinates: Coordinates, 
     InputError
         Not d finite numbers.
     """
+    as_choice(coordinates, get_args(Coordinates), "coordinates")
     vector = as_vector(value, lattice.dimension, name)
     return vector if coordinates == "fractional" else lattice.to_fractional(vector)
 
@@ -33,6 +34,7 @@ def as_fractional_rows(lattice: Lattice, value: ArrayLike, coordinates: Coordina
     InputError
         Not rows of d finite numbers.
     """
+    as_choice(coordinates, get_args(Coordinates), "coordinates")
     rows = as_matrix(value, (-1, lattice.dimension), name)
     return rows if coordinates == "fractional" else lattice.to_fractional(rows)
 

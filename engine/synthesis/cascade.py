@@ -32,6 +32,9 @@ MATRIX_GAIN = {"double": 5.5, "single": 16.0}
 """The last stage is a matrix product where the occupied l are fewer than this many times log2 N.
 The real transform costs the same however few they are, and in single precision as much as in
 double; measured, the product is faster below these ratios."""
+ROWS_PER_TERM = 8
+"""And where it has at least this many rows to each occupied l: below, making the matrix costs more
+than it saves, and it would be large beside the output."""
 CHUNK = 1 << 16
 """Coefficients scattered at a time, so that temporaries stay small beside the output."""
 SECONDS_PER_COEFFICIENT = 3.0e-8
@@ -47,7 +50,7 @@ def estimate(series: Series, grid: AffineGrid, found: Fold, demand: Demand) -> E
     first = columns * lengths[0] if len(lengths) > 1 else spans[0]
     plane_in = lengths[-2] * spans[-1] if len(lengths) == 3 else spans[-1]
     plane_out = math.prod(lengths[1:]) if len(lengths) > 1 else lengths[0]
-    planes = min(grid.shape[0], lengths[0]) if len(lengths) > 1 else 1
+    planes = grid.shape[0] if len(lengths) > 1 else 1
     block = _block_planes(plane_in, item, planes, demand.threads)
     seconds = series.count * SECONDS_PER_COEFFICIENT
     if len(lengths) > 1:
@@ -55,23 +58,50 @@ def estimate(series: Series, grid: AffineGrid, found: Fold, demand: Demand) -> E
     if len(lengths) == 3:
         seconds += planes * plane_in * math.log2(lengths[1] + 1) * SECONDS_PER_BUTTERFLY
     seconds += planes * plane_out * math.log2(lengths[-1] + 1) * SECONDS_PER_BUTTERFLY / 2
-    buffers = demand.threads * item * block * (plane_in + (0 if series.real else 2 * plane_out))
-    wrapped = grid.shape != lengths
-    if wrapped:
-        buffers += demand.threads * item * block * plane_out
-    # A non-trivial fold makes indices, values and targets of its own for every coefficient.
-    tables = series.count * (16 * len(lengths) + 40) if wrapped or len(lengths) < 3 else CHUNK * 128
     return Estimate(
         method="cascade",
         seconds=seconds / demand.threads + 1e-4,
-        workspace=int(item * first + buffers + tables),
+        workspace=_workspace(series, grid, found, demand, spans, block),
         accuracy=rounding(demand.precision),
     )
 
 
+def _workspace(
+    series: Series, grid: AffineGrid, found: Fold, demand: Demand, spans: tuple[int, ...], block: int
+) -> int:
+    """Bytes held at the peak beside the output; `block` planes are computed at a time."""
+    item = 16 if demand.precision == "double" else 8
+    number = item // 2 if series.real else item
+    lengths, shape = found.lengths, grid.shape
+    down = lengths[0] if len(lengths) > 1 else 1
+    across = lengths[1] if len(lengths) == 3 else 1
+    last, deep = lengths[-1], spans[-1]
+    stage = item * down * math.prod(spans[1:]) if len(lengths) > 1 else item * deep
+    # In the first stage each thread holds a column's transform, in the last one a block of planes.
+    held = item * max(down * deep, block * across * deep) + (0 if series.real else item * block * last)
+    if shape != lengths:
+        rows = (across + shape[1]) * last if len(lengths) == 3 else across * last
+        held += number * block * (rows + math.prod(shape[1:])) if len(lengths) > 1 else 0
+    if len(lengths) == 1:
+        held += number * last + (number + 24) * shape[0]
+    if series.real:
+        widest = min(deep, int(MATRIX_GAIN[demand.precision] * math.log2(last + 1)))
+        held += 2 * number * last * min(widest, shape[0] * across // ROWS_PER_TERM)
+    # A fold makes indices, values and targets of its own for every coefficient.
+    untouched = (
+        np.array_equal(found.translations, np.eye(series.lattice.dimension))
+        and not grid.origin.any()
+        and bool(np.all(2 * np.maximum(series.high, -series.low) <= lengths))
+    )
+    tables = 0 if untouched else series.count * (24 * len(lengths) + 56)
+    chunks = demand.threads * min(series.count, CHUNK) * 128
+    return int(stage + demand.threads * held + tables + chunks)
+
+
 def prepare(series: Series, grid: AffineGrid, found: Fold, demand: Demand) -> Source:
     """A cascade ready to be computed; the first stage is done here."""
-    return _Cascade(fold(series, grid, found), series.real, grid, found, demand)
+    deep = _spans(series, found)[-1]
+    return _Cascade(fold(series, grid, found), series.real, grid, found, demand, deep)
 
 
 def _spans(series: Series, found: Fold) -> tuple[int, ...]:
@@ -80,15 +110,18 @@ def _spans(series: Series, found: Fold) -> tuple[int, ...]:
     spans = []
     for axis, (translation, length) in enumerate(zip(found.translations, found.lengths, strict=True)):
         ends = np.stack([translation * low, translation * high])
-        bottom, top = int(ends.min(axis=0).sum()), int(ends.max(axis=0).sum())
+        # The extents always take in the zero.
+        bottom, top = min(int(ends.min(axis=0).sum()), 0), max(int(ends.max(axis=0).sum()), 0)
+        # At a length that is even the index N/2 may be held on both sides.
+        most = 2 * (length // 2) + 1
         last = axis == len(found.lengths) - 1
         if series.real and last:
             spans.append(min(max(abs(bottom), abs(top)), length // 2) + 1)
         elif series.real:
             # Mates of terms with l = 0 lie on the other side.
-            spans.append(min(2 * max(abs(bottom), abs(top)) + 1, length))
+            spans.append(min(2 * max(abs(bottom), abs(top)) + 1, most))
         else:
-            spans.append(min(top - bottom + 1, length))
+            spans.append(min(top - bottom + 1, most))
     return tuple(spans)
 
 
@@ -100,7 +133,7 @@ def _block_planes(plane_in: int, item: int, planes: int, threads: int) -> int:
 class _Cascade:
     """The stages of one sum. Axis p−1 is the last, contiguous one."""
 
-    def __init__(self, modes: Modes, real: bool, grid: AffineGrid, found: Fold, demand: Demand) -> None:
+    def __init__(self, modes: Modes, real: bool, grid: AffineGrid, found: Fold, demand: Demand, widest: int) -> None:
         lengths = found.lengths
         self._real = real
         self._out_dtype = result_dtype(real, demand.precision)
@@ -116,12 +149,15 @@ class _Cascade:
         self._low_k, self._low_l, self._stage, occupied = self._scatter(modes)
         self._first_stage(occupied)
         deep = self._stage.shape[2]
-        self._basis = _cosines(self._last, deep, demand.precision, self._out_dtype) if real else None
         self.planes = grid.shape[0]
+        rows = self.planes * self._across if len(lengths) > 1 else 1
+        self._basis = _cosines(self._last, deep, rows, demand.precision, self._out_dtype) if real else None
         if len(lengths) == 1:
             self.block = self.planes
         else:
-            self.block = _block_planes(self._across * deep, self._dtype.itemsize, self.planes, demand.threads)
+            # By the bound `widest` of what is held along the last axis, as in the estimate.
+            plane = self._across * widest
+            self.block = _block_planes(plane, self._dtype.itemsize, self.planes, demand.threads)
         self.concurrent = True
         self._buffers = threading.local()
 
@@ -259,19 +295,24 @@ def _complex_rows(block: AnyArray, low: int, out: AnyArray) -> None:
     _inverse_in_place(out, axis=2)
 
 
-def _cosines(length: int, deep: int, precision: str, dtype: np.dtype[np.generic]) -> AnyArray | None:
+def _cosines(length: int, deep: int, rows: int, precision: str, dtype: np.dtype[np.generic]) -> AnyArray | None:
     """Matrix of the last stage, shape (2 deep, N), where it beats the transform; else None.
 
     A row (Re X_0, Im X_0, Re X_1, …) times it is Σ_l Re(X_l w^{ln}), terms with 0 < l < N/2 counted
     twice because they stand for their mates too.
     """
-    if deep > MATRIX_GAIN[precision] * math.log2(length + 1):
+    if deep > MATRIX_GAIN[precision] * math.log2(length + 1) or rows < ROWS_PER_TERM * deep:
         return None
-    l = np.arange(deep)
-    angles = 2 * np.pi * (np.outer(l, np.arange(length)) % length) / length
-    weight = np.where((l == 0) | (2 * l == length), 1.0, 2.0)[:, None]
-    parts = np.stack([weight * np.cos(angles), -weight * np.sin(angles)], axis=1)
-    return parts.reshape(2 * deep, length).astype(dtype)
+    samples = np.arange(length)
+    turn = 2 * np.pi * samples / length
+    cosine, sine = np.cos(turn), np.sin(turn)
+    matrix = np.empty((deep, 2, length), dtype=dtype)
+    for l in range(deep):
+        weight = 1.0 if l == 0 or 2 * l == length else 2.0
+        where = l * samples % length
+        matrix[l, 0] = weight * cosine[where]
+        matrix[l, 1] = -weight * sine[where]
+    return matrix.reshape(2 * deep, length)
 
 
 def _padded(indices: IntArray) -> tuple[IntArray, IntArray, IntArray]:

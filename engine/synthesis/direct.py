@@ -25,15 +25,25 @@ SECONDS_PER_PRODUCT = 1.5e-10
 def estimate(series: Series, sampling: AffineGrid | FreePoints, demand: Demand) -> Estimate:
     """Cost of the direct sum."""
     n = series.count
+    number = 8 if series.real else 16
     if isinstance(sampling, FreePoints):
         seconds = n * sampling.samples * 1.5 * SECONDS_PER_EXPONENTIAL
+        tile = demand.threads * min(CHUNK, n * sampling.samples)
+        held = 0
     else:
         axes = _axis_lengths(sampling.shape)
-        seconds = n * (sum(axes) * SECONDS_PER_EXPONENTIAL + math.prod(axes) * SECONDS_PER_PRODUCT)
+        rest = math.prod(sampling.shape[1:])
+        # The exponentials of the later axes are made anew for each block of planes.
+        blocks = -(-axes[0] // _block(rest)) if len(sampling.shape) > 1 else 1
+        exponentials = axes[0] + blocks * sum(axes[1:])
+        seconds = n * (exponentials * SECONDS_PER_EXPONENTIAL + math.prod(axes) * SECONDS_PER_PRODUCT)
         if len(axes) == 3:
             seconds += n * axes[0] * axes[1] * SECONDS_PER_PRODUCT * 10
-    rest = math.prod(sampling.shape[1:]) if len(sampling.shape) > 1 else 1
-    workspace = 16 * (8 * CHUNK + 4 * n + rest)
+        tile = min(CHUNK, n * max(math.prod(axes[:-1]), axes[-1]))
+        # The sum of a block, and the product that is added to it.
+        block = min(axes[0], _block(rest)) * rest if len(sampling.shape) > 1 else math.prod(axes)
+        held = 2 * number * block
+    workspace = 128 * (tile + n) + held
     return Estimate(
         method="direct",
         seconds=seconds + 2e-5,
@@ -54,6 +64,11 @@ def _axis_lengths(shape: tuple[int, ...]) -> tuple[int, ...]:
         return shape
     fine = math.isqrt(shape[0] - 1) + 1 if shape[0] > 1 else 1
     return -(-shape[0] // fine), fine
+
+
+def _block(rest: int) -> int:
+    """Planes of `rest` samples that are computed together."""
+    return max(1, CHUNK // rest)
 
 
 def _phasors(turns: FloatArray) -> ComplexArray:
@@ -102,7 +117,7 @@ class _Grid:
         # One plane of a 3-D grid is work enough for a matrix product; lines and planes are
         # done whole up to a size.
         rest = math.prod(sampling.shape[1:])
-        self.block = self.planes if len(self._shape) == 1 else max(1, CHUNK // rest)
+        self.block = self.planes if len(self._shape) == 1 else _block(rest)
         self.concurrent = False
 
     def compute(self, start: int, stop: int, out: AnyArray) -> None:

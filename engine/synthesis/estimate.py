@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Literal, Protocol
+from typing import Literal, Protocol, get_args
 
 import numpy as np
 from numpy.typing import DTypeLike
 
-from engine.arrays import AnyArray
+from engine.arrays import AnyArray, as_choice
 
 Method = Literal["direct", "cascade", "nonuniform"]
 Precision = Literal["double", "single"]
@@ -32,6 +32,9 @@ class Demand:
     precision: Precision = "double"
     tolerance: float = DEFAULT_TOLERANCE
     threads: int = 1
+
+    def __post_init__(self) -> None:
+        as_choice(self.precision, get_args(Precision), "precision")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -40,7 +40,7 @@ def estimate(series: Series, sampling: AffineGrid | FreePoints, demand: Demand) 
     if isinstance(sampling, FreePoints):
         modes = _mode_box(series)
         fine = math.prod(_fine(count) for count in modes)
-        workspace = ITEM * (fine + math.prod(modes)) + sampling.samples * (8 * len(modes) + 2 * ITEM)
+        workspace = ITEM * (fine + math.prod(modes)) + sampling.samples * (8 * len(modes) + 88) + n * 64
         spread = sampling.samples * width ** len(modes)
         seconds = _fft_seconds(fine) + spread * SECONDS_PER_SPREAD
     else:
@@ -48,7 +48,7 @@ def estimate(series: Series, sampling: AffineGrid | FreePoints, demand: Demand) 
         block = _block(shape)
         blocks = -(-shape[0] // block)
         fine = math.prod(_fine(count) for count in (block, *shape[1:]))
-        workspace = ITEM * (fine + 2 * block * math.prod(shape[1:])) + n * (24 + 8 * len(shape) + 3 * ITEM)
+        workspace = ITEM * (fine + block * math.prod(shape[1:])) + n * (16 * len(shape) + 112)
         spread = n * width ** len(shape)
         seconds = blocks * (_fft_seconds(fine) + spread * SECONDS_PER_SPREAD)
     return Estimate(

@@ -127,9 +127,7 @@ def reference(dimension: int, density: str, name: str) -> Reference:
     where, positions = _samples(given.lattice, name, random)
     count = where.samples
     picked = np.sort(random.choice(count, min(COMPARED, count), replace=False))
-    values = exact.series_at(
-        given.reflections, given.factors, [positions(number) for number in picked], given.volume
-    )
+    values = exact.series_at(given.reflections, given.factors, [positions(number) for number in picked], given.volume)
     return Reference(where, picked, values)
 
 
@@ -154,9 +152,7 @@ def test_series_agree_with_sums_in_50_digits(dimension, density, name, way):
 
 @pytest.mark.parametrize("threads", [1, 2])
 @pytest.mark.parametrize("density", ["real", "complex"])
-@pytest.mark.parametrize(
-    ("dimension", "name"), [(dimension, name) for dimension in NAMES for name in NAMES[dimension]]
-)
+@pytest.mark.parametrize(("dimension", "name"), [(dimension, name) for dimension in NAMES for name in NAMES[dimension]])
 def test_the_method_of_the_plan_keeps_the_accuracy_it_states(dimension, name, density, threads):
     given, expected = example(dimension, density), reference(dimension, density, name)
     field = evaluate(given.coefficients, expected.where, demand=Demand(threads=threads))
@@ -190,9 +186,7 @@ SHAPES = {
 def test_whole_cells_agree_with_numpy(dimension, shape, density, precision):
     """(1/V) Σ F(h) exp(−2πi h·s/N) is numpy's forward transform of F, indices modulo N."""
     random = np.random.default_rng([162, dimension, density == "real"])
-    lattice = Lattice.from_vectors(
-        np.diag([9.0, 11.0, 12.5][:dimension]) + random.uniform(0, 2, (dimension,) * 2)
-    )
+    lattice = Lattice.from_vectors(np.diag([9.0, 11.0, 12.5][:dimension]) + random.uniform(0, 2, (dimension,) * 2))
     rows = np.unique(random.integers(-13, 14, (2500, dimension)), axis=0)
     amplitude, phase = random.uniform(0, 5, len(rows)), random.uniform(0, 360, len(rows))
     if density == "real":
