@@ -5,7 +5,7 @@ Public functions pass what they are given through these once; code behind them t
 
 from __future__ import annotations
 
-import sys
+import math
 from collections.abc import Sequence
 
 import numpy as np
@@ -67,10 +67,13 @@ def as_positive(value: float, name: str | Sequence[str | int], unit: str) -> flo
     """
     if isinstance(value, bool) or not isinstance(value, int | float | np.integer | np.floating):
         raise InputError(name, "is not a number", f"give a positive number ({unit})")
-    # Python compares a whole number of any length with a float; a conversion would overflow.
-    if not 0 < value <= sys.float_info.max:
+    try:
+        number = float(value)
+    except OverflowError:
+        number = math.inf
+    if not 0 < number < math.inf:
         raise InputError(name, "is not finite and above zero", f"give a finite number above zero ({unit})")
-    return float(value)
+    return number
 
 
 def as_choice(value: object, choices: Sequence[str], name: str | Sequence[str | int]) -> None:

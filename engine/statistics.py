@@ -9,6 +9,9 @@ import numpy as np
 
 from engine.arrays import AnyArray
 
+SMALLEST = 1e-30
+"""Sums of squares below it may have lost their smaller terms in single precision."""
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Statistics:
@@ -51,7 +54,10 @@ class Tracker:
             self._sum += float(block.sum(dtype=np.float64))
         flat = block.reshape(-1)
         # vdot conjugates its first operand; in single precision it adds up pairwise in blocks.
-        self._squares += float(np.vdot(flat, flat).real)
+        squares = float(np.vdot(flat, flat).real)
+        if not SMALLEST < squares < math.inf:
+            squares = float(np.sum(np.abs(flat).astype(np.float64) ** 2))
+        self._squares += squares
         self._count += block.size
 
     def statistics(self) -> Statistics:

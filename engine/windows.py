@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from typing import Literal, get_args
 
 import numpy as np
-from scipy import integrate, optimize, special
+from scipy import special
 
 from engine.arrays import FloatArray, as_choice, as_positive
 from engine.errors import InputError
@@ -61,6 +61,8 @@ class Window:
 
 
 NO_WINDOW = Window()
+QUADRATURE_NODES = 256
+"""Enough for a window a hundred times narrower than the sphere it is applied to."""
 
 
 def gaussian(magnitudes: FloatArray, b: float) -> FloatArray:
@@ -75,24 +77,20 @@ def point_width(window: Window, dimension: int, g_max: float) -> float:
     R(r) ∝ ∫₀¹ w(u) u^{d−1} Λ_d(u G_max r) du with Λ_1 = cos, Λ_2 = J_0, Λ_3 = sin x/x
     (James, The Optical Principles of the Diffraction of X-rays, 1948, for d = 3).
     """
-
-    def kernel(x: float) -> float:
-        if dimension == 1:
-            return math.cos(x)
-        return float(special.j0(x)) if dimension == 2 else float(np.sinc(x / np.pi))
+    nodes, weights = np.polynomial.legendre.leggauss(QUADRATURE_NODES)
+    u = 0.5 * (nodes + 1)
+    measure = weights * window.factors(u * g_max, g_max) * u ** (dimension - 1)
 
     def response(radius: float) -> float:
-        def integrand(u: float) -> float:
-            weight = float(window.factors(np.array([u * g_max]), g_max)[0])
-            return weight * u ** (dimension - 1) * kernel(u * g_max * radius)
+        x = u * g_max * radius
+        kernel = np.cos(x) if dimension == 1 else special.j0(x) if dimension == 2 else np.sinc(x / np.pi)
+        return float(measure @ kernel)
 
-        return float(integrate.quad(integrand, 0, end, limit=200)[0])
-
-    # Beyond B s² = 40 nothing is left of a gaussian, and a narrow one escapes the quadrature.
-    end = 1.0 if window.b is None else min(1.0, 4 * math.pi * math.sqrt(40 / window.b) / g_max)
-    peak = response(0.0)
-    d_min = 2 * math.pi / g_max
-    outer = 0.25 * d_min
-    while response(outer) > peak / 2:
-        outer *= 2
-    return 2 * float(optimize.brentq(lambda radius: response(radius) - peak / 2, 0.0, outer))
+    half = response(0.0) / 2
+    inner, outer = 0.0, 0.25 * 2 * math.pi / g_max
+    while response(outer) > half:
+        inner, outer = outer, 2 * outer
+    while outer - inner > 1e-9 * outer:
+        middle = 0.5 * (inner + outer)
+        inner, outer = (middle, outer) if response(middle) > half else (inner, middle)
+    return inner + outer

@@ -38,6 +38,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
         print(f"densityloom: {problem.detail}", file=sys.stderr)
         for place in problem.places[1:]:
             print(f"  {place.pointer}: {place.reason}. {place.cure}.", file=sys.stderr)
+    except BrokenPipeError:
+        # Whoever read our output has seen enough; nothing more may be written, not even at exit.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 0
     except (ValueError, OSError) as fault:
         print(f"densityloom: {fault}", file=sys.stderr)
     except KeyboardInterrupt:
@@ -86,7 +90,7 @@ def _serve(options: argparse.Namespace) -> int:
         host=options.host,
         port=options.port,
         workers=options.workers,
-        # The faster parser puts no bound on the size of a header.
+        # Of the parsers this one bounds the size of a header.
         http="h11",
         server_header=False,
         timeout_graceful_shutdown=10,

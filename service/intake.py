@@ -98,9 +98,9 @@ def check(
     """Check a request against the schema of its product, joined with the columns sent beside it."""
     named = document.get("product")
     if product is None:
-        if named not in PRODUCTS:
+        if not isinstance(named, str) or named not in PRODUCTS:
             raise at(("product",), "names no product", f"give one of {', '.join(PRODUCTS)}")
-        product = str(named)
+        product = named
     elif named is not None and named != product:
         raise at(("product",), f"differs from the address, which asks for a {product}", "make the two agree")
     if table is not None:

@@ -12,7 +12,7 @@ from engine.evaluate import Field, Work, prepare
 from engine.synthesis import Demand, Progress
 from service import interpret
 from service.encoders.write import write
-from service.problems import Problem, located
+from service.problems import Problem, at, located
 from service.schemas.products import ProductIn
 from service.settings import Settings
 from service.spool import Spool
@@ -54,7 +54,12 @@ def run(
     sampling = interpret.samples(request, coefficients.lattice)
     wanted = math.prod(sampling.shape)
     if wanted > settings.max_samples:
-        raise _beyond("samples", wanted, settings.max_samples)
+        raise at(
+            (_place_of_size(request),),
+            f"asks for {wanted:,} samples, more than the limit of {settings.max_samples:,}",
+            "ask for fewer, or have the limit raised",
+            kind="too-costly",
+        )
     treatment = interpret.treatment(request, coefficients.lattice)
     demand = Demand(precision=request.precision, tolerance=request.tolerance, threads=threads)
     with located(renamed={"phase_deg": ("set", "phase_deg"), "samples": (_place_of_size(request),)}):
@@ -68,6 +73,12 @@ def run(
         )
     progress = None if watch is None else watch(work)
     field = write(product, work, form, spool, progress)
+    if not math.isfinite(field.statistics.rms):
+        raise at(
+            ("set",),
+            f"gives values whose squares overflow in {request.precision} precision",
+            "state the columns in a larger unit, or ask for double precision",
+        )
     return Done(coefficients, field, time.perf_counter() - begin)
 
 
@@ -77,11 +88,3 @@ def _place_of_size(request: ProductIn) -> str:
         if getattr(request, name, None) is not None:
             return name
     return ""
-
-
-def _beyond(what: str, wanted: int, limit: int) -> Problem:
-    return Problem(
-        "too-costly",
-        f"The request asks for {wanted:,} {what}, more than the limit of {limit:,}. "
-        "Ask for fewer, or have the limit raised.",
-    )

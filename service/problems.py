@@ -15,6 +15,8 @@ from engine.errors import InputError, TooLargeError
 MEDIA_TYPE = "application/problem+json"
 ERRORS_NAMED = 20
 """At most this many places are named in one document."""
+LONGEST_PART = 80
+"""A member's name is cut to this length in a pointer: an unknown one may be as long as the body."""
 
 TITLES = {
     "invalid-request": (422, "The request cannot be carried out as it stands"),
@@ -101,7 +103,7 @@ class Problem(Exception):
 
 def pointer(parts: Sequence[str | int]) -> str:
     """A JSON pointer (RFC 6901)."""
-    return "".join("/" + str(part).replace("~", "~0").replace("/", "~1") for part in parts)
+    return "".join("/" + str(part)[:LONGEST_PART].replace("~", "~0").replace("/", "~1") for part in parts)
 
 
 def at(parts: Sequence[str | int], reason: str, cure: str, *, kind: str = "invalid-request") -> Problem:
@@ -140,7 +142,9 @@ def from_validation(error: ValidationError) -> Problem:
         context = complaint.get("ctx", {})
         parts = [*complaint["loc"], *([context["row"]] if "row" in context else [])]
         cure = str(context.get("cure", _CURES.get(complaint["type"], "see the request's schema at /docs")))
-        places.append(Place(pointer(parts), complaint["msg"].lower().rstrip("."), cure))
+        # The stock message for an object names our own class.
+        reason = "is not an object" if complaint["type"] == "model_type" else complaint["msg"].lower().rstrip(".")
+        places.append(Place(pointer(parts), reason, cure))
     first = places[0]
     where = first.pointer or "the request"
     more = f" ({len(places) - 1} more under errors)" if len(places) > 1 else ""

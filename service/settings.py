@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Mapping
 
 from pydantic import Field
 from pydantic_settings import BaseSettings, SettingsConfigDict
@@ -29,7 +28,9 @@ class Settings(BaseSettings):
         default_factory=lambda: max(1, _cores() // min(2, _cores())), ge=1, description="threads of each"
     )
     queue: int = Field(16, ge=0, description="requests that may wait for a free worker; beyond it 503")
-    request_seconds: float = Field(120.0, gt=0, description="longest computation of one request; beyond it 504")
+    request_seconds: float = Field(
+        120.0, gt=0, le=86_400, description="longest computation of one request; beyond it 504"
+    )
     max_body_bytes: int = Field(128 * 2**20, ge=1024, description="longest request body; beyond it 413")
     max_coefficients: int = Field(2_000_000, ge=1, description="rows of one set")
     max_samples: int = Field(2**28, ge=1, description="samples of one answer")
@@ -37,7 +38,7 @@ class Settings(BaseSettings):
     max_memory_bytes: int = Field(2 * 2**30, ge=2**20, description="values and workspace of one request")
 
 
-def load_settings(environment: Mapping[str, str] | None = None) -> Settings:
+def load_settings() -> Settings:
     """Settings from the environment.
 
     Raises
@@ -47,8 +48,7 @@ def load_settings(environment: Mapping[str, str] | None = None) -> Settings:
         must not pass for a set one.
     """
     known = {f"{PREFIX}{name.upper()}" for name in Settings.model_fields}
-    names = os.environ if environment is None else environment
-    unknown = sorted(name for name in names if name.upper().startswith(PREFIX) and name.upper() not in known)
+    unknown = sorted(name for name in os.environ if name.upper().startswith(PREFIX) and name.upper() not in known)
     if unknown:
         raise ValueError(f"unknown setting {unknown[0]}; the settings are {', '.join(sorted(known))}")
     return Settings()

@@ -7,9 +7,7 @@ import os
 import pytest
 from hypothesis import HealthCheck, settings
 
-settings.register_profile(
-    "default", deadline=None, max_examples=40, suppress_health_check=[HealthCheck.too_slow]
-)
+settings.register_profile("default", deadline=None, max_examples=40, suppress_health_check=[HealthCheck.too_slow])
 settings.load_profile("default")
 
 

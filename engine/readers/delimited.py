@@ -11,7 +11,8 @@ import numpy as np
 from engine.arrays import FloatArray
 from engine.errors import InputError
 
-_EMPTY = re.compile(rb"(?:(?<=,)|(?<=\n)|(?<=\A))[ \t]*(?=,)|(?<=,)[ \t]*(?=\r?\n|\Z)")
+_EMPTY = re.compile(rb"(?:(?<=,)|(?<=\n)|(?<=\A))[ \t]*(?=,)|(?<=,)[ \t]*(?=\n|#|\Z)")
+_BLANK = re.compile(rb"\n[ \t]+(?=\n|\Z)")
 
 
 def read_delimited(text: bytes, names: Collection[str]) -> dict[str, FloatArray]:
@@ -39,11 +40,15 @@ def read_delimited(text: bytes, names: Collection[str]) -> dict[str, FloatArray]
     """
     if b"\x00" in text:
         raise InputError((), "the text holds a NUL byte", "send plain comma-separated text")
+    text = text.replace(b"\r\n", b"\n").replace(b"\r", b"\n")
+    if b" \n" in text or b"\t\n" in text or text.endswith((b" ", b"\t")):
+        text = _BLANK.sub(b"\n", text)
     start, header = _header(text)
     columns = [name.strip() for name in header.split(",")]
     unknown = [name for name in columns if name not in names]
     if unknown:
-        raise InputError((), f"the header names the column {unknown[0]!r}", f"use the names {', '.join(sorted(names))}")
+        shown = unknown[0][:40]
+        raise InputError((), f"the header names the column {shown!r}", f"use the names {', '.join(sorted(names))}")
     if len(set(columns)) < len(columns):
         raise InputError((), "the header names a column twice", "name each column once")
     body = _EMPTY.sub(b"nan", text[start:])
@@ -89,9 +94,16 @@ def _located(text: bytes, start: int, columns: list[str]) -> InputError:
         if len(fields) != len(columns):
             return InputError((), f"{where} has {len(fields)} fields", f"give {len(columns)}: {', '.join(columns)}")
         for place, (field, name) in enumerate(zip(fields, columns, strict=True), start=1):
-            try:
-                float(field or b"nan")
-            except ValueError:
+            if not _is_number(field):
                 shown = field.strip()[:20].decode("utf-8", "replace")
                 return InputError((), f"{where}, field {place} ({name}): {shown!r} is not a number", "give a number")
     return InputError((), "the table cannot be read", "check its quoting and line ends")
+
+
+def _is_number(field: bytes) -> bool:
+    try:
+        float(field.strip() or b"nan")
+    except ValueError:
+        return False
+    # Python alone reads 1_000 as a number.
+    return b"_" not in field

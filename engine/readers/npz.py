@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import math
+import tokenize
 import zipfile
 import zlib
 from collections.abc import Collection
@@ -15,6 +16,10 @@ from engine.arrays import FloatArray
 from engine.errors import InputError, TooLargeError
 
 _CURE = "write it with numpy.savez from plain one-dimensional arrays of numbers"
+_PACKINGS = (zipfile.ZIP_STORED, zipfile.ZIP_DEFLATED)
+_SPOILT_ARCHIVE = (zipfile.BadZipFile, zlib.error, EOFError, NotImplementedError, RuntimeError, OSError, ValueError)
+_SPOILT_HEADER = (ValueError, TypeError, SyntaxError, RecursionError, MemoryError, tokenize.TokenError)
+"""A header is a Python expression; whoever wrote it chooses what its parser stumbles over."""
 
 
 def read_npz(data: bytes, names: Collection[str], *, max_bytes: int) -> dict[str, FloatArray]:
@@ -49,7 +54,7 @@ def read_npz(data: bytes, names: Collection[str], *, max_bytes: int) -> dict[str
                 raise InputError((), "the archive holds no arrays", _CURE)
             _check_members(members, names, max_bytes)
             return {_name(member): _column(archive, member) for member in members}
-    except (zipfile.BadZipFile, zlib.error, EOFError, NotImplementedError, RuntimeError, OSError) as fault:
+    except _SPOILT_ARCHIVE as fault:
         raise InputError((), "the data is not a readable .npz archive", _CURE) from fault
 
 
@@ -67,6 +72,8 @@ def _check_members(members: list[zipfile.ZipInfo], names: Collection[str], max_b
         if name in found:
             raise InputError((), f"the archive holds the array {name!r} twice", "give it once")
         found.add(name)
+        if member.compress_type not in _PACKINGS:
+            raise InputError((), f"the array {name!r} is packed in an unusual way", _CURE)
     total = sum(member.file_size for member in members)
     if total > max_bytes:
         raise TooLargeError(
@@ -90,7 +97,7 @@ def _column(archive: zipfile.ZipFile, member: zipfile.ZipInfo) -> FloatArray:
             shape, _, dtype = npy.read_array_header_2_0(buffer)
         else:
             raise InputError((), f"the array {name!r} has an unknown format version", _CURE)
-    except ValueError as fault:
+    except _SPOILT_HEADER as fault:
         raise InputError((), f"the array {name!r} has no readable header", _CURE) from fault
     if dtype.hasobject or dtype.kind not in "iuf":
         raise InputError((), f"the array {name!r} does not hold real numbers", _CURE)

@@ -100,3 +100,12 @@ class FreePoints:
 
 
 Sampling = AffineGrid | FreePoints
+
+
+def wrapped(fractional: FloatArray) -> FloatArray:
+    """The same positions in the cells nearest the origin, −½ ≤ x ≤ ½.
+
+    Subtracting a whole number is exact, so that phases m·x lose nothing; taken far from the origin
+    they would lose a digit for every factor of ten.
+    """
+    return fractional - np.rint(fractional)

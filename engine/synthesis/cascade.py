@@ -23,7 +23,7 @@ from scipy import fft
 from engine.arrays import AnyArray, BoolArray, FloatArray, IntArray
 from engine.sampling.grids import AffineGrid
 from engine.series import Series
-from engine.synthesis.estimate import Demand, Estimate, Source, result_dtype, rounding
+from engine.synthesis.estimate import Demand, Estimate, Source, largest_turns, result_dtype, rounding
 from engine.synthesis.folding import Fold, Modes, fold
 
 BLOCK_BYTES = 1 << 21
@@ -62,7 +62,8 @@ def estimate(series: Series, grid: AffineGrid, found: Fold, demand: Demand) -> E
         method="cascade",
         seconds=seconds / demand.threads + 1e-4,
         workspace=_workspace(series, grid, found, demand, spans, block),
-        accuracy=rounding(demand.precision),
+        # On the grid itself phases are whole fractions; only those of its origin are computed.
+        accuracy=rounding(demand.precision, largest_turns(series, grid.origin, np.zeros(grid.origin.size))),
     )
 
 
@@ -80,13 +81,14 @@ def _workspace(
     # In the first stage each thread holds a column's transform, in the last one a block of planes.
     held = item * max(down * deep, block * across * deep) + (0 if series.real else item * block * last)
     if shape != lengths:
-        rows = (across + shape[1]) * last if len(lengths) == 3 else across * last
-        held += number * block * (rows + math.prod(shape[1:])) if len(lengths) > 1 else 0
+        uncut = (across + shape[1]) * last if len(lengths) == 3 else across * last
+        held += number * block * (uncut + math.prod(shape[1:])) if len(lengths) > 1 else 0
     if len(lengths) == 1:
         held += number * last + (number + 24) * shape[0]
     if series.real:
         widest = min(deep, int(MATRIX_GAIN[demand.precision] * math.log2(last + 1)))
-        held += 2 * number * last * min(widest, shape[0] * across // ROWS_PER_TERM)
+        rows = shape[0] * across if len(lengths) > 1 else 1
+        held += 2 * number * last * min(widest, rows // ROWS_PER_TERM)
     # A fold makes indices, values and targets of its own for every coefficient.
     untouched = (
         np.array_equal(found.translations, np.eye(series.lattice.dimension))

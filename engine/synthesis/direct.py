@@ -12,9 +12,9 @@ import math
 import numpy as np
 
 from engine.arrays import AnyArray, ComplexArray, FloatArray
-from engine.sampling.grids import AffineGrid, FreePoints
+from engine.sampling.grids import AffineGrid, FreePoints, wrapped
 from engine.series import Series
-from engine.synthesis.estimate import Demand, Estimate, Source, result_dtype, rounding
+from engine.synthesis.estimate import Demand, Estimate, Source, result_dtype, rounding, turns_on
 
 CHUNK = 1 << 19
 """Complex numbers in a temporary: a few MiB, so that it stays in cache."""
@@ -48,7 +48,7 @@ def estimate(series: Series, sampling: AffineGrid | FreePoints, demand: Demand) 
         method="direct",
         seconds=seconds + 2e-5,
         workspace=workspace,
-        accuracy=rounding(demand.precision),
+        accuracy=rounding(demand.precision, turns_on(series, sampling)),
     )
 
 
@@ -87,7 +87,7 @@ class _Points:
         self._indices = series.indices.T.astype(np.float64)
         self._values = series.doubled() if series.real else series.values
         self._real = series.real
-        self._points = sampling.fractional
+        self._points = wrapped(sampling.fractional)
         self.planes = sampling.samples
         self.block = max(1, CHUNK // max(1, series.count))
         self.concurrent = True
@@ -108,7 +108,7 @@ class _Grid:
     def __init__(self, series: Series, sampling: AffineGrid, demand: Demand) -> None:
         indices = series.indices.astype(np.float64)
         values = series.doubled() if series.real else series.values
-        self._strengths = values * _phasors(indices @ sampling.origin)
+        self._strengths = values * _phasors(indices @ wrapped(sampling.origin))
         self._turns = indices @ sampling.steps.T
         self._real = series.real
         self._shape = sampling.shape

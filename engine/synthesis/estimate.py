@@ -8,12 +8,16 @@ from typing import Literal, Protocol, get_args
 import numpy as np
 from numpy.typing import DTypeLike
 
-from engine.arrays import AnyArray, as_choice
+from engine.arrays import AnyArray, FloatArray, as_choice
+from engine.sampling.grids import FreePoints, Sampling, wrapped
+from engine.series import Series
 
 Method = Literal["direct", "cascade", "nonuniform"]
 Precision = Literal["double", "single"]
 
 DEFAULT_TOLERANCE = 1e-9
+LOSS_PER_TURN = 1e-15
+"""A phase of t turns is known to some 2π·10⁻¹⁶ t; measured errors of sums stay below this."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -91,6 +95,25 @@ def result_dtype(real: bool, precision: Precision) -> np.dtype[np.generic]:
     return np.dtype(kinds[real, precision])
 
 
-def rounding(precision: Precision) -> float:
-    """Error that arithmetic alone leaves, relative to the largest |value|: some hundred ulp."""
-    return 1e-12 if precision == "double" else 1e-5
+def rounding(precision: Precision, turns: float) -> float:
+    """Error that arithmetic alone leaves, relative to the largest |value|.
+
+    Some hundred units of the last place; or what is lost in phases of many turns, where that is
+    more.
+    """
+    return max(1e-12 if precision == "double" else 1e-5, LOSS_PER_TURN * turns)
+
+
+def largest_turns(series: Series, origin: FloatArray, reach: FloatArray) -> float:
+    """Bound of |m·x| for positions within `reach` (fractional, shape (d,)) of an origin."""
+    extent = np.maximum(np.abs(series.low), np.abs(series.high))
+    return float(extent @ (np.abs(wrapped(origin)) + reach))
+
+
+def turns_on(series: Series, sampling: Sampling) -> float:
+    """Bound of the phases, in turns, that are computed for a series on a sampling."""
+    d = series.lattice.dimension
+    if isinstance(sampling, FreePoints):
+        return largest_turns(series, np.zeros(d), np.full(d, 0.5))
+    spans = np.abs(sampling.steps) * (np.array(sampling.shape) - 1)[:, None]
+    return largest_turns(series, sampling.origin, spans.sum(axis=0))

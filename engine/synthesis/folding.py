@@ -15,7 +15,7 @@ from fractions import Fraction
 import numpy as np
 
 from engine.arrays import ComplexArray, IntArray
-from engine.sampling.grids import AffineGrid
+from engine.sampling.grids import AffineGrid, wrapped
 from engine.series import Series
 
 LARGEST = 1 << 20
@@ -69,7 +69,7 @@ def fold(series: Series, grid: AffineGrid, found: Fold) -> Modes:
     """Fold a series; the origin of the grid goes into the values as a phase."""
     values = series.values
     if grid.origin.any():
-        turns = series.indices @ grid.origin
+        turns = series.indices @ wrapped(grid.origin)
         values = values * np.exp(2j * np.pi * (turns - np.rint(turns)))
     d = series.lattice.dimension
     if np.array_equal(found.translations, np.eye(d, dtype=np.int64)):

@@ -16,9 +16,9 @@ import numpy as np
 
 from engine.arrays import AnyArray, ComplexArray, FloatArray
 from engine.errors import TransformError
-from engine.sampling.grids import AffineGrid, FreePoints
+from engine.sampling.grids import AffineGrid, FreePoints, wrapped
 from engine.series import Series
-from engine.synthesis.estimate import Demand, Estimate, Source, rounding
+from engine.synthesis.estimate import Demand, Estimate, Source, rounding, turns_on
 
 MARGIN = 0.1
 """The library's tolerance is a norm over all outputs; the demand is a bound on each."""
@@ -55,7 +55,7 @@ def estimate(series: Series, sampling: AffineGrid | FreePoints, demand: Demand) 
         method="nonuniform",
         seconds=seconds / demand.threads + 3e-4 + n * 1e-7,
         workspace=int(workspace),
-        accuracy=max(demand.tolerance, rounding(demand.precision)),
+        accuracy=max(demand.tolerance, rounding(demand.precision, turns_on(series, sampling))),
     )
 
 
@@ -114,7 +114,7 @@ class _Grid:
     def __init__(self, series: Series, sampling: AffineGrid, demand: Demand) -> None:
         indices = series.indices.astype(np.float64)
         self._turns = indices @ sampling.steps.T
-        phase = indices @ sampling.origin
+        phase = indices @ wrapped(sampling.origin)
         phase = 2 * np.pi * (phase - np.rint(phase))
         values = series.doubled() if series.real else series.values
         self._strengths = values * np.exp(1j * phase)
@@ -159,7 +159,7 @@ class _Points:
         self._modes = np.zeros(box, dtype=np.complex128)
         self._modes[tuple((series.indices - lowest).T)] = values
         self._centre = lowest + np.array([count // 2 for count in box])
-        self._fractional = sampling.fractional
+        self._fractional = wrapped(sampling.fractional)
         self._real = series.real
         self._eps = _eps(demand)
         self._threads = demand.threads

@@ -85,16 +85,16 @@ class ProfileIn(ProductIn):
     normal_to: IndexVector | None = Field(None, description="indices of planes; one repeat along their normal")
     length: float | None = Field(None, gt=0, description="Å along the normal, instead of one repeat")
     origin: Vector | None = Field(None, description="first end, for `along` and `normal_to`; default 0")
-    samples: Annotated[int, Field(ge=2)]
+    samples: Annotated[int, Field(ge=2, description="samples along the line")]
     include_end: bool = Field(True, description="whether the last sample falls on the far end")
 
 
 class SliceIn(ProductIn):
     """Values on a plane: by origin and edges; or parallel to a lattice plane."""
 
-    origin: Vector | None = None
-    edge_1: Vector | None = None
-    edge_2: Vector | None = None
+    origin: Vector | None = Field(None, description="position of the first sample")
+    edge_1: Vector | None = Field(None, description="first edge from there, as a vector")
+    edge_2: Vector | None = Field(None, description="second edge from there, as a vector")
     shape: Counts | None = Field(None, description="samples along edge_1 and edge_2")
     include_end: bool = Field(False, description="whether the last samples fall on the far edges")
     plane: IndexVector | None = Field(None, description="indices of a lattice plane")
@@ -110,15 +110,17 @@ class GridIn(ProductIn):
 
     shape: Counts | None = Field(None, description="samples along each direct vector or edge")
     spacing: float | None = Field(None, gt=0, description="whole cell: samples at most this far apart, Å")
-    origin: Vector | None = None
-    edges: list[Vector] | None = Field(None, min_length=1, max_length=3)
+    origin: Vector | None = Field(None, description="box: position of the first sample")
+    edges: list[Vector] | None = Field(
+        None, min_length=1, max_length=3, description="box: its edges from there, one vector per dimension"
+    )
     include_end: bool = Field(False, description="box: whether the last samples fall on the far faces")
 
 
 class PointsIn(ProductIn):
     """Values at free points."""
 
-    positions: PositionRows
+    positions: PositionRows = Field(description="one row of coordinates per point")
 
 
 PRODUCTS: dict[str, type[ProductIn]] = {

@@ -80,7 +80,10 @@ def _bound_memory(settings: Settings) -> None:
         return
     spare = 512 * 2**20 + 8 * settings.max_body_bytes
     bound = mapped + settings.max_memory_bytes + spare
-    resource.setrlimit(resource.RLIMIT_AS, (bound, resource.getrlimit(resource.RLIMIT_AS)[1]))
+    hard = resource.getrlimit(resource.RLIMIT_AS)[1]
+    if hard != resource.RLIM_INFINITY:
+        bound = min(bound, hard)
+    resource.setrlimit(resource.RLIMIT_AS, (bound, hard))
 
 
 if __name__ == "__main__":

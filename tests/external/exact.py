@@ -51,6 +51,16 @@ def factors_from(amplitude: Iterable[float], phase_deg: Iterable[float]) -> list
         ]
 
 
+def with_mates(
+    reflections: Sequence[tuple[int, ...]], factors: Sequence[mpmath.mpc]
+) -> tuple[list[tuple[int, ...]], list[mpmath.mpc]]:
+    """Both of each Friedel pair, F(−h) = conj F(h)."""
+    with mpmath.workdps(DIGITS):
+        conjugate = [mpmath.conj(factor) for factor in factors]
+    mates = [tuple(-index for index in row) for row in reflections]
+    return [*reflections, *mates], [*factors, *conjugate]
+
+
 def cell_volume(cell: Sequence[float]) -> mpmath.mpf:
     """Period; area from a, b, γ; or volume from a, b, c, α, β, γ; Å and degrees."""
     with mpmath.workdps(DIGITS):

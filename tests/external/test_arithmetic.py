@@ -112,8 +112,7 @@ def example(dimension: int, density: str) -> Example:
     reflections = [tuple(row) for row in rows.tolist()]
     factors = exact.factors_from(amplitude, phase)
     if density == "real":
-        reflections += [tuple(-index for index in row) for row in reflections]
-        factors += [mpmath.conj(factor) for factor in factors]
+        reflections, factors = exact.with_mates(reflections, factors)
     reflections.append((0,) * dimension)
     factors.append(mpmath.mpmathify(mean))
     return Example(lattice, coefficients, reflections, factors, exact.cell_volume(cell))
@@ -173,9 +172,11 @@ def test_the_inverted_structure_would_be_noticed(dimension, density):
 
 SHAPES = {
     1: [(64,), (63,), (20,), (7,)],
-    2: [(48, 45), (27, 30), (15, 16), (4, 3)],
-    3: [(30, 32, 27), (27, 25, 28), (10, 9, 8), (3, 5, 2)],
+    2: [(48, 45), (27, 30), (15, 16), (4, 3), (8, 300)],
+    3: [(30, 32, 27), (27, 25, 28), (10, 9, 8), (3, 5, 2), (6, 10, 150)],
 }
+"""Below 27 the indices, up to ±13, are folded. Along an axis longer than 100 they reach ±75, the
+limit of 150, so that every kind of last stage is taken."""
 
 
 @pytest.mark.parametrize("precision", ["double", "single"])
@@ -187,10 +188,11 @@ def test_whole_cells_agree_with_numpy(dimension, shape, density, precision):
     """(1/V) Σ F(h) exp(−2πi h·s/N) is numpy's forward transform of F, indices modulo N."""
     random = np.random.default_rng([162, dimension, density == "real"])
     lattice = Lattice.from_vectors(np.diag([9.0, 11.0, 12.5][:dimension]) + random.uniform(0, 2, (dimension,) * 2))
-    rows = np.unique(random.integers(-13, 14, (2500, dimension)), axis=0)
+    limits = np.where(np.array(shape) > 100, 75, 13)
+    rows = np.unique(random.integers(-limits, limits + 1, (2500, dimension)), axis=0)
     amplitude, phase = random.uniform(0, 5, len(rows)), random.uniform(0, 360, len(rows))
     if density == "real":
-        ahead = (rows @ [1, 100, 10_000][:dimension]) > 0
+        ahead = (rows @ [1, 1000, 1_000_000][:dimension]) > 0
         rows, amplitude, phase = rows[ahead], amplitude[ahead], phase[ahead]
     columns = Columns(indices=list(rows.T), amplitude=amplitude, phase_deg=phase)
     coefficients = assemble(lattice, columns, values="structure_factor", density=density)

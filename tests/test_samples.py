@@ -1,0 +1,121 @@
+"""The sample requests: made as the generator says, answered as their README says."""
+
+from __future__ import annotations
+
+import json
+import re
+import shlex
+import shutil
+import subprocess
+
+import httpx
+import numpy as np
+import pytest
+
+from tests.samples import FOLDER, build, film_table
+from tests.serving import serving
+
+README = (FOLDER / "README.md").read_text()
+CURL_LINES = [line for line in README.splitlines() if line.startswith("curl ")]
+EXPECTED = {
+    match["name"]: match
+    for match in re.finditer(
+        r"^\| `(?P<name>\w+\.json)` \| (?P<shape>[\d ×]+) \| (?P<low>[-\d.]+) \| (?P<high>[-\d.]+) \|", README, re.M
+    )
+}
+FILES = sorted(path.name for path in FOLDER.glob("*.json"))
+
+
+@pytest.fixture(scope="module")
+def served():
+    with serving() as running:
+        yield running
+
+
+def answered(served, name):
+    """A sample's JSON answer."""
+    request = (FOLDER / name).read_bytes()
+    product = json.loads(request)["product"]
+    if name == "film_from_table.json":
+        table = (FOLDER / "film_orders.csv").read_bytes()
+        body = {
+            "files": {
+                "request": ("r", request, "application/json"),
+                "columns": ("c", table, "text/csv"),
+            }
+        }
+    else:
+        body = {"content": request, "headers": {"Content-Type": "application/json"}}
+    answer = httpx.post(f"{served.address}/v1/{product}", **body)
+    assert answer.status_code == 200, answer.text
+    return answer.json()
+
+
+def test_every_file_is_documented():
+    assert sorted(EXPECTED) == FILES
+    for name in FILES:
+        assert any(f"@sample_requests/{name}" in line for line in CURL_LINES), name
+
+
+@pytest.mark.parametrize("name", FILES)
+def test_files_are_what_the_generator_makes(name):
+    made, kept = build()[name], json.loads((FOLDER / name).read_text())
+    assert made.keys() == kept.keys()
+    for key, value in made["set"].items():
+        if isinstance(value, list) and key not in ("cell",):
+            # Rounded to the last digit kept: the libraries of two machines may differ there.
+            np.testing.assert_allclose(kept["set"][key], value, atol=2e-2, rtol=1e-6)
+        else:
+            assert kept["set"][key] == value
+    assert (FOLDER / "film_orders.csv").read_text() == film_table()
+
+
+@pytest.mark.parametrize("name", FILES)
+def test_answers_are_those_of_the_readme(served, name):
+    answer, expected = answered(served, name), EXPECTED[name]
+    assert answer["shape"] == [int(count) for count in expected["shape"].split("×")]
+    # Four digits are printed; the tolerance is half a unit of the last.
+    assert answer["summary"]["minimum"] == pytest.approx(float(expected["low"]), rel=6e-4)
+    assert answer["summary"]["maximum"] == pytest.approx(float(expected["high"]), rel=6e-4)
+    assert np.shape(answer["values"]) == tuple(answer["shape"])
+
+
+@pytest.mark.skipif(shutil.which("curl") is None, reason="curl is not installed")
+@pytest.mark.parametrize("line", CURL_LINES, ids=lambda line: re.search(r"@sample_requests/(\w+)", line)[1])
+def test_curl_lines_work(served, line, tmp_path):
+    words = shlex.split(line.replace("http://127.0.0.1:8420", served.address))
+    words = [
+        str(tmp_path / word) if before == "--output" else word
+        for before, word in zip(["", *words[:-1]], words, strict=True)
+    ]
+    done = subprocess.run([*words, "--silent", "--fail"], cwd=FOLDER.parent, capture_output=True, check=True)
+    written = list(tmp_path.iterdir())
+    if written:
+        loaded = np.load(written[0])
+        values = loaded if written[0].suffix == ".npy" else loaded["values"]
+        assert np.isfinite(values).all()
+    else:
+        assert done.stdout.startswith(b"{") or b"value" in done.stdout
+
+
+def test_silicon_shows_the_bond(served):
+    """Check 11, over HTTP, from measured factors to the density halfway between two neighbours.
+
+    Source: factors of Aldred & Hart, Proc. R. Soc. A 332 (1973) 223, and later Pendellösung work,
+    memory; the published maps show about 0.2 e/Å³.
+    """
+    request = json.loads((FOLDER / "silicon_bond.json").read_text())
+    asked = {"set": request["set"], "positions": [[0.125, 0.125, 0.125], [0.5, 0.5, 0.5]]}
+    answer = httpx.post(f"{served.address}/v1/points", json=asked).json()
+    assert answer["values"][0] == pytest.approx(0.22, abs=0.005)
+    assert answer["unit"] == "e/Å³"
+
+
+def test_stacking_shows_the_layers(served):
+    """The laterally averaged profile has a maximum at the height of every layer of the structure."""
+    answer = answered(served, "hexagonal_stacking.json")
+    values = np.array(answer["values"])
+    axis = answer["axes"][0]
+    heights = axis["start"] + axis["step"] * np.arange(axis["count"])
+    inner = (values[1:-1] > values[:-2]) & (values[1:-1] > values[2:]) & (values[1:-1] > 2)
+    assert heights[1:-1][inner] / 17.4 == pytest.approx([0.159, 0.25, 0.341, 0.659, 0.75, 0.841], abs=0.003)
