@@ -182,22 +182,23 @@ def perform(work: Work, *, out: AnyArray | None = None, progress: Progress | Non
         raise InputError("out", "does not fit the values", f"give a contiguous array {work.shape} of {work.dtype}")
     tracker = Tracker()
     count = len(work.plans)
+    # One array for every component; and no source outlives its sum, to need no more memory than was said.
+    kind = result_dtype(work.parts.series[0].real, work.plans[0].demand.precision)
+    component = np.empty(work.sampling.shape, kind) if work.parts.magnitude else None
     for number, one in enumerate(work.plans):
         report = None if progress is None else _share(progress, number, count)
-        source = one.prepare()
         threads = one.demand.threads
-        if work.parts.magnitude:
-            component = np.empty(work.sampling.shape, result_dtype(one.series.real, one.demand.precision))
-            fill(source, component, threads=threads, progress=report)
-            if number == 0:
-                out.fill(0)
-            _add_square(out, component)
-            if number == count - 1:
-                np.sqrt(out, out=out)
-                tracker.add(out)
-        else:
+        if component is None:
             target = out[..., number] if work.parts.components else out
-            fill(source, target, threads=threads, progress=report, each=tracker.add)
+            fill(one.prepare(), target, threads=threads, progress=report, each=tracker.add)
+            continue
+        fill(one.prepare(), component, threads=threads, progress=report)
+        if number == 0:
+            out.fill(0)
+        _add_square(out, component)
+    if component is not None:
+        np.sqrt(out, out=out)
+        tracker.add(out)
     return _described(work, out, tracker.statistics())
 
 
@@ -233,7 +234,7 @@ def iterate(work: Work) -> Iterator[AnyArray]:
 
 
 def _add_square(total: AnyArray, component: AnyArray) -> None:
-    """Add |component|² to a real total; the component is overwritten, to need no more memory."""
+    """Add |component|² to a real total; the component is overwritten."""
     parts = component.view(total.dtype).reshape(*total.shape, -1)
     np.multiply(parts, parts, out=parts)
     for part in np.moveaxis(parts, -1, 0):

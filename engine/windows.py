@@ -61,8 +61,9 @@ class Window:
 
 
 NO_WINDOW = Window()
-QUADRATURE_NODES = 256
-"""Enough for a window a hundred times narrower than the sphere it is applied to."""
+PANELS, NODES = 32, 16
+"""Of the quadrature over 0…1: Gauss's rule in equal panels, enough for a window a hundred times
+narrower than the sphere it is applied to. One rule of as many nodes takes half a second to find."""
 
 
 def gaussian(magnitudes: FloatArray, b: float) -> FloatArray:
@@ -77,9 +78,9 @@ def point_width(window: Window, dimension: int, g_max: float) -> float:
     R(r) ∝ ∫₀¹ w(u) u^{d−1} Λ_d(u G_max r) du with Λ_1 = cos, Λ_2 = J_0, Λ_3 = sin x/x
     (James, The Optical Principles of the Diffraction of X-rays, 1948, for d = 3).
     """
-    nodes, weights = np.polynomial.legendre.leggauss(QUADRATURE_NODES)
-    u = 0.5 * (nodes + 1)
-    measure = weights * window.factors(u * g_max, g_max) * u ** (dimension - 1)
+    nodes, weights = np.polynomial.legendre.leggauss(NODES)
+    u = ((np.arange(PANELS)[:, None] + 0.5 * (nodes + 1)) / PANELS).ravel()
+    measure = np.tile(weights, PANELS) * window.factors(u * g_max, g_max) * u ** (dimension - 1)
 
     def response(radius: float) -> float:
         x = u * g_max * radius

@@ -5,6 +5,7 @@ from __future__ import annotations
 import argparse
 import ipaddress
 import os
+import signal
 import socket
 import sys
 from collections.abc import Sequence
@@ -14,6 +15,7 @@ from pathlib import Path
 import uvicorn
 from tqdm import tqdm
 
+from engine.errors import EngineError
 from engine.evaluate import Work
 from engine.synthesis import Progress
 from service import intake, pipeline
@@ -42,7 +44,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
         # Whoever read our output has seen enough; nothing more may be written, not even at exit.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 0
-    except (ValueError, OSError) as fault:
+    except (ValueError, OSError, EngineError) as fault:
         print(f"densityloom: {fault}", file=sys.stderr)
     except KeyboardInterrupt:
         print("densityloom: interrupted, nothing was written", file=sys.stderr)
@@ -107,6 +109,8 @@ def _is_loopback(host: str) -> bool:
 
 
 def _run(options: argparse.Namespace) -> int:
+    # A batch system ends its jobs so; our unfinished file must not outlive it either.
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
     settings = load_settings()
     if options.threads < 1:
         raise ValueError("--threads: give at least 1")

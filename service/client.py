@@ -133,6 +133,8 @@ def _error(answer: httpx.Response) -> ServiceError:
     try:
         problem = answer.json()
     except ValueError:
+        problem = None
+    if not isinstance(problem, dict):
         problem = {"title": answer.reason_phrase, "status": answer.status_code}
     wait = answer.headers.get("Retry-After", "")
     return ServiceError(answer.status_code, problem, float(wait) if wait.isdigit() else None)

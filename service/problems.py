@@ -156,4 +156,8 @@ _CURES = {
     "extra_forbidden": "remove it, or check its spelling",
     "finite_number": "give a finite number",
     "literal_error": "choose one of the values named",
+    "model_type": "give a JSON object",
+    **dict.fromkeys(
+        ("greater_than", "greater_than_equal", "less_than", "less_than_equal"), "give a number in that range"
+    ),
 }

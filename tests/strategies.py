@@ -10,6 +10,7 @@ from __future__ import annotations
 import itertools
 import math
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 from hypothesis import strategies as st
@@ -29,7 +30,13 @@ REACH = {1: (24,), 2: (6, 5), 3: (4, 3, 5)}
 """Largest indices of the seeded examples, different along each axis."""
 
 
-@dataclass(frozen=True)
+def frozen(array):
+    """The array, made read-only: whoever writes to what it was given is found out."""
+    array.setflags(write=False)
+    return array
+
+
+@dataclass(frozen=True, eq=False)
 class Listing:
     """A complete list of coefficients: n(x) = Σ values exp(2πi indices·x) over all rows."""
 
@@ -44,9 +51,10 @@ class Listing:
         return float(np.abs(self.values).sum())
 
     def series(self):
-        """The engine's series of the list: one of each pair where the density is real."""
+        """The engine's series of the list: one of each pair where the density is real. Read-only."""
         kept = forward(self.indices) if self.real else np.ones(len(self.values), dtype=bool)
-        return Series(self.lattice, np.asfortranarray(self.indices[kept]), self.values[kept], self.real)
+        indices = np.asfortranarray(self.indices[kept])
+        return Series(self.lattice, frozen(indices), frozen(self.values[kept]), self.real)
 
     def columns(self, **more):
         """The list as columns of density coefficients."""
@@ -62,9 +70,6 @@ class Listing:
         made = oracle(self.indices, self.values, positions)
         return made.real if self.real else made
 
-    def with_values(self, values):
-        return Listing(self.lattice, self.indices, values, self.real)
-
 
 def oracle(indices, values, positions):
     """Σ v exp(2πi m·x) over every row, at every position; positions (..., d) -> (...)."""
@@ -79,7 +84,8 @@ def oracle(indices, values, positions):
 
 def forward(indices):
     """One of each pair ±m, and the zero: the last index other than zero is positive."""
-    return np.array([all(x == 0 for x in row) or [x for x in row if x][-1] > 0 for row in indices.tolist()])
+    rows = ([x for x in row if x] for row in indices.tolist())
+    return np.array([not row or row[-1] > 0 for row in rows], dtype=bool)
 
 
 def positions_of(sampling):
@@ -112,7 +118,7 @@ def listing(lattice, *, real=True, seed=0, reach=None, share=0.6, zero=True):
         indices = np.concatenate([indices, np.zeros((1, len(reach)), dtype=np.int64)])
         values = np.append(values, mean)
     order = rng.permutation(len(values))
-    return Listing(lattice, indices[order], values[order], real)
+    return Listing(lattice, frozen(indices[order]), frozen(values[order]), real)
 
 
 def summed(series, sampling, method=None, demand=None, out=None):
@@ -134,12 +140,12 @@ def deviation(found, expected):
 
 def grid(origin, steps, shape):
     """An affine grid straight from its numbers."""
-    steps = np.atleast_2d(np.asarray(steps, dtype=np.float64))
+    origin, steps = np.array(origin, dtype=np.float64), np.atleast_2d(np.array(steps, dtype=np.float64))
     labels = tuple(f"axis_{j}" for j in range(len(shape)))
-    return AffineGrid(np.asarray(origin, dtype=np.float64), steps, tuple(shape), labels, (0.0,) * len(shape))
+    return AffineGrid(frozen(origin), frozen(steps), tuple(shape), labels, (0.0,) * len(shape))
 
 
-def commensurate_grids():
+def _commensurate():
     """Grids on which the cascade is exact: name -> (dimension of the lattice, grid).
 
     Lengths are unequal along every axis; odd, even and prime ones are among them, ones coarser
@@ -166,7 +172,7 @@ def commensurate_grids():
         "cell 3-D": (3, grid([0, 0, 0], np.diag([1 / 6, 1 / 7, 1 / 10]), (6, 7, 10))),
         "cell 3-D index at N/2": (3, grid([0, 0, 0], np.diag([1 / 8, 1 / 6, 1 / 10]), (8, 6, 10))),
         "cell 3-D odd": (3, grid([0, 0, 0], np.diag([1 / 9, 1 / 7, 1 / 11]), (9, 7, 11))),
-        "cell 3-D fine": (3, grid([0.05, 0, 0.4], np.diag([1 / 14, 1 / 15, 1 / 27]), (14, 15, 27))),
+        "cell 3-D fine": (3, grid([0.05, 0, 0.4], np.diag([1 / 10, 1 / 13, 1 / 18]), (10, 13, 18))),
         "cell 3-D coarse": (3, grid([0, 0, 0], np.diag([1 / 2, 1 / 3, 1 / 4]), (2, 3, 4))),
         "cell 3-D one sample": (3, grid([0.1, 0.2, 0.3], eye, (1, 1, 1))),
         "cell 3-D thin": (3, grid([0, 0.2, 0], np.diag([1, 1 / 5, 1 / 8]), (1, 5, 8))),
@@ -182,7 +188,7 @@ def commensurate_grids():
     }
 
 
-def incommensurate_grids():
+def _incommensurate():
     """Grids that only the direct and the non-uniform method can do."""
     root = math.sqrt(2)
     return {
@@ -205,9 +211,22 @@ def incommensurate_grids():
     }
 
 
+COMMENSURATE = _commensurate()
+INCOMMENSURATE = {f"free {name}": case for name, case in _incommensurate().items()}
+GRIDS = {**COMMENSURATE, **INCOMMENSURATE}
+
+
+@cache
+def example(name, real):
+    """A list of coefficients, the named grid, and the oracle's values on it."""
+    dimension, sampling = GRIDS[name]
+    wanted = listing(LATTICES[dimension], real=real, seed=11)
+    return wanted, sampling, frozen(wanted.at(positions_of(sampling)))
+
+
 def free_points(dimension, count=57, seed=5):
     """Points inside and far outside the cell."""
-    return FreePoints(np.random.default_rng(seed).uniform(-3, 3, size=(count, dimension)))
+    return FreePoints(frozen(np.random.default_rng(seed).uniform(-3, 3, size=(count, dimension))))
 
 
 # Strategies for hypothesis.

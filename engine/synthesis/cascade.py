@@ -35,8 +35,8 @@ double; measured, the product is faster below these ratios."""
 ROWS_PER_TERM = 8
 """And where it has at least this many rows to each occupied l: below, making the matrix costs more
 than it saves, and it would be large beside the output."""
-CHUNK = 1 << 16
-"""Coefficients scattered at a time, so that temporaries stay small beside the output."""
+CHUNK = 1 << 15
+"""Most coefficients scattered at a time, so that temporaries stay in cache."""
 SECONDS_PER_COEFFICIENT = 3.0e-8
 SECONDS_PER_BUTTERFLY = 1.1e-9
 
@@ -96,7 +96,7 @@ def _workspace(
         and bool(np.all(2 * np.maximum(series.high, -series.low) <= lengths))
     )
     tables = 0 if untouched else series.count * (24 * len(lengths) + 56)
-    chunks = demand.threads * min(series.count, CHUNK) * 128
+    chunks = demand.threads * _chunk(series.count, demand.threads) * 128
     return int(stage + demand.threads * held + tables + chunks)
 
 
@@ -129,7 +129,12 @@ def _spans(series: Series, found: Fold) -> tuple[int, ...]:
 
 def _block_planes(plane_in: int, item: int, planes: int, threads: int) -> int:
     # A few blocks to each thread, so that the threads end together.
-    return max(1, min(BLOCK_BYTES // (item * plane_in), -(-planes // (4 * threads))))
+    return max(1, min(BLOCK_BYTES // (item * plane_in), -(-planes // (8 * threads))))
+
+
+def _chunk(count: int, threads: int) -> int:
+    """Coefficients scattered at a time: of a small set a small part, beside whose grid they would be large."""
+    return max(1 << 12, min(CHUNK, count // (16 * threads)))
 
 
 class _Cascade:
@@ -216,8 +221,10 @@ class _Cascade:
             else:
                 np.add.at(flat, targets, strengths.astype(flat.dtype))
 
+        size = _chunk(modes.values.size, self._threads)
+
         def put(begin: int) -> None:
-            chunk = slice(begin, begin + CHUNK)
+            chunk = slice(begin, begin + size)
             rows, across, along, strengths = h[chunk], k[chunk], l[chunk], modes.values[chunk]
             add(rows, across, along, strengths)
             if self._real:
@@ -225,7 +232,7 @@ class _Cascade:
                 add(-rows[own], -across[own], along[own], strengths[own].conj())
 
         # Terms that are folded onto each other are added up, which threads must not do at once.
-        self._each(put, range(0, modes.values.size, CHUNK), alone=not modes.distinct)
+        self._each(put, range(0, modes.values.size, size), alone=not modes.distinct)
         if self._real:
             # The zero term is its own mate: added up it has been put twice.
             zero = -low_k * self._down * deep

@@ -7,6 +7,7 @@ from collections.abc import AsyncIterator, Awaitable, Callable
 
 from fastapi import APIRouter, Request, Response
 from fastapi.responses import StreamingResponse
+from starlette.requests import ClientDisconnect
 
 from service.encoders.negotiation import MEDIA_TYPES, choose
 from service.openapi import operation
@@ -40,8 +41,12 @@ def router(pool: Pool, settings: Settings) -> APIRouter:
 def _endpoint(product: str, pool: Pool, settings: Settings) -> Callable[[Request], Awaitable[Response]]:
     async def endpoint(request: Request) -> Response:
         wanted = request.query_params.get("format")
-        form = choose(product, request.headers.get("accept"), wanted)
-        with await _body(request, settings.max_body_bytes) as body:
+        form = choose(product, ",".join(request.headers.getlist("accept")), wanted)
+        try:
+            spool = await _body(request, settings.max_body_bytes)
+        except ClientDisconnect:
+            return Response(status_code=GONE)
+        with spool as body:
             job = Job(product, request.headers.get("content-type", ""), body, form)
             answer = await _unless_gone(request, pool.run(job))
         if answer is None:
@@ -87,6 +92,10 @@ async def _unless_gone(request: Request, computing: Awaitable[Answer]) -> Answer
             task.cancel()
             return None
         return task.result()
+    except asyncio.CancelledError as fault:
+        # The server is stopping and has waited as long as it will.
+        task.cancel()
+        raise Problem("not-ready", "The service is stopping.", headers={"Retry-After": "5"}) from fault
     finally:
         watcher.cancel()
 

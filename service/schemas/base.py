@@ -13,7 +13,12 @@ class Strict(BaseModel):
     model_config = ConfigDict(extra="forbid", strict=True, allow_inf_nan=False, frozen=True)
 
 
-Vector = Annotated[list[float], Field(min_length=1, max_length=3)]
+FARTHEST = 1.0e8
+"""Bound of coordinates (cells or Å) and lengths (Å): beyond it a unit has been mistaken."""
+
+Length = Annotated[float, Field(gt=0, le=FARTHEST)]
+Coordinate = Annotated[float, Field(ge=-FARTHEST, le=FARTHEST)]
+Vector = Annotated[list[Coordinate], Field(min_length=1, max_length=3)]
 IndexVector = Annotated[list[int], Field(min_length=1, max_length=3)]
 Counts = Annotated[list[Annotated[int, Field(ge=1)]], Field(min_length=1, max_length=3)]
 Coordinates = Literal["fractional", "cartesian"]

@@ -10,6 +10,7 @@ from pydantic import PlainValidator, WithJsonSchema
 from pydantic_core import PydanticCustomError
 
 from engine.arrays import MAX_INDEX
+from service.schemas.base import FARTHEST
 
 
 def _column(value: Any, allowed: frozenset[type], wanted: str) -> NDArray[np.float64]:  # noqa: ANN401
@@ -80,6 +81,13 @@ def _rows(value: Any) -> NDArray[np.float64]:  # noqa: ANN401
         raise PydanticCustomError(
             "rows", "holds something other than numbers", {**context, "row": context.get("row", 0) // width}
         ) from fault
+    far = np.flatnonzero(np.abs(flat) > FARTHEST)
+    if far.size:
+        raise PydanticCustomError(
+            "rows",
+            "lies too far out",
+            {"row": int(far[0]) // width, "cure": f"give coordinates within ±{FARTHEST:g}, in the unit stated"},
+        )
     return flat.reshape(-1, width)
 
 
@@ -90,7 +98,12 @@ PositionRows = Annotated[
         {
             "type": "array",
             "minItems": 1,
-            "items": {"type": "array", "minItems": 1, "maxItems": 3, "items": {"type": "number"}},
+            "items": {
+                "type": "array",
+                "minItems": 1,
+                "maxItems": 3,
+                "items": {"type": "number", "minimum": -FARTHEST, "maximum": FARTHEST},
+            },
         }
     ),
 ]

@@ -4,11 +4,13 @@ from __future__ import annotations
 
 from typing import Literal
 
-from pydantic import BaseModel
+from pydantic import BaseModel, ConfigDict
 
 
 class Live(BaseModel):
     """The process answers."""
+
+    model_config = ConfigDict(json_schema_extra={"examples": [{"status": "live", "version": "0.1.0"}]})
 
     status: Literal["live"]
     version: str
@@ -16,6 +18,21 @@ class Live(BaseModel):
 
 class Ready(BaseModel):
     """The workers have started."""
+
+    model_config = ConfigDict(
+        json_schema_extra={
+            "examples": [
+                {
+                    "status": "ready",
+                    "version": "0.1.0",
+                    "workers": 2,
+                    "busy": 0,
+                    "waiting": 0,
+                    "libraries": {"numpy": "2.4.6", "finufft": "2.5.1"},
+                }
+            ]
+        }
+    )
 
     status: Literal["ready"]
     version: str

@@ -6,7 +6,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import Field, model_validator
 
-from service.schemas.base import Coordinates, Counts, IndexVector, Strict, Vector
+from service.schemas.base import Coordinate, Coordinates, Counts, IndexVector, Length, Strict, Vector
 from service.schemas.coefficient_set import CoefficientSetIn
 from service.schemas.columns import PositionRows
 
@@ -36,9 +36,9 @@ class AverageIn(Strict):
     normal: IndexVector | None = Field(
         None, description="indices of the planes; by default those of normal_to (profile) or plane (slice)"
     )
-    thickness: float | None = Field(None, gt=0, description="Å")
+    thickness: Length | None = Field(None, description="Å")
     edges: list[Vector] | None = Field(None, min_length=1, max_length=3, description="fractional")
-    radius: float | None = Field(None, gt=0, description="Å")
+    radius: Length | None = Field(None, description="Å")
 
     @model_validator(mode="before")
     @classmethod
@@ -83,7 +83,7 @@ class ProfileIn(ProductIn):
     end: Vector | None = Field(None, alias="to", description="second end of the line")
     along: IndexVector | None = Field(None, description="lattice direction [uvw], one translation long")
     normal_to: IndexVector | None = Field(None, description="indices of planes; one repeat along their normal")
-    length: float | None = Field(None, gt=0, description="Å along the normal, instead of one repeat")
+    length: Length | None = Field(None, description="Å along the normal, instead of one repeat")
     origin: Vector | None = Field(None, description="first end, for `along` and `normal_to`; default 0")
     samples: Annotated[int, Field(ge=2, description="samples along the line")]
     include_end: bool = Field(True, description="whether the last sample falls on the far end")
@@ -98,10 +98,10 @@ class SliceIn(ProductIn):
     shape: Counts | None = Field(None, description="samples along edge_1 and edge_2")
     include_end: bool = Field(False, description="whether the last samples fall on the far edges")
     plane: IndexVector | None = Field(None, description="indices of a lattice plane")
-    offset: float = Field(0.0, description="Å along the plane's normal")
-    width: float | None = Field(None, gt=0, description="Å")
-    height: float | None = Field(None, gt=0, description="Å")
-    spacing: float | None = Field(None, gt=0, description="Å between samples")
+    offset: Coordinate = Field(0.0, description="Å along the plane's normal")
+    width: Length | None = Field(None, description="Å")
+    height: Length | None = Field(None, description="Å")
+    spacing: Length | None = Field(None, description="Å between samples")
     centre: Vector | None = Field(None, description="middle of the rectangle before the offset; default 0")
 
 
@@ -109,7 +109,7 @@ class GridIn(ProductIn):
     """Values in the whole cell by `shape` or `spacing`; or in a box by origin, edges and shape."""
 
     shape: Counts | None = Field(None, description="samples along each direct vector or edge")
-    spacing: float | None = Field(None, gt=0, description="whole cell: samples at most this far apart, Å")
+    spacing: Length | None = Field(None, description="whole cell: samples at most this far apart, Å")
     origin: Vector | None = Field(None, description="box: position of the first sample")
     edges: list[Vector] | None = Field(
         None, min_length=1, max_length=3, description="box: its edges from there, one vector per dimension"

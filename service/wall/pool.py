@@ -65,6 +65,8 @@ class Pool:
         for worker in self._workers:
             worker.kill()
         self._threads.shutdown(wait=True, cancel_futures=True)
+        for worker in self._workers:
+            worker.end()
 
     def state(self) -> dict[str, int]:
         """Numbers for the health answer."""
@@ -137,12 +139,16 @@ class _Worker:
             process.stdin.write(self._settings.model_dump_json().encode())
             process.stdin.close()
         ours.settimeout(START_SECONDS)
-        wire.receive(ours)
+        try:
+            wire.receive(ours)
+        except BaseException:
+            self.end()
+            raise
 
     def call(self, job: Job) -> Answer:
         """Have one job computed, in a new process if the last one has died."""
         if self._process is None or self._process.poll() is not None or self._channel is None:
-            self._end()
+            self.end()
             self.start()
         process, channel = self._process, self._channel
         if process is None or channel is None:
@@ -155,13 +161,13 @@ class _Worker:
             wire.send(channel, head, [job.body.descriptor])
             message, descriptors = wire.receive(channel)
         except TimeoutError as fault:
-            self._end()
+            self.end()
             raise Problem(
                 "timeout",
                 f"The computation took longer than the limit of {limit:g} s. Ask for fewer samples or coefficients.",
             ) from fault
         except (wire.Closed, OSError) as fault:
-            code = self._end()
+            code = self.end()
             log.error("a worker died with code %s, %.1f s before its deadline", code, deadline - time.monotonic())
             raise Problem(
                 "internal", "The process that computed this request died; others are not affected."
@@ -177,7 +183,8 @@ class _Worker:
         if self._process is not None:
             self._process.kill()
 
-    def _end(self) -> int | None:
+    def end(self) -> int | None:
+        """End the process and let go of all that belongs to it; returns its exit code."""
         if self._channel is not None:
             self._channel.close()
             self._channel = None

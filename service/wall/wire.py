@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import socket
 import struct
 from collections.abc import Sequence
@@ -46,6 +47,8 @@ def receive(channel: socket.socket) -> tuple[dict[str, Any], list[int]]:
     """
     try:
         head, descriptors, _, _ = socket.recv_fds(channel, _LENGTH.size, MOST_DESCRIPTORS)
+        for descriptor in descriptors:
+            os.set_inheritable(descriptor, False)
         while 0 < len(head) < _LENGTH.size:
             head += _some(channel, _LENGTH.size - len(head))
         if not head:

@@ -11,9 +11,9 @@ from __future__ import annotations
 import numpy as np
 from scipy import fft
 
-from engine import sampling
 from engine.series import Series
-from engine.synthesis import Demand, Precision, fill, plan, result_dtype
+from engine.synthesis import Precision, result_dtype
+from tests.benchmarks.gridding import engine_grid
 from tests.benchmarks.memory import measured_peak
 from tests.benchmarks.sets import cubic_sphere
 from tests.benchmarks.timing import CORES, best
@@ -26,15 +26,6 @@ def half_cube(series: Series, count: int, precision: Precision) -> np.ndarray:
     cube[tuple((-series.indices[own] % count).T)] = series.values[own].conj()
     cube[tuple((series.indices % count).T)] = series.values
     return cube
-
-
-def engine_grid(series: Series, count: int, precision: Precision) -> np.ndarray:
-    """The same grid by the engine."""
-    grid = sampling.full_cell(series.lattice, [count] * 3)
-    chosen = plan(series, grid, Demand(precision=precision, threads=CORES), method="cascade")
-    values = np.empty(grid.shape, dtype=result_dtype(True, precision))
-    fill(chosen.prepare(), values, threads=CORES)
-    return values
 
 
 def main(counts: tuple[int, ...] = (128, 256, 400)) -> None:

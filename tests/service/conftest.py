@@ -1,0 +1,71 @@
+"""Services in processes of their own, each started once."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterator
+from contextlib import contextmanager
+
+import httpx
+import pytest
+
+from tests.serving import Served, serving
+
+SMALL = {
+    "compute_workers": 1,
+    "compute_threads": 1,
+    "max_body_bytes": 20_000,
+    "max_coefficients": 50,
+    "max_samples": 300_000,
+    "max_json_values": 1000,
+    "max_memory_bytes": 2 * 2**20,
+}
+"""Limits that small requests pass."""
+
+
+@contextmanager
+def alone(**settings: object) -> Iterator[Served]:
+    """A service with these settings and none of the developer's."""
+    with pytest.MonkeyPatch.context() as patch:
+        for name in list(os.environ):
+            if name.upper().startswith("DENSITYLOOM_"):
+                patch.delenv(name)
+        with serving(**settings) as served:
+            yield served
+
+
+@pytest.fixture(scope="session")
+def service() -> Iterator[Served]:
+    """A service with the default limits; one thread a worker, so that sums repeat bit by bit."""
+    with alone(compute_workers=2, compute_threads=1) as served:
+        yield served
+
+
+@pytest.fixture(scope="session")
+def client(service: Served) -> Iterator[httpx.Client]:
+    with httpx.Client(base_url=service.address, timeout=60) as made:
+        yield made
+
+
+@pytest.fixture(scope="session")
+def small_service() -> Iterator[Served]:
+    """A service whose limits are `SMALL`."""
+    with alone(**SMALL) as served:
+        yield served
+
+
+@pytest.fixture(scope="session")
+def small_client(small_service: Served) -> Iterator[httpx.Client]:
+    with httpx.Client(base_url=small_service.address, timeout=60) as made:
+        yield made
+
+
+@pytest.hookimpl(wrapper=True)
+def pytest_runtest_makereport(item, call):
+    """A failed test shows what the service it asked has logged."""
+    report = yield
+    if report.failed:
+        for name, value in getattr(item, "funcargs", {}).items():
+            if isinstance(value, Served):
+                report.sections.append((f"log of {name}", value.log.read_text()[-4000:]))
+    return report

@@ -1,0 +1,24 @@
+from __future__ import annotations
+
+from importlib.metadata import version
+
+import psutil
+
+from service.routes.health import LIBRARIES
+
+
+def test_live(client):
+    assert client.get("/health/live").json() == {"status": "live", "version": version("densityloom")}
+
+
+def test_ready(service, client):
+    ready = client.get("/health/ready").json()
+    assert ready == {
+        "status": "ready",
+        "version": version("densityloom"),
+        "workers": 2,
+        "busy": 0,
+        "waiting": 0,
+        "libraries": {name: version(name) for name in LIBRARIES},
+    }
+    assert len(psutil.Process(service.process.pid).children()) == 2

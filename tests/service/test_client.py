@@ -1,0 +1,103 @@
+from __future__ import annotations
+
+import httpx
+import numpy as np
+import pytest
+
+from engine import evaluate, sampling
+from service.client import Client, ServiceError
+from tests.service import bodies
+
+
+@pytest.fixture(scope="module")
+def connected(service):
+    with Client(service.address) as client:
+        yield client
+
+
+def test_arrays_come_back(connected):
+    result = connected.compute("grid", bodies.GRID)
+    crystal = bodies.coefficients(bodies.CRYSTAL)
+    field = evaluate(crystal, sampling.full_cell(crystal.lattice, (5, 6, 8)))
+    np.testing.assert_array_equal(result.values, field.values)
+    assert len(result.axes) == 3
+    for axis, expected in zip(result.axes, field.axes, strict=True):
+        np.testing.assert_array_equal(axis, expected.coordinates())
+    assert result.positions is None
+    assert result.metadata["unit"] == "e/Å³"
+    assert result.metadata["summary"]["coefficients"]["rows"] == 40
+    assert "values" not in result.metadata
+
+
+def test_points_come_with_their_positions(connected):
+    result = connected.compute("points", {**bodies.POINTS, "field": "gradient"})
+    assert result.axes == ()
+    np.testing.assert_array_equal(result.positions, bodies.POINTS["positions"])
+    assert result.values.shape == (3, 3)
+
+
+def test_complex_values_come_back(connected):
+    assert connected.compute("points", {**bodies.POINTS, "set": bodies.ABSORBING}).values.dtype == np.complex128
+
+
+def test_columns_travel_in_binary(connected):
+    columns = {name: np.array(column) for name, column in bodies.table_of(bodies.FILM).items()}
+    columns["phase_deg"] = columns["phase_deg"].astype(float)
+    result = connected.compute("profile", bodies.bare(bodies.PROFILE), columns)
+    np.testing.assert_array_equal(result.values, connected.compute("profile", bodies.PROFILE).values)
+    columns["phase_deg"][1] = np.nan
+    result = connected.compute("profile", bodies.bare(bodies.PROFILE), columns)
+    assert result.metadata["summary"]["coefficients"]["without_phase"] == 1
+
+
+def test_body_may_hold_arrays(connected):
+    given = {**bodies.FILM, "l": np.arange(1, 5), "amplitude": np.array(bodies.FILM["amplitude"])}
+    result = connected.compute("profile", {**bodies.PROFILE, "set": given})
+    np.testing.assert_array_equal(result.values, connected.compute("profile", bodies.PROFILE).values)
+
+
+def test_errors_carry_the_problem(connected):
+    with pytest.raises(ServiceError) as caught:
+        connected.compute("profile", {**bodies.PROFILE, "samples": 1})
+    assert caught.value.status == 422
+    assert caught.value.problem["errors"][0]["pointer"] == "/samples"
+    assert caught.value.retry_after is None
+    assert "/samples" in str(caught.value)
+    with pytest.raises(ServiceError) as caught:
+        connected.compute("picture", bodies.PROFILE)
+    assert caught.value.status == 404
+
+
+def refused(answer):
+    http = httpx.Client(transport=httpx.MockTransport(lambda _: answer), base_url="http://here")
+    with Client("", http=http) as client, pytest.raises(ServiceError) as caught:
+        client.compute("profile", bodies.PROFILE)
+    assert http.is_closed
+    return caught.value
+
+
+def test_time_to_wait():
+    busy = {"title": "All workers are busy", "detail": "Wait."}
+    fault = refused(httpx.Response(503, json=busy, headers={"Retry-After": "7"}))
+    assert (fault.status, fault.retry_after, fault.problem) == (503, 7.0, busy)
+    date = {"Retry-After": "Fri, 31 Dec 1999 23:59:59 GMT"}
+    assert refused(httpx.Response(503, json=busy, headers=date)).retry_after is None
+
+
+@pytest.mark.parametrize(
+    "answer",
+    [
+        httpx.Response(502, text="<html>Bad gateway</html>"),
+        httpx.Response(502, json=["not", "ours"]),
+        httpx.Response(502, content=b"\xff\xfe"),
+    ],
+)
+def test_answers_that_are_not_ours(answer):
+    fault = refused(answer)
+    assert fault.status == 502
+    assert str(fault) == "502: Bad Gateway"
+
+
+def test_no_service():
+    with Client("http://127.0.0.1:9", timeout=5) as client, pytest.raises(httpx.TransportError):
+        client.compute("profile", bodies.PROFILE)

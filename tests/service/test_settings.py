@@ -1,0 +1,85 @@
+from __future__ import annotations
+
+import pytest
+from pydantic import ValidationError
+
+from service.settings import PREFIX, Settings, load_settings
+
+GOOD = {
+    "compute_workers": 3,
+    "compute_threads": 2,
+    "queue": 0,
+    "request_seconds": 2.5,
+    "max_body_bytes": 4096,
+    "max_coefficients": 7,
+    "max_samples": 8,
+    "max_json_values": 9,
+    "max_memory_bytes": 2**21,
+}
+BAD = {
+    "compute_workers": ["0", "-1", "two", "1.5", ""],
+    "compute_threads": ["0", "many"],
+    "queue": ["-1", "x"],
+    "request_seconds": ["0", "-3", "nan", "inf", "1e9"],
+    "max_body_bytes": ["0", "100"],
+    "max_coefficients": ["0"],
+    "max_samples": ["0"],
+    "max_json_values": ["0"],
+    "max_memory_bytes": ["1000", "-1"],
+}
+
+
+def test_tables_here_name_every_setting():
+    assert set(GOOD) == set(BAD) == set(Settings.model_fields)
+
+
+@pytest.mark.parametrize(("name", "value"), GOOD.items())
+def test_every_setting_can_be_set(monkeypatch, name, value):
+    monkeypatch.setenv(f"{PREFIX}{name.upper()}", str(value))
+    loaded = load_settings()
+    assert getattr(loaded, name) == value
+    others = {other: getattr(loaded, other) for other in GOOD if other != name}
+    monkeypatch.delenv(f"{PREFIX}{name.upper()}")
+    assert others == {other: getattr(load_settings(), other) for other in others}
+
+
+@pytest.mark.parametrize(("name", "value"), [(name, value) for name, values in BAD.items() for value in values])
+def test_out_of_range_is_refused(monkeypatch, name, value):
+    monkeypatch.setenv(f"{PREFIX}{name.upper()}", value)
+    with pytest.raises(ValueError, match=name):
+        load_settings()
+
+
+@pytest.mark.parametrize("name", ["DENSITYLOOM_MAX_SAMPLE", "DENSITYLOOM_", "densityloom_workers"])
+def test_unknown_name_is_refused(monkeypatch, name):
+    monkeypatch.setenv(name, "1")
+    with pytest.raises(ValueError, match="unknown setting") as caught:
+        load_settings()
+    assert name in str(caught.value)
+    assert "DENSITYLOOM_MAX_SAMPLES" in str(caught.value)
+
+
+def test_names_of_others_are_left_alone(monkeypatch):
+    monkeypatch.setenv("DENSITY_SAMPLES", "x")
+    load_settings()
+
+
+def test_defaults_use_the_cores_once(monkeypatch):
+    monkeypatch.setattr("service.settings._cores", lambda: 8)
+    loaded = load_settings()
+    assert (loaded.compute_workers, loaded.compute_threads) == (2, 4)
+    monkeypatch.setattr("service.settings._cores", lambda: 1)
+    loaded = load_settings()
+    assert (loaded.compute_workers, loaded.compute_threads) == (1, 1)
+
+
+def test_settings_do_not_change_and_have_descriptions():
+    with pytest.raises(ValidationError):
+        load_settings().queue = 3
+    for name, field in Settings.model_fields.items():
+        assert field.description, name
+
+
+def test_settings_reach_a_worker_whole():
+    loaded = load_settings()
+    assert Settings.model_validate_json(loaded.model_dump_json()) == loaded
