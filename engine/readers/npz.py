@@ -22,7 +22,9 @@ _SPOILT_HEADER = (ValueError, TypeError, SyntaxError, RecursionError, MemoryErro
 """A header is a Python expression; whoever wrote it chooses what its parser stumbles over."""
 
 
-def read_npz(data: bytes, names: Collection[str], *, max_bytes: int) -> dict[str, FloatArray]:
+def read_npz(
+    data: bytes, names: Collection[str], *, max_bytes: int, ignored: Collection[str] = ()
+) -> dict[str, FloatArray]:
     """Columns of a .npz archive.
 
     Nothing is unpickled, and no more is unpacked than `max_bytes`, whatever the archive says of
@@ -35,6 +37,8 @@ def read_npz(data: bytes, names: Collection[str], *, max_bytes: int) -> dict[str
         Array names that are understood; others are refused.
     max_bytes : int
         Bound of the unpacked size of all arrays together.
+    ignored : collection of str
+        Of the names, arrays that are passed over, whatever they hold.
 
     Returns
     -------
@@ -53,7 +57,8 @@ def read_npz(data: bytes, names: Collection[str], *, max_bytes: int) -> dict[str
             if not members:
                 raise InputError((), "the archive holds no arrays", _CURE)
             _check_members(members, names, max_bytes)
-            return {_name(member): _column(archive, member) for member in members}
+            wanted = [member for member in members if _name(member) not in ignored]
+            return {_name(member): _column(archive, member) for member in wanted}
     except _SPOILT_ARCHIVE as fault:
         raise InputError((), "the data is not a readable .npz archive", _CURE) from fault
 
