@@ -1,0 +1,1 @@
+"""From measured intensities to amplitudes on an absolute scale."""
