@@ -66,6 +66,8 @@ class CoefficientSet:
     unit : str
         Unit of the density.
     tally : Tally
+    history : tuple of str
+        What was done to the measurements before they were coefficients, in words.
     """
 
     lattice: Lattice
@@ -78,6 +80,7 @@ class CoefficientSet:
     real: bool
     unit: str
     tally: Tally
+    history: tuple[str, ...] = ()
 
     @property
     def count(self) -> int:

@@ -269,7 +269,7 @@ def _described(work: Work, values: AnyArray, statistics: Statistics) -> Field:
         summed=summed.shape[0] + (others.shape[0] if given.real else 0),
         unphased=work.parts.unphased,
         resolution=resolution,
-        applied=work.parts.applied,
+        applied=(*given.history, *work.parts.applied),
         notes=_notes(work),
     )
 

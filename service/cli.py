@@ -11,7 +11,9 @@ import sys
 from collections.abc import Sequence
 from importlib.metadata import version
 from pathlib import Path
+from typing import Any
 
+import orjson
 import uvicorn
 from tqdm import tqdm
 
@@ -20,10 +22,14 @@ from engine.evaluate import Work
 from engine.synthesis import Progress
 from service import intake, pipeline
 from service.encoders.negotiation import ROW_FORMATS, formats_of
+from service.parts import Part
 from service.problems import Problem
+from service.schemas.coefficient_set import ReflectionSetIn
+from service.schemas.requests import INSPECT, InspectIn
 from service.settings import load_settings
 from service.spool import Spool
 from service.terminal import render
+from service.terminal_summary import render_summary
 
 SILENT_SECONDS = 1.5
 """Work that is over by then shows no progress."""
@@ -66,11 +72,18 @@ def _parser() -> argparse.ArgumentParser:
     run = actions.add_parser("run", help="compute one request without a server")
     run.add_argument("request", type=Path, help="JSON file; its member product names what is wanted")
     run.add_argument("--columns", type=Path, help="CSV or .npz file with the columns of the set")
+    run.add_argument("--reflections", type=Path, help="CIF, delimited text or .npz with reflections to prepare")
     run.add_argument(
         "--out", type=Path, help=f"file to write, by its ending: {', '.join(ROW_FORMATS)}; without it, show the field"
     )
     run.add_argument("--threads", type=int, default=_cores(), help="default: all cores")
     run.set_defaults(action=_run)
+
+    inspect = actions.add_parser("inspect", help="summarise a file of reflections")
+    inspect.add_argument("reflections", type=Path, help="CIF, delimited text or .npz")
+    inspect.add_argument("--request", type=Path, help="JSON file whose set says how to prepare the reflections")
+    inspect.add_argument("--json", action="store_true", help="print the summary as JSON")
+    inspect.set_defaults(action=_inspect)
     return parser
 
 
@@ -120,8 +133,12 @@ def _run(options: argparse.Namespace) -> int:
         media_type = TABLE_TYPES.get(options.columns.suffix)
         if media_type is None:
             raise ValueError(f"--columns: {options.columns.name} does not end in {' or '.join(TABLE_TYPES)}")
-        table = intake.Table(media_type, options.columns.read_bytes())
-    product, request = intake.check(None, document, table, max_body_bytes=settings.max_body_bytes)
+        table = Part(media_type, options.columns.read_bytes())
+    product, request = intake.check(
+        None, document, table, _file(options.reflections), max_body_bytes=settings.max_body_bytes
+    )
+    if isinstance(request, InspectIn):
+        raise ValueError(f"{options.request.name} asks for an inspection: use densityloom inspect")
     form = _form(product, options.out)
     partial = options.out and options.out.with_name(f".{options.out.name}.partial")
     with Spool.at(partial) if partial else Spool.unnamed() as spool:
@@ -135,6 +152,26 @@ def _run(options: argparse.Namespace) -> int:
         partial.replace(options.out)
     print(render(done.coefficients, done.field))
     print(f"  {done.seconds:.3g} s" + (f", written to {options.out}" if options.out else ""))
+    return 0
+
+
+def _file(path: Path | None) -> Part | None:
+    return None if path is None else Part("", path.read_bytes(), path.name)
+
+
+def _inspect(options: argparse.Namespace) -> int:
+    settings = load_settings()
+    document: dict[str, Any] = {} if options.request is None else intake.decode(options.request.read_bytes())
+    # A request for a density says how its file is prepared; that is all an inspection takes from it.
+    given = document.get("set", {})
+    taken = {name: given[name] for name in given if name in ReflectionSetIn.model_fields}
+    _, request = intake.check(
+        INSPECT, {"set": taken}, None, _file(options.reflections), max_body_bytes=settings.max_body_bytes
+    )
+    if not isinstance(request, InspectIn):
+        raise TypeError("an inspection was checked as something else")
+    made = pipeline.inspect(request, settings)
+    print(orjson.dumps(made, option=orjson.OPT_INDENT_2).decode() if options.json else render_summary(made))
     return 0
 
 

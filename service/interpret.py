@@ -1,73 +1,17 @@
-"""From a request's model to the engine's objects: the only place that knows both."""
+"""From a request's model to the engine's samples and treatment; `interpret_set` makes its set."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 
 from engine import averages, sampling
-from engine.assembly import INDEX_COLUMNS, Columns, assemble
 from engine.averages import Average
-from engine.coefficients import CoefficientSet
 from engine.fields import Treatment
 from engine.lattice import Lattice
 from engine.sampling import Sampling
 from engine.windows import Window
 from service.problems import at, located
-from service.schemas.coefficient_set import INDEX_NAMES, Cell, CoefficientSetIn
 from service.schemas.products import GridIn, PointsIn, ProductIn, ProfileIn, SliceIn
-
-CELL_PARAMETERS = ("a", "b", "c", "alpha", "beta", "gamma")
-
-
-def coefficient_set(request: ProductIn, *, max_coefficients: int) -> CoefficientSet:
-    """The set of a request, cut to its resolution limits.
-
-    Raises
-    ------
-    Problem
-        Pointing to the place in the body.
-    """
-    given = request.set
-    lattice = _lattice(given.cell)
-    names = INDEX_COLUMNS[lattice.dimension]
-    for name in INDEX_NAMES:
-        present = getattr(given, name) is not None
-        if present != (name in names):
-            kind = {1: "layer stack", 2: "planar lattice", 3: "crystal"}[lattice.dimension]
-            raise at(
-                ("set", name),
-                f"is {'given' if present else 'absent'}, but the cell is that of a {kind}",
-                f"give the index columns {', '.join(names)}",
-            )
-    rows = len(getattr(given, names[0]))
-    if rows > max_coefficients:
-        raise at(
-            ("set", names[0]),
-            f"has {rows:,} rows, more than the limit of {max_coefficients:,}",
-            "send fewer coefficients, or have the limit raised",
-            kind="too-costly",
-        )
-    with located("set", renamed={"real": ("real",)}):
-        made = assemble(
-            lattice,
-            Columns(
-                indices=[getattr(given, name) for name in names],
-                amplitude=given.amplitude,
-                phase_deg=given.phase_deg,
-                real=given.real,
-                imag=given.imag,
-                sigma=given.sigma,
-                phase_sigma_deg=given.phase_sigma_deg,
-                merit=given.merit,
-            ),
-            values=given.values,
-            density=given.density,
-            mean=_mean(given),
-            missing_phase=request.missing_phase,
-            unit=given.unit,
-        )
-    with located("resolution"):
-        return made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
 
 
 def treatment(request: ProductIn, lattice: Lattice) -> Treatment:
@@ -110,32 +54,6 @@ def samples(request: ProductIn, lattice: Lattice) -> Sampling:
         with located():
             return sampling.points(lattice, request.positions, coordinates=request.coordinates)
     raise TypeError(f"no sampling for {type(request).__name__}")
-
-
-def _lattice(cell: Cell) -> Lattice:
-    given = cell.model_fields_set - {name for name in type(cell).model_fields if getattr(cell, name) is None}
-    with located("set", "cell"):
-        if given == {"period"} and cell.period is not None:
-            return Lattice.from_period(cell.period)
-        if given == {"vectors"} and cell.vectors is not None:
-            return Lattice.from_vectors(cell.vectors)
-        if given == {"a", "b", "gamma"}:
-            return Lattice.from_planar_parameters(*(getattr(cell, name) for name in ("a", "b", "gamma")))
-        if given == set(CELL_PARAMETERS):
-            return Lattice.from_parameters(*(getattr(cell, name) for name in CELL_PARAMETERS))
-    raise at(
-        ("set", "cell"),
-        f"has {', '.join(sorted(given)) or 'nothing'}, which describes no lattice",
-        "give a, b, c, alpha, beta, gamma; or a, b, gamma; or vectors; or period",
-    )
-
-
-def _mean(given: CoefficientSetIn) -> float | complex | None:
-    if given.mean_imag is None:
-        return given.mean
-    if given.mean is None:
-        raise at(("set", "mean"), "is absent where mean_imag is given", "give both parts")
-    return complex(given.mean, given.mean_imag)
 
 
 def _average(request: ProductIn, lattice: Lattice) -> Average | None:

@@ -10,11 +10,12 @@ from pydantic import BaseModel
 from pydantic.json_schema import models_json_schema
 
 from service.encoders.negotiation import MEDIA_TYPES, formats_of
-from service.intake import CSV, JSON, MULTIPART, NPZ
+from service.intake import CSV, FILE_TYPES, JSON, MULTIPART, NPZ
 from service.problems import MEDIA_TYPE as PROBLEM
 from service.problems import TITLES
 from service.schemas.answers import Answer, ProblemDocument
-from service.schemas.products import PRODUCTS
+from service.schemas.requests import INSPECT, REQUESTS
+from service.schemas.summary import SummaryAnswer
 
 _SCHEMAS = "#/components/schemas/"
 
@@ -23,6 +24,7 @@ SUMMARIES = {
     "slice": "Values on a plane",
     "grid": "Values in the whole cell or a box",
     "points": "Values at free points",
+    INSPECT: "Summary of a file of reflections",
 }
 
 DESCRIPTION = """Send Fourier coefficients, get the density they stand for, n(r) = Σ n_G exp(iG·r), on a line, a
@@ -30,7 +32,8 @@ plane, the whole cell, a box or at free points.
 
 * Answers are JSON, NumPy `.npy` or `.npz`, and CSV for profiles and points: by `Accept` or `?format=`.
 * Bodies are JSON; or a form (`multipart/form-data`) with the parts `request` (JSON without columns) and
-  `columns` (CSV or `.npz` with the columns of the set).
+  `columns` (CSV or `.npz` with the columns of the set) or `reflections` (a laboratory's CIF, delimited text or
+  `.npz`, prepared as `set.preparation` says).
 * Errors are problem documents (RFC 9457) that name the place by JSON pointer and say how to mend it.
 * A density is only as good as its phases: wrong ones give a wrong map that looks as sharp.
 """
@@ -52,6 +55,13 @@ _CRYSTAL = {
     "amplitude": [41.3, 22.8, 15.2],
     "phase_deg": [180, 0, 35],
 }
+_PREPARATION = {
+    "set": {
+        "symmetry": {"space_group": "P-1"},
+        "preparation": {"scale": {"kind": "wilson", "formula": "SiO2", "units": 3}},
+        "unit": "e/Å³",
+    }
+}
 EXAMPLES: dict[str, dict[str, Any]] = {
     "profile": {"set": _FILM, "from": [0], "to": [1], "samples": 128},
     "slice": {"set": _CRYSTAL, "plane": [0, 0, 1], "offset": 4.35, "width": 12, "height": 12, "spacing": 0.1},
@@ -62,13 +72,12 @@ EXAMPLES: dict[str, dict[str, Any]] = {
 
 def operation(product: str) -> dict[str, Any]:
     """What FastAPI is told of the endpoint of a product."""
-    schema = {"$ref": _SCHEMAS + PRODUCTS[product].__name__}
-    example = {"summary": f"A small {product}", "value": EXAMPLES[product]}
+    schema = {"$ref": _SCHEMAS + REQUESTS[product].__name__}
     return {
         "operation_id": product,
         "summary": SUMMARIES[product],
-        "description": f"{PRODUCTS[product].__doc__} The answer's form is chosen by `Accept` or `?format=`.",
-        "responses": {200: {"description": "The values", "content": _answers(product)}, **_problems()},
+        "description": f"{REQUESTS[product].__doc__} The answer's form is chosen by `Accept` or `?format=`.",
+        "responses": {200: {"description": "The answer", "content": _answers(product)}, **_problems()},
         "openapi_extra": {
             "parameters": [
                 {
@@ -79,23 +88,37 @@ def operation(product: str) -> dict[str, Any]:
                     "schema": {"type": "string", "enum": list(formats_of(product))},
                 }
             ],
-            "requestBody": {
-                "required": True,
-                "content": {
-                    JSON: {"schema": schema, "examples": {"small": example}},
-                    MULTIPART: {
-                        "schema": {
-                            "type": "object",
-                            "required": ["request"],
-                            "properties": {
-                                "request": {"type": "object", "description": "the request without columns in its set"},
-                                "columns": {"type": "string", "format": "binary"},
-                            },
-                        },
-                        "encoding": {"request": {"contentType": JSON}, "columns": {"contentType": f"{CSV}, {NPZ}"}},
-                    },
-                },
-            },
+            "requestBody": {"required": True, "content": _bodies(product, schema)},
+        },
+    }
+
+
+def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
+    """The request body in each media type."""
+    binary = {"type": "string", "format": "binary"}
+    request = {"type": "object", "description": "the request without columns in its set"}
+    properties: dict[str, Any] = {"request": request, "reflections": binary}
+    encoding: dict[str, Any] = {
+        "request": {"contentType": JSON},
+        "reflections": {"contentType": ", ".join(FILE_TYPES)},
+    }
+    if product == INSPECT:
+        form = {"type": "object", "required": ["reflections"], "properties": {**properties, "request": schema}}
+        example = {
+            "request": _PREPARATION,
+            "reflections": "h,k,l,intensity,intensity_sigma\n0,0,1,812.4,6.1\n0,1,0,77.0,2.9\n",
+        }
+        whole = {media_type: {"schema": binary} for media_type in FILE_TYPES}
+        examples = {"small": {"summary": "A table and how to prepare it", "value": example}}
+        return {MULTIPART: {"schema": form, "encoding": encoding, "examples": examples}, **whole}
+    properties["columns"] = binary
+    encoding["columns"] = {"contentType": f"{CSV}, {NPZ}"}
+    example = {"summary": f"A small {product}", "value": EXAMPLES[product]}
+    return {
+        JSON: {"schema": schema, "examples": {"small": example}},
+        MULTIPART: {
+            "schema": {"type": "object", "required": ["request"], "properties": properties},
+            "encoding": encoding,
         },
     }
 
@@ -105,7 +128,8 @@ def _answers(product: str) -> dict[str, Any]:
     for name in formats_of(product):
         schema: dict[str, Any] = {"type": "string", "format": "binary"}
         if name == "json":
-            schema = {"$ref": _SCHEMAS + Answer.__name__}
+            answer = SummaryAnswer if product == INSPECT else Answer
+            schema = {"$ref": _SCHEMAS + answer.__name__}
         elif name == "csv":
             schema = {"type": "string"}
         content[MEDIA_TYPES[name].split(";")[0]] = {"schema": schema}
@@ -135,8 +159,9 @@ def install(app: FastAPI) -> None:
                 openapi_version="3.1.0",
             )
             models: list[tuple[type[BaseModel], Literal["validation", "serialization"]]] = [
-                *((model, "validation") for model in PRODUCTS.values()),
+                *((model, "validation") for model in REQUESTS.values()),
                 (Answer, "serialization"),
+                (SummaryAnswer, "serialization"),
                 (ProblemDocument, "serialization"),
             ]
             _, schemas = models_json_schema(models, ref_template=_SCHEMAS + "{model}")

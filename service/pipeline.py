@@ -6,14 +6,20 @@ import math
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
+
+import orjson
 
 from engine.coefficients import CoefficientSet
 from engine.evaluate import Field, Work, prepare
+from engine.preparation import summarize_set
 from engine.synthesis import Demand, Progress
-from service import interpret
+from service import interpret, interpret_file, interpret_set
+from service.encoders.summary import summary_document
 from service.encoders.write import write
 from service.problems import Problem, at, located
 from service.schemas.products import ProductIn
+from service.schemas.requests import InspectIn, Request
 from service.settings import Settings
 from service.spool import Spool
 
@@ -50,7 +56,7 @@ def run(
         The request cannot be carried out, or would exceed a limit.
     """
     begin = time.perf_counter()
-    coefficients = interpret.coefficient_set(request, max_coefficients=settings.max_coefficients)
+    coefficients = interpret_set.coefficient_set(request, max_coefficients=settings.max_coefficients)
     sampling = interpret.samples(request, coefficients.lattice)
     wanted = math.prod(sampling.shape)
     if wanted > settings.max_samples:
@@ -80,6 +86,38 @@ def run(
             "state the columns in a larger unit, or ask for double precision",
         )
     return Done(coefficients, field, time.perf_counter() - begin)
+
+
+def inspect(request: InspectIn, settings: Settings) -> dict[str, Any]:
+    """Read and prepare a file of reflections, and summarise it.
+
+    Raises
+    ------
+    Problem
+        The file or the preparation is at fault.
+    """
+    lattice = None if request.set.cell is None else interpret_set.lattice_of(request.set.cell)
+    (table, left), made = interpret_file.prepared(request.set, lattice, max_rows=settings.max_coefficients)
+    with located("set", "reflections"):
+        return summary_document(table, left, summarize_set(made))
+
+
+def answer(
+    product: str,
+    request: Request,
+    form: str,
+    spool: Spool,
+    settings: Settings,
+    *,
+    threads: int,
+) -> float:
+    """Answer any request into the spool; returns the seconds it took."""
+    begin = time.perf_counter()
+    if isinstance(request, InspectIn):
+        spool.append(orjson.dumps(inspect(request, settings)))
+    else:
+        run(product, request, form, spool, settings, threads=threads)
+    return time.perf_counter() - begin
 
 
 def _place_of_size(request: ProductIn) -> str:

@@ -20,6 +20,7 @@ from scipy import special
 
 from engine.lattice import Lattice
 from engine.series import faces_backward
+from tests import samples_raw
 from tests.external.silicon import deformation_set
 
 FOLDER = Path(__file__).parent.parent / "sample_requests"
@@ -27,7 +28,6 @@ INVENTED = "Invented data. "
 
 HEXAGONAL = {"a": 3.02, "b": 3.02, "c": 17.4, "alpha": 90, "beta": 90, "gamma": 120}
 TRICLINIC = {"a": 6.1, "b": 7.4, "c": 9.3, "alpha": 82, "beta": 97, "gamma": 105}
-FILM_PERIOD = 52.0
 PLANAR = {"a": 31.0, "b": 31.0, "gamma": 120}
 
 
@@ -38,6 +38,7 @@ def build() -> dict[str, dict[str, Any]]:
     silicon = deformation_set(forbidden_adds=True)
     film = film_set()
     return {
+        **samples_raw.requests(INVENTED),
         "film_profile.json": {
             "product": "profile",
             "remark": INVENTED + "Lamellar film FG-7: twelve orders of a mirror-symmetric stack, e/Å³.",
@@ -171,20 +172,25 @@ def crystal_set(
 
 def film_set() -> dict[str, Any]:
     """Twelve orders of a stack of sheets that mirror each other about the middle of the period."""
-    # Electrons per Å² and position in Å of Gaussian sheets; their width is 2.2 Å.
-    sheets = [(9.6, 0.0), (1.9, 9.5), (1.9, -9.5), (1.3, 15.0), (1.3, -15.0), (3.0, 26.0)]
-    orders = np.arange(1, 13)
-    q = 2 * np.pi * orders / FILM_PERIOD
-    factors = sum(e * np.cos(q * z) for e, z in sheets) * np.exp(-(q**2) * 2.2**2 / 2)
+    orders, factors = samples_raw.film_factors()
     return {
-        "cell": {"period": FILM_PERIOD},
+        "cell": {"period": samples_raw.FILM_PERIOD},
         "values": "structure_factor",
         "l": orders.tolist(),
         "amplitude": np.abs(factors).round(4).tolist(),
         "phase_deg": np.where(factors < 0, 180, 0).tolist(),
         "sigma": np.hypot(0.008, 0.02 * np.abs(factors)).round(4).tolist(),
-        "mean": round(0.36 * FILM_PERIOD, 3),
+        "mean": round(0.36 * samples_raw.FILM_PERIOD, 3),
         "unit": "e/Å³",
+    }
+
+
+def texts() -> dict[str, str]:
+    """Every sample file that is not a request, by its name."""
+    return {
+        "film_orders.csv": film_table(),
+        "film_scan.csv": samples_raw.film_scan(),
+        "crystal_OR4.cif": samples_raw.crystal_cif(),
     }
 
 
@@ -251,7 +257,8 @@ def main() -> None:
     """Write all files."""
     for name, request in build().items():
         (FOLDER / name).write_text(json.dumps(request, ensure_ascii=False, separators=(", ", ": ")) + "\n")
-    (FOLDER / "film_orders.csv").write_text(film_table())
+    for name, text in texts().items():
+        (FOLDER / name).write_text(text)
 
 
 if __name__ == "__main__":

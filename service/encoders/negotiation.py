@@ -34,6 +34,8 @@ class _Range:
 
 def formats_of(product: str) -> tuple[str, ...]:
     """Formats a product may be had in."""
+    if product == "inspect":
+        return ("json",)
     return ROW_FORMATS if product in ("profile", "points") else ARRAY_FORMATS
 
 
@@ -65,7 +67,7 @@ def choose(product: str, accept: str | None, wanted: str | None) -> str:
 
 def _unacceptable(product: str, what: str) -> Problem:
     listed = ", ".join(f"{name} ({MEDIA_TYPES[name].split(';')[0]})" for name in formats_of(product))
-    return Problem("not-acceptable", f"A {product} is answered as {listed}; {what} asks for none of them.")
+    return Problem("not-acceptable", f"The answer of {product} comes as {listed}; {what} asks for none of them.")
 
 
 def _parse(accept: str) -> list[_Range]:

@@ -1,4 +1,4 @@
-"""The computing endpoints: stateless, one for each product."""
+"""The computing endpoints: stateless, one for each product, and the inspection of a file."""
 
 from __future__ import annotations
 
@@ -13,6 +13,7 @@ from service.encoders.negotiation import MEDIA_TYPES, choose
 from service.openapi import operation
 from service.problems import Problem
 from service.schemas.products import PRODUCTS
+from service.schemas.requests import INSPECT
 from service.settings import Settings
 from service.spool import Spool
 from service.wall.pool import Answer, Job, Pool
@@ -24,12 +25,15 @@ GONE = 499
 """Status logged for a client that went away before its answer; nobody reads it."""
 
 
+ADDRESSES = {**{product: f"/{product}" for product in PRODUCTS}, INSPECT: "/sets/inspect"}
+
+
 def router(pool: Pool, settings: Settings) -> APIRouter:
     """Endpoints over a pool of workers."""
     made = APIRouter(prefix="/v1", tags=["density"])
-    for product in PRODUCTS:
+    for product, address in ADDRESSES.items():
         made.add_api_route(
-            f"/{product}",
+            address,
             _endpoint(product, pool, settings),
             methods=["POST"],
             response_class=Response,

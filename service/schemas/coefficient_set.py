@@ -8,6 +8,7 @@ from pydantic import Field
 
 from service.schemas.base import Strict
 from service.schemas.columns import IndexColumn, NumberColumn, PhaseColumn
+from service.schemas.preparation import PreparationIn, ReflectionsFile, SymmetryIn
 
 INDEX_NAMES = ("h", "k", "l")
 COLUMN_NAMES = (*INDEX_NAMES, "amplitude", "phase_deg", "real", "imag", "sigma", "phase_sigma_deg", "merit")
@@ -30,13 +31,27 @@ class Cell(Strict):
     period: float | None = Field(None, gt=0, description="period of a layer stack, Å")
 
 
-class CoefficientSetIn(Strict):
+class ReflectionSetIn(Strict):
+    """Where a set lies, what symmetry it has, and how a file of reflections becomes it."""
+
+    cell: Cell | None = Field(None, description="the lattice; left out, that of the file of reflections")
+    symmetry: SymmetryIn | None = Field(
+        None, description="expands an asymmetric set; left out, that of the file of reflections, or none"
+    )
+    preparation: PreparationIn | None = Field(None, description="how the file of reflections is read and treated")
+    reflections: ReflectionsFile | None = None
+    density: Literal["real", "complex"] = Field(
+        "real", description="a real density obeys Friedel's law, and one of each pair suffices"
+    )
+    unit: str = Field("arbitrary", min_length=1, max_length=40, description="unit of the density, for the answer")
+
+
+class CoefficientSetIn(ReflectionSetIn):
     """Fourier coefficients of a density, as columns of equal length.
 
     A crystal has the index columns h, k, l; a planar lattice h, k; a layer stack l. Strengths are
     ``amplitude`` with ``phase_deg`` (null: unknown), or ``real`` with ``imag``."""
 
-    cell: Cell
     values: Literal["structure_factor", "density_coefficient"] = Field(
         description="structure_factor: F(hkl) = ∫ρ exp(+2πi h·x) dV over one cell, so ρ(r) = (1/V) Σ F exp(−2πi h·x); "
         "density_coefficient: n of n(r) = Σ n exp(+2πi h·x). Never guessed."
@@ -53,7 +68,3 @@ class CoefficientSetIn(Strict):
     merit: NumberColumn | None = Field(None, description="figure of merit of the phase, 0 to 1")
     mean: float | None = Field(None, description="the zero term, F(000) or n_0 by `values`, where no row carries it")
     mean_imag: float | None = Field(None, description="its imaginary part, for a complex density")
-    density: Literal["real", "complex"] = Field(
-        "real", description="a real density obeys Friedel's law, and one of each pair suffices"
-    )
-    unit: str = Field("arbitrary", min_length=1, max_length=40, description="unit of the density, for the answer")

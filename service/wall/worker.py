@@ -53,7 +53,7 @@ def _serve(message: dict[str, Any], body: Spool, settings: Settings) -> tuple[di
             message["product"], message["content_type"], data, max_body_bytes=settings.max_body_bytes
         )
         del data
-        done = pipeline.run(product, request, message["form"], made, settings, threads=settings.compute_threads)
+        seconds = pipeline.answer(product, request, message["form"], made, settings, threads=settings.compute_threads)
     except Problem as problem:
         return _refusal(problem), made
     except MemoryError:
@@ -63,7 +63,7 @@ def _serve(message: dict[str, Any], body: Spool, settings: Settings) -> tuple[di
     except Exception:  # the wall's purpose: whatever happens, the client gets an answer
         log.exception("a request failed")
         return _refusal(Problem("internal", "The computation failed; the fault has been logged.")), made
-    return {"seconds": done.seconds, "size": made.size}, made
+    return {"seconds": seconds, "size": made.size}, made
 
 
 def _refusal(problem: Problem) -> dict[str, Any]:

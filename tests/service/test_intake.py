@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 
 from service import intake
-from service.intake import CSV, JSON, NPZ, Table, check, columns, decode, read
+from service.intake import CSV, JSON, NPZ, check, columns, decode, read
+from service.parts import Part
 from service.problems import Problem
 from service.schemas.products import GridIn, ProfileIn
 from tests.service import bodies
@@ -109,10 +110,10 @@ def test_last_of_members_given_twice_counts_nothing_else():
 
 
 def test_columns_of_tables():
-    found = columns(Table(CSV, b"l,merit\n1,0.5\n"), max_body_bytes=LIMIT)
+    found = columns(Part(CSV, b"l,merit\n1,0.5\n"), max_body_bytes=LIMIT)
     assert {name: column.tolist() for name, column in found.items()} == {"l": [1], "merit": [0.5]}
-    assert refusal(columns, Table("", b"l\n1"), max_body_bytes=LIMIT).status == 415
-    problem = refusal(columns, Table(CSV, b"l\nx\n"), max_body_bytes=LIMIT)
+    assert refusal(columns, Part("", b"l\n1"), max_body_bytes=LIMIT).status == 415
+    problem = refusal(columns, Part(CSV, b"l\nx\n"), max_body_bytes=LIMIT)
     assert (problem.status, places(problem)) == (422, ["/set"])
     assert problem.detail.startswith("/set: the part columns: line 2, field 1 (l): 'x' is not a number")
 
@@ -120,8 +121,8 @@ def test_columns_of_tables():
 def test_archive_may_unpack_to_a_multiple_of_a_body():
     packed = bodies.as_npz({"l": np.arange(1000)})
     unpacked = 8128
-    assert columns(Table(NPZ, packed), max_body_bytes=unpacked // intake.UNPACKED_RATIO)["l"].size == 1000
-    problem = refusal(columns, Table(NPZ, packed), max_body_bytes=unpacked // intake.UNPACKED_RATIO - 1)
+    assert columns(Part(NPZ, packed), max_body_bytes=unpacked // intake.UNPACKED_RATIO)["l"].size == 1000
+    problem = refusal(columns, Part(NPZ, packed), max_body_bytes=unpacked // intake.UNPACKED_RATIO - 1)
     assert problem.kind == "too-costly"
 
 

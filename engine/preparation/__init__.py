@@ -1,0 +1,6 @@
+"""From a laboratory's reflections to a coefficient set, every step stated and counted."""
+
+from engine.preparation.chain import Prepared, Recipe, prepare_reflections
+from engine.preparation.summary import Shell, Summary, summarize_set
+
+__all__ = ["Prepared", "Recipe", "Shell", "Summary", "prepare_reflections", "summarize_set"]

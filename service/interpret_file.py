@@ -1,0 +1,168 @@
+"""From a laboratory's file to prepared reflections, as a request says."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from engine.amplitudes.corrections import Correction, FilmAbsorption, Footprint, Lorentz, Polarisation
+from engine.errors import InputError
+from engine.lattice import Lattice
+from engine.preparation import Prepared, Recipe, prepare_reflections
+from engine.readers import ReadTable, read, to_reflections
+from engine.readers.mapping import Status
+from engine.readers.table import LeftOut, Symmetry
+from engine.scattering import Composition, composition
+from engine.symmetry import Group, plane_group, space_group, stack_group
+from service.problems import at, located
+from service.schemas.coefficient_set import ReflectionSetIn
+from service.schemas.preparation import CorrectionIn, PreparationIn, SymmetryIn
+
+DIMENSIONS = {"space_group": 3, "hall": 3, "plane_group": 2, "stack_group": 1}
+
+
+def prepared(
+    given: ReflectionSetIn, lattice: Lattice | None, *, max_rows: int
+) -> tuple[tuple[ReadTable, tuple[LeftOut, ...]], Prepared]:
+    """Read the file of a request and prepare its reflections.
+
+    Returns
+    -------
+    (ReadTable, tuple of LeftOut)
+        The file as it was read, and the rows that hold no reflection to use.
+    Prepared
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body, or to the file.
+    """
+    part, wanted = given.reflections, given.preparation or PreparationIn()
+    if part is None:
+        raise at(("set", "reflections"), "is absent", "send the file as the part reflections of a form")
+    with located("set", "reflections"):
+        table = read(part.data, name=part.name or None, block=wanted.block, mapping=wanted.mapping)
+        if table.count > max_rows:
+            raise InputError((), f"the file has {table.count:,} rows, more than {max_rows:,}", "send fewer rows")
+        if lattice is None and table.lattice is None:
+            raise at(("set", "cell"), "is absent, and the file gives none", "give the lattice")
+        phase = wanted.phase
+        if phase is None and not any(name in table.columns for name in ("phase_deg", "phase_calc_deg")):
+            phase = "none"
+        reflections, left = to_reflections(
+            table,
+            observed=wanted.observed,
+            phase=phase,
+            lattice=lattice,
+            missing_sigma=wanted.missing_sigma,
+            omit=[Status[name.upper()] for name in wanted.omit],
+        )
+    dimension = reflections.lattice.dimension
+    recipe = Recipe(
+        group=_group(given.symmetry, table.crystal.symmetry, dimension),
+        friedel=given.density == "real",
+        wavelength=wanted.wavelength or table.crystal.wavelength,
+        corrections=_corrections(wanted.corrections),
+        amplitudes=wanted.amplitudes,
+        reject_outliers=wanted.reject_outliers,
+        scale=wanted.scale.kind,
+        content=None if wanted.scale.formula is None else _content(wanted.scale.formula),
+        units=wanted.scale.units,
+        probe=wanted.scale.probe,
+        factor=wanted.scale.factor,
+    )
+    renamed: dict[str, tuple[str | int, ...]] = {
+        "content": ("preparation", "scale", "formula"),
+        "factor": ("preparation", "scale", "factor"),
+        "wavelength": ("preparation", "wavelength"),
+        "corrections": ("preparation", "corrections"),
+        "amplitudes": ("preparation", "amplitudes"),
+    }
+    with located("set", renamed=renamed):
+        return (table, left), prepare_reflections(reflections, recipe)
+
+
+def symmetry_group(symmetry: SymmetryIn, dimension: int) -> Group:
+    """The group a request names.
+
+    Raises
+    ------
+    Problem
+        None or several are named, it is of another dimension, or it is unknown.
+    """
+    named = [name for name in type(symmetry).model_fields if getattr(symmetry, name) is not None]
+    if len(named) != 1:
+        raise at(("set", "symmetry"), f"names {len(named)} groups", f"give one of {', '.join(DIMENSIONS)}, operations")
+    form = named[0]
+    if DIMENSIONS.get(form, dimension) != dimension:
+        raise at(("set", "symmetry", form), f"does not fit a lattice of dimension {dimension}", "name one that does")
+    value = getattr(symmetry, form)
+    with located("set", "symmetry", form):
+        try:
+            return _named(form, value, dimension)
+        except InputError as fault:
+            # The engine's own name of its argument says less than the member's.
+            raise InputError(fault.path[1:], fault.reason, fault.cure) from fault
+
+
+def _named(form: str, value: int | str | list[str], dimension: int) -> Group:
+    if isinstance(value, list):
+        return Group.from_operations(value, dimension)
+    if form == "plane_group":
+        return plane_group(value)
+    if form == "stack_group":
+        return stack_group(str(value))
+    return space_group(value, notation="hall" if form == "hall" else "any")
+
+
+def _group(asked: SymmetryIn | None, found: Symmetry, dimension: int) -> Group:
+    """The symmetry asked for, else the file's, else none but the lattice's translations."""
+    if asked is not None:
+        return symmetry_group(asked, dimension)
+    with located("set", "reflections"):
+        name = found.hermann_mauguin or found.hall or ""
+        if found.operations:
+            return Group.from_operations(found.operations, dimension, name=name, number=found.number)
+        if found.hall is not None:
+            return space_group(found.hall, notation="hall")
+        if found.hermann_mauguin is not None:
+            return space_group(found.hermann_mauguin, notation="hermann_mauguin")
+        if found.number is not None:
+            return space_group(found.number)
+    identity = np.eye(dimension, dtype=np.int64)[None]
+    name = {1: "1", 2: "p1", 3: "P1"}[dimension]
+    return Group(rotations=identity, translations=np.zeros((1, dimension)), name=name)
+
+
+def _corrections(asked: list[CorrectionIn]) -> tuple[Correction, ...]:
+    made: list[Correction] = []
+    for place, one in enumerate(asked):
+        own = {
+            "lorentz": {"geometry"},
+            "polarisation": {"degree", "monochromator_2theta_deg", "perfect"},
+            "film_absorption": {"thickness_um", "mu_per_cm"},
+            "footprint": {"length_mm", "width_mm", "profile"},
+        }[one.kind]
+        where = ("set", "preparation", "corrections", place)
+        for name in sorted(one.model_fields_set - own - {"kind"}):
+            raise at((*where, name), f"has no meaning for {one.kind}", "leave it out")
+        for name in sorted(own - {"degree", "perfect", "profile", "monochromator_2theta_deg"}):
+            if getattr(one, name) is None:
+                raise at((*where, name), "is absent", f"{one.kind} needs it")
+        with located(*where):
+            made.append(_correction(one))
+    return tuple(made)
+
+
+def _correction(one: CorrectionIn) -> Correction:
+    if one.kind == "lorentz" and one.geometry is not None:
+        return Lorentz(one.geometry)
+    if one.kind == "film_absorption" and one.thickness_um is not None and one.mu_per_cm is not None:
+        return FilmAbsorption(thickness_um=one.thickness_um, mu_per_cm=one.mu_per_cm)
+    if one.kind == "footprint" and one.length_mm is not None and one.width_mm is not None:
+        return Footprint(length_mm=one.length_mm, width_mm=one.width_mm, profile=one.profile)
+    return Polarisation(degree=one.degree, monochromator_2theta_deg=one.monochromator_2theta_deg, perfect=one.perfect)
+
+
+def _content(formula: str) -> Composition:
+    with located("set", "preparation", "scale"):
+        return composition(formula)

@@ -1,0 +1,178 @@
+"""From a request's set to the engine's CoefficientSet: columns, symmetry, or a file that is prepared."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from engine.assembly import INDEX_COLUMNS, Columns, assemble
+from engine.coefficients import CoefficientSet
+from engine.lattice import Lattice
+from engine.phases import coefficient_set as coefficients_of
+from engine.reflections import Reflections
+from engine.symmetry import Group, expand
+from service.interpret_file import prepared, symmetry_group
+from service.problems import at, located
+from service.schemas.coefficient_set import INDEX_NAMES, Cell, CoefficientSetIn
+from service.schemas.products import ProductIn
+
+CELL_PARAMETERS = ("a", "b", "c", "alpha", "beta", "gamma")
+
+
+def coefficient_set(request: ProductIn, *, max_coefficients: int) -> CoefficientSet:
+    """The set of a request, expanded by its symmetry and cut to its resolution limits.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    given = request.set
+    made = _of_columns(request, max_coefficients) if given.reflections is None else _of_file(request, max_coefficients)
+    with located("resolution"):
+        return made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
+
+
+def lattice_of(cell: Cell) -> Lattice:
+    """The lattice a cell describes.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    given = cell.model_fields_set - {name for name in type(cell).model_fields if getattr(cell, name) is None}
+    with located("set", "cell"):
+        if given == {"period"} and cell.period is not None:
+            return Lattice.from_period(cell.period)
+        if given == {"vectors"} and cell.vectors is not None:
+            return Lattice.from_vectors(cell.vectors)
+        if given == {"a", "b", "gamma"}:
+            return Lattice.from_planar_parameters(*(getattr(cell, name) for name in ("a", "b", "gamma")))
+        if given == set(CELL_PARAMETERS):
+            return Lattice.from_parameters(*(getattr(cell, name) for name in CELL_PARAMETERS))
+    raise at(
+        ("set", "cell"),
+        f"has {', '.join(sorted(given)) or 'nothing'}, which describes no lattice",
+        "give a, b, c, alpha, beta, gamma; or a, b, gamma; or vectors; or period",
+    )
+
+
+def _of_file(request: ProductIn, max_coefficients: int) -> CoefficientSet:
+    given = request.set
+    for name in (*INDEX_NAMES, "amplitude", "phase_deg", "real", "imag", "sigma", "phase_sigma_deg", "merit"):
+        if getattr(given, name) is not None:
+            raise at(("set", name), "is given beside a file of reflections", "leave it out, or send no file")
+    if given.values != "structure_factor":
+        raise at(("set", "values"), "must be structure_factor where a file is sent", "files hold structure factors")
+    lattice = None if given.cell is None else lattice_of(given.cell)
+    _, made = prepared(given, lattice, max_rows=max_coefficients)
+    with located("set"):
+        coefficients = made.coefficients(unit=given.unit)
+    mean = _mean(given)
+    if mean is not None:
+        raise at(("set", "mean"), "is given beside a file of reflections", "give the zero term as a row")
+    if request.missing_phase == "refuse" and coefficients.unphased:
+        raise at(
+            ("missing_phase",),
+            f"refuses, and {coefficients.unphased} coefficients have no phase",
+            'give every phase, or ask for "omit"',
+        )
+    return replace(coefficients, tally=replace(coefficients.tally, rows=made.given.count))
+
+
+def _of_columns(request: ProductIn, max_coefficients: int) -> CoefficientSet:
+    given = request.set
+    if given.preparation is not None:
+        raise at(("set", "preparation"), "is of a file, and none was sent", "leave it out, or send a file")
+    if given.cell is None:
+        raise at(("set", "cell"), "is absent", "give the lattice")
+    lattice = lattice_of(given.cell)
+    names = INDEX_COLUMNS[lattice.dimension]
+    for name in INDEX_NAMES:
+        present = getattr(given, name) is not None
+        if present != (name in names):
+            kind = {1: "layer stack", 2: "planar lattice", 3: "crystal"}[lattice.dimension]
+            raise at(
+                ("set", name),
+                f"is {'given' if present else 'absent'}, but the cell is that of a {kind}",
+                f"give the index columns {', '.join(names)}",
+            )
+    rows = len(getattr(given, names[0]))
+    if rows > max_coefficients:
+        raise at(
+            ("set", names[0]),
+            f"has {rows:,} rows, more than the limit of {max_coefficients:,}",
+            "send fewer coefficients, or have the limit raised",
+            kind="too-costly",
+        )
+    with located("set"):
+        made = assemble(
+            lattice,
+            Columns(
+                indices=[getattr(given, name) for name in names],
+                amplitude=given.amplitude,
+                phase_deg=given.phase_deg,
+                real=given.real,
+                imag=given.imag,
+                sigma=given.sigma,
+                phase_sigma_deg=given.phase_sigma_deg,
+                merit=given.merit,
+            ),
+            values=given.values,
+            density=given.density,
+            mean=_mean(given),
+            missing_phase=request.missing_phase,
+            unit=given.unit,
+        )
+    if given.symmetry is None:
+        return made
+    group = symmetry_group(given.symmetry, lattice.dimension)
+    return _expanded(made, given, lattice, group)
+
+
+def _expanded(made: CoefficientSet, given: CoefficientSetIn, lattice: Lattice, group: Group) -> CoefficientSet:
+    """The full set of an asymmetric one. `made` has been checked, and holds the zero term."""
+    names = INDEX_COLUMNS[lattice.dimension]
+    indices = np.stack([getattr(given, name) for name in names], axis=1).astype(np.int64)
+    if given.real is not None and given.imag is not None:
+        values = given.real + 1j * given.imag
+        phase = np.angle(values)
+        amplitude = np.abs(values)
+    else:
+        amplitude = np.zeros(len(indices)) if given.amplitude is None else given.amplitude
+        phase = np.full(len(indices), np.nan) if given.phase_deg is None else np.deg2rad(given.phase_deg)
+    # n_m = F(−m)/V: expansion is written for structure factors.
+    coefficient = given.values == "density_coefficient"
+    scale = lattice.volume if coefficient else 1.0
+    reflections = Reflections(
+        lattice=lattice,
+        indices=np.asfortranarray(-indices if coefficient else indices),
+        quantity="amplitude",
+        observed=amplitude * scale,
+        sigma=None if given.sigma is None else given.sigma * scale,
+        phase=phase,
+        phase_sigma=None if given.phase_sigma_deg is None else np.deg2rad(given.phase_sigma_deg),
+        merit=given.merit,
+        row=np.arange(len(indices)),
+        scale="arbitrary",
+    )
+    renamed: dict[str, tuple[str | int, ...]] = {"phase": ("phase_deg",), "indices": (names[0],)}
+    with located("set", renamed=renamed):
+        full = expand(reflections, group, friedel=given.density == "real")
+        zero = _mean(given)
+        mean = None if zero is None else zero * scale
+        expanded = coefficients_of(full.reflections, unit=given.unit, mean=mean, density=given.density)
+    words = f"expanded by {group.name} from {reflections.count} to {full.reflections.count} reflections"
+    left = f"; {full.absent_rows.size} systematically absent ones left out" if full.absent_rows.size else ""
+    tally = replace(made.tally, zero_term=expanded.tally.zero_term)
+    return replace(expanded, tally=tally, history=(words + left,))
+
+
+def _mean(given: CoefficientSetIn) -> float | complex | None:
+    if given.mean_imag is None:
+        return given.mean
+    if given.mean is None:
+        raise at(("set", "mean"), "is absent where mean_imag is given", "give both parts")
+    return complex(given.mean, given.mean_imag)

@@ -1,0 +1,25 @@
+"""Every kind of request a worker takes."""
+
+from __future__ import annotations
+
+from typing import Literal
+
+from pydantic import Field
+
+from service.schemas.base import Strict
+from service.schemas.coefficient_set import ReflectionSetIn
+from service.schemas.products import PRODUCTS, ProductIn
+
+INSPECT = "inspect"
+
+
+class InspectIn(Strict):
+    """A file of reflections to be summarised, without a density."""
+
+    product: Literal["inspect"] | None = None
+    remark: str | None = Field(None, max_length=2000, description="for people; the service does not read it")
+    set: ReflectionSetIn = ReflectionSetIn()
+
+
+Request = ProductIn | InspectIn
+REQUESTS: dict[str, type[ProductIn] | type[InspectIn]] = {**PRODUCTS, INSPECT: InspectIn}
