@@ -7,15 +7,16 @@ import numpy as np
 from engine.amplitudes.corrections import Correction, FilmAbsorption, Footprint, Lorentz, Polarisation
 from engine.errors import InputError
 from engine.lattice import Lattice
-from engine.preparation import Prepared, Recipe, prepare_reflections
+from engine.preparation import Prepared, Recipe, TrialModel, prepare_reflections, with_distributions
 from engine.readers import ReadTable, read, to_reflections
 from engine.readers.mapping import Status
 from engine.readers.table import LeftOut, Symmetry
+from engine.reflections import Reflections
 from engine.scattering import Composition, composition
 from engine.symmetry import Group, plane_group, space_group, stack_group
 from service.problems import at, located
 from service.schemas.coefficient_set import ReflectionSetIn
-from service.schemas.preparation import CorrectionIn, PreparationIn, SymmetryIn
+from service.schemas.preparation import CorrectionIn, ModelIn, PreparationIn, SymmetryIn
 
 DIMENSIONS = {"space_group": 3, "hall": 3, "plane_group": 2, "stack_group": 1}
 
@@ -45,9 +46,7 @@ def prepared(
             raise InputError((), f"the file has {table.count:,} rows, more than {max_rows:,}", "send fewer rows")
         if lattice is None and table.lattice is None:
             raise at(("set", "cell"), "is absent, and the file gives none", "give the lattice")
-        phase = wanted.phase
-        if phase is None and not any(name in table.columns for name in ("phase_deg", "phase_calc_deg")):
-            phase = "none"
+        phase = _phase_column(wanted, table)
         reflections, left = to_reflections(
             table,
             observed=wanted.observed,
@@ -56,9 +55,11 @@ def prepared(
             missing_sigma=wanted.missing_sigma,
             omit=[Status[name.upper()] for name in wanted.omit],
         )
-    dimension = reflections.lattice.dimension
+    group = _group(given.symmetry, table.crystal.symmetry, reflections.lattice.dimension)
+    if wanted.phase == "hendrickson_lattman":
+        reflections = _with_coefficients(reflections, table, group)
     recipe = Recipe(
-        group=_group(given.symmetry, table.crystal.symmetry, dimension),
+        group=group,
         friedel=given.density == "real",
         wavelength=wanted.wavelength or table.crystal.wavelength,
         corrections=_corrections(wanted.corrections),
@@ -69,6 +70,7 @@ def prepared(
         units=wanted.scale.units,
         probe=wanted.scale.probe,
         factor=wanted.scale.factor,
+        model=None if wanted.model is None else _model(wanted.model, reflections.lattice.dimension),
     )
     renamed: dict[str, tuple[str | int, ...]] = {
         "content": ("preparation", "scale", "formula"),
@@ -76,9 +78,53 @@ def prepared(
         "wavelength": ("preparation", "wavelength"),
         "corrections": ("preparation", "corrections"),
         "amplitudes": ("preparation", "amplitudes"),
+        "elements": ("preparation", "model", "atoms"),
+        "species": ("preparation", "model", "atoms"),
+        "positions": ("preparation", "model", "atoms"),
     }
     with located("set", renamed=renamed):
         return (table, left), prepare_reflections(reflections, recipe)
+
+
+def _phase_column(wanted: PreparationIn, table: ReadTable) -> str | None:
+    """The file's phase column to take; "none" where phases come from elsewhere or there are none."""
+    if wanted.model is not None:
+        if wanted.phase not in (None, "none"):
+            raise at(("set", "preparation", "phase"), "is named beside a model", "leave one of the two out")
+        return "none"
+    if wanted.phase == "hendrickson_lattman":
+        return "none"
+    if wanted.phase is None and not any(name in table.columns for name in ("phase_deg", "phase_calc_deg")):
+        return "none"
+    return wanted.phase
+
+
+def _with_coefficients(reflections: Reflections, table: ReadTable, group: Group) -> Reflections:
+    names = ("hl_a", "hl_b", "hl_c", "hl_d")
+    absent = [name for name in names if name not in table.columns]
+    if absent:
+        raise at(("set", "preparation", "phase"), f"needs the column {absent[0]}", f"give {', '.join(names)}")
+    rows = np.searchsorted(table.row, reflections.row)
+    coefficients = np.stack([table.columns[name][rows] for name in names], axis=1)
+    with located("set", "reflections"):
+        return with_distributions(reflections, coefficients, group)
+
+
+def _model(asked: ModelIn, dimension: int) -> TrialModel:
+    for place, atom in enumerate(asked.atoms):
+        if len(atom.position) != dimension:
+            raise at(
+                ("set", "preparation", "model", "atoms", place, "position"),
+                f"has {len(atom.position)} coordinates",
+                f"give {dimension}",
+            )
+    return TrialModel(
+        elements=tuple(atom.element for atom in asked.atoms),
+        positions=np.array([atom.position for atom in asked.atoms], dtype=np.float64),
+        occupancy=np.array([atom.occupancy for atom in asked.atoms]),
+        b_iso=np.array([atom.b_iso for atom in asked.atoms]),
+        kind=asked.map,
+    )
 
 
 def symmetry_group(symmetry: SymmetryIn, dimension: int) -> Group:

@@ -44,6 +44,8 @@ def _quality(summary: dict[str, Any]) -> list[str]:
             f"  Wilson's plot: B {summary['wilson_b']:.3g} ± {summary['wilson_b_sigma']:.2g} Å², "
             f"scale {summary['wilson_scale']:.4g} ± {summary['wilson_scale_sigma']:.2g}"
         )
+    if summary["model_r"] is not None:
+        lines.append(f"  trial model: R {summary['model_r']:.3f}, weighted {summary['model_weighted_r']:.3f}")
     if summary["statistics"]:
         lines.append(f"  intensities: {summary['statistics']}")
     return lines

@@ -133,6 +133,11 @@ def requests(invented: str) -> dict[str, dict[str, Any]]:
             "height": 9.0,
             "spacing": 0.1,
         },
+        "inspect_crystal.json": {
+            "product": "inspect",
+            "remark": invented + "How to prepare crystal_OR4.cif.",
+            "set": {"preparation": {"scale": {"kind": "wilson", "formula": FORMULA, "units": UNITS}}},
+        },
         "film_from_scan.json": {
             "product": "profile",
             "remark": invented + "Film FG-7 from the intensities of a scan in film_scan.csv.",

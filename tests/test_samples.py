@@ -12,7 +12,7 @@ import httpx
 import numpy as np
 import pytest
 
-from tests.samples import FOLDER, build, film_table
+from tests.samples import FOLDER, build, texts
 from tests.serving import serving
 
 README = (FOLDER / "README.md").read_text()
@@ -32,27 +32,33 @@ def served():
         yield running
 
 
+PARTS = {
+    "film_from_table.json": ("columns", "film_orders.csv", "text/csv"),
+    "film_from_scan.json": ("reflections", "film_scan.csv", "text/csv"),
+    "crystal_from_cif.json": ("reflections", "crystal_OR4.cif", "chemical/x-cif"),
+    "inspect_crystal.json": ("reflections", "crystal_OR4.cif", "chemical/x-cif"),
+}
+"""Files that go with a request: the part's name, the file, its media type."""
+DENSITIES = [name for name in FILES if not name.startswith("inspect")]
+
+
 def answered(served, name):
     """A sample's JSON answer."""
     request = (FOLDER / name).read_bytes()
     product = json.loads(request)["product"]
-    if name == "film_from_table.json":
-        table = (FOLDER / "film_orders.csv").read_bytes()
-        body = {
-            "files": {
-                "request": ("r", request, "application/json"),
-                "columns": ("c", table, "text/csv"),
-            }
-        }
-    else:
-        body = {"content": request, "headers": {"Content-Type": "application/json"}}
-    answer = httpx.post(f"{served.address}/v1/{product}", **body)
+    address = "sets/inspect" if product == "inspect" else product
+    body = {"content": request, "headers": {"Content-Type": "application/json"}}
+    if name in PARTS:
+        part, file, media_type = PARTS[name]
+        files = {"request": ("r", request, "application/json"), part: (file, (FOLDER / file).read_bytes(), media_type)}
+        body = {"files": files}
+    answer = httpx.post(f"{served.address}/v1/{address}", **body)
     assert answer.status_code == 200, answer.text
     return answer.json()
 
 
 def test_every_file_is_documented():
-    assert sorted(EXPECTED) == FILES
+    assert sorted(EXPECTED) == DENSITIES
     for name in FILES:
         assert any(f"@sample_requests/{name}" in line for line in CURL_LINES), name
 
@@ -67,10 +73,20 @@ def test_files_are_what_the_generator_makes(name):
             np.testing.assert_allclose(kept["set"][key], value, atol=2e-2, rtol=1e-6)
         else:
             assert kept["set"][key] == value
-    assert (FOLDER / "film_orders.csv").read_text() == film_table()
 
 
-@pytest.mark.parametrize("name", FILES)
+@pytest.mark.parametrize("name", sorted(texts()))
+def test_texts_are_what_the_generator_makes(name):
+    made, kept = texts()[name].splitlines(), (FOLDER / name).read_text().splitlines()
+    assert len(made) == len(kept)
+    for one, other in zip(made, kept, strict=True):
+        if one != other:
+            # Rounded to the last digit kept: the libraries of two machines may differ there.
+            numbers = [[float(word) for word in re.split(r"[ ,]", line)] for line in (one, other)]
+            np.testing.assert_allclose(*numbers, atol=0.11)
+
+
+@pytest.mark.parametrize("name", DENSITIES)
 def test_answers_are_those_of_the_readme(served, name):
     answer, expected = answered(served, name), EXPECTED[name]
     assert answer["shape"] == [int(count) for count in expected["shape"].split("×")]
@@ -81,7 +97,9 @@ def test_answers_are_those_of_the_readme(served, name):
 
 
 @pytest.mark.skipif(shutil.which("curl") is None, reason="curl is not installed")
-@pytest.mark.parametrize("line", CURL_LINES, ids=lambda line: re.search(r"@sample_requests/(\w+)", line)[1])
+@pytest.mark.parametrize(
+    "line", CURL_LINES, ids=lambda line: re.findall(r"@sample_requests/(\w+)|v1/(\w+)", line)[0][0]
+)
 def test_curl_lines_work(served, line, tmp_path):
     words = shlex.split(line.replace("http://127.0.0.1:8420", served.address))
     words = [
@@ -96,6 +114,19 @@ def test_curl_lines_work(served, line, tmp_path):
         assert np.isfinite(values).all()
     else:
         assert done.stdout.startswith(b"{") or b"value" in done.stdout
+
+
+def test_inspection_tells_what_the_file_is_worth(served):
+    """The figures of OR-4 are those it was made with."""
+    summary = answered(served, "inspect_crystal.json")
+    assert summary["file"]["rows_read"] == 1757
+    assert summary["group"] == "P 21 21 21"
+    assert summary["completeness"] == 1
+    assert summary["absences"] == 12
+    assert abs(summary["absence_signal"]) < 3 / 12**0.5
+    # B was 2.4 Å² and the scale 0.0137.
+    assert abs(summary["wilson_b"] - 2.4) < 3 * summary["wilson_b_sigma"] < 1.5
+    assert abs(summary["wilson_scale"] - 0.0137) < 3 * summary["wilson_scale_sigma"] < 0.01
 
 
 def test_silicon_shows_the_bond(served):

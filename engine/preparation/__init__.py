@@ -1,6 +1,16 @@
 """From a laboratory's reflections to a coefficient set, every step stated and counted."""
 
 from engine.preparation.chain import Prepared, Recipe, prepare_reflections
+from engine.preparation.phasing import TrialModel, with_distributions
 from engine.preparation.summary import Shell, Summary, summarize_set
 
-__all__ = ["Prepared", "Recipe", "Shell", "Summary", "prepare_reflections", "summarize_set"]
+__all__ = [
+    "Prepared",
+    "Recipe",
+    "Shell",
+    "Summary",
+    "TrialModel",
+    "prepare_reflections",
+    "summarize_set",
+    "with_distributions",
+]

@@ -19,7 +19,9 @@ from engine.arrays import as_choice, as_positive
 from engine.coefficients import CoefficientSet
 from engine.errors import InputError
 from engine.merging import Merged, merge
+from engine.phases import Agreement as ModelAgreement
 from engine.phases import coefficient_set
+from engine.preparation.phasing import TrialModel, with_model
 from engine.reflections import Reflections
 from engine.scattering import Composition, Probe, sum_of_squares, zero_term
 from engine.symmetry import Classification, Expansion, Group, classify, expand
@@ -56,6 +58,8 @@ class Recipe:
     units : float
     probe : {"xray", "neutron"}
     factor : float or None
+    model : TrialModel or None
+        Where the phases are to come from a model instead of the reflections.
     """
 
     group: Group
@@ -69,6 +73,7 @@ class Recipe:
     units: float = 1.0
     probe: Probe = "xray"
     factor: float | None = None
+    model: TrialModel | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -86,8 +91,10 @@ class Prepared:
     converted : Amplitudes or None
         Where intensities were turned into amplitudes.
     plot : WilsonPlot or None
+    model : Agreement or None
+        Of the amplitudes with those of the trial model.
     unique : Reflections
-        Amplitudes, one of each orbit, scaled.
+        Amplitudes, one of each orbit, scaled; of a model's map, its coefficients.
     expansion : Expansion
     zero_term : float or None
         F(000): of the row of all indices zero, or of the content; None where neither is known.
@@ -102,6 +109,7 @@ class Prepared:
     kinds: Classification
     converted: Amplitudes | None
     plot: WilsonPlot | None
+    model: ModelAgreement | None
     unique: Reflections
     expansion: Expansion
     zero_term: float | None
@@ -165,18 +173,27 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
     if factor is not None:
         unique = replace(unique.scaled(factor), scale="absolute")
         zero = None if zero is None else zero * factor
-    expansion = expand(unique, recipe.group, friedel=recipe.friedel)
+    phased, model = unique, None
+    if recipe.model is not None:
+        phased, model, words = with_model(unique, classify(unique.indices, recipe.group), recipe.group, recipe.model)
+        applied.append(words)
+    expansion = expand(phased, recipe.group, friedel=recipe.friedel)
     applied.append(
         f"expanded by {recipe.group.name} from {unique.count} unique to {expansion.reflections.count} reflections"
     )
-    zero = _zero_term(zero, unique, recipe, applied)
+    if recipe.model is not None and recipe.model.kind == "difference":
+        # What the model lacks or has too much in all is not in the measured amplitudes.
+        zero = None
+    else:
+        zero = _zero_term(zero, unique, recipe, applied)
     return Prepared(
         given=given,
         merged=merged,
         kinds=kinds,
         converted=converted,
         plot=plot,
-        unique=unique,
+        model=model,
+        unique=phased,
         expansion=expansion,
         zero_term=zero,
         applied=tuple(applied),

@@ -80,6 +80,8 @@ class Summary:
     scale : str
         ``absolute`` or ``arbitrary``.
     wilson_b, wilson_b_sigma, wilson_scale, wilson_scale_sigma : float or None
+    model_r, model_weighted_r : float or None
+        R factors of a trial model.
     statistics : str or None
         What the distribution of intensities says, in words.
     applied, warnings : tuple of str
@@ -108,6 +110,8 @@ class Summary:
     wilson_scale_sigma: float | None
     wilson_b: float | None
     wilson_b_sigma: float | None
+    model_r: float | None
+    model_weighted_r: float | None
     statistics: str | None
     applied: tuple[str, ...]
     warnings: tuple[str, ...]
@@ -168,6 +172,8 @@ def summarize_set(prepared: Prepared) -> Summary:
         wilson_scale_sigma=None if plot is None else plot.scale_sigma,
         wilson_b=None if plot is None else plot.b,
         wilson_b_sigma=None if plot is None else plot.b_sigma,
+        model_r=None if prepared.model is None else prepared.model.r,
+        model_weighted_r=None if prepared.model is None else prepared.model.weighted_r,
         statistics=statistics,
         applied=prepared.applied,
         warnings=(*prepared.notes, *_warnings(prepared, counted.fraction, phased, spacing)),

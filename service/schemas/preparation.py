@@ -75,6 +75,24 @@ class ScaleIn(Strict):
     factor: float | None = Field(None, gt=0, description="absolute over given amplitude")
 
 
+class AtomIn(Strict):
+    """One atom of the asymmetric unit."""
+
+    element: str = Field(max_length=10, description="atom or ion, such as O or Na1+")
+    position: Annotated[list[float], Field(min_length=1, max_length=3)] = Field(description="fractional")
+    occupancy: float = Field(1.0, ge=0, le=1)
+    b_iso: float = Field(ge=0, description="isotropic displacement parameter B, Å²")
+
+
+class ModelIn(Strict):
+    """A trial model, whose phases are weighted by how well it agrees with the amplitudes."""
+
+    atoms: list[AtomIn] = Field(min_length=1, max_length=20_000)
+    map: Literal["observed", "calculated", "difference", "combination"] = Field(
+        "observed", description="m|F_o|, D|F_c|, m|F_o| − D|F_c| or 2m|F_o| − D|F_c|"
+    )
+
+
 class PreparationIn(Strict):
     """How the file is read and what is done to its reflections, in this order. What is not asked for is not done."""
 
@@ -82,7 +100,10 @@ class PreparationIn(Strict):
     observed: str | None = Field(
         None, max_length=40, description="quantity to take where the file has several, such as f_squared or f_calc"
     )
-    phase: Literal["phase_deg", "phase_calc_deg", "none"] | None = Field(None, description="phases to take")
+    phase: Literal["phase_deg", "phase_calc_deg", "hendrickson_lattman", "none"] | None = Field(
+        None, description="phases to take of the file; left out, the ones it has"
+    )
+    model: ModelIn | None = Field(None, description="phases from a trial model instead of the file's")
     mapping: dict[str, str] | None = Field(
         None, max_length=100, description='column of the file: quantity, or "ignore"; "*" stands for all others'
     )

@@ -90,6 +90,8 @@ class SummaryAnswer(BaseModel):
     wilson_scale_sigma: float | None
     wilson_b: float | None
     wilson_b_sigma: float | None
+    model_r: float | None
+    model_weighted_r: float | None
     statistics: str | None
     applied: list[str]
     warnings: list[str]

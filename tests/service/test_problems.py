@@ -9,7 +9,7 @@ from engine import errors
 from engine.errors import EngineError, InputError, TooLargeError
 from service import pipeline
 from service.intake import JSON
-from service.problems import LONGEST_PART, TITLES, Place, Problem, at, from_validation, located, pointer
+from service.problems import ERRORS_NAMED, LONGEST_PART, TITLES, Place, Problem, at, from_validation, located, pointer
 from service.settings import Settings
 from service.spool import Spool
 from service.wall.worker import _serve
@@ -142,3 +142,8 @@ def test_complaint_about_an_object_names_no_class_of_ours():
 def test_complaints_are_counted():
     problem = complaints({"inner": {"number": 1.0}, "rows": ["x"] * 1000})
     assert len(problem.document()["errors"]) == 20
+
+
+def test_places_beyond_a_number_are_not_told():
+    problem = Problem("invalid-request", "Much.", tuple(Place(f"/{n}", "is", "do") for n in range(30)))
+    assert len(problem.document()["errors"]) == len(problem.to_message()["places"]) == ERRORS_NAMED

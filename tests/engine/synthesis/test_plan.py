@@ -192,6 +192,7 @@ SAMPLINGS = {
     "free line": (1, line(STACK, [0.0], [0.777], 30_001), ("direct", "nonuniform")),
     "cell 2-D": (2, full_cell(PLANAR, (250, 300)), METHODS),
     "flat plane": (2, full_cell(PLANAR, (10, 30_000)), ("cascade", "nonuniform")),
+    "wide plane, by a matrix": (2, full_cell(PLANAR, (210, 8000)), ("cascade",)),
     "plane of twelve cells": (2, plane(PLANAR, [0, 0], [3, 0], [0, 4], (301, 401), include_end=True), METHODS),
     "free plane": (2, plane(PLANAR, [0, 0], [0.71, 0], [0, 0.83], (250, 300)), ("direct", "nonuniform")),
     "cell 3-D": (3, full_cell(CRYSTAL, (40, 44, 48)), METHODS),
