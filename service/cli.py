@@ -170,7 +170,13 @@ def _inspect(options: argparse.Namespace) -> int:
     )
     if not isinstance(request, InspectIn):
         raise TypeError("an inspection was checked as something else")
-    made = pipeline.inspect(request, settings)
+    with tqdm(unit="B", unit_scale=True, desc="reading", delay=SILENT_SECONDS, leave=False) as bar:
+
+        def report(done: int, total: int) -> None:
+            bar.total = total
+            bar.update(done - bar.n)
+
+        made = pipeline.inspect(request, settings, progress=report)
     print(orjson.dumps(made, option=orjson.OPT_INDENT_2).decode() if options.json else render_summary(made))
     return 0
 

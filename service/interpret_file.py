@@ -11,6 +11,7 @@ from engine.preparation import Prepared, Recipe, TrialModel, prepare_reflections
 from engine.readers import ReadTable, read, to_reflections
 from engine.readers.mapping import Status
 from engine.readers.table import LeftOut, Symmetry
+from engine.readers.tabular import Progress
 from engine.reflections import Reflections
 from engine.scattering import Composition, composition
 from engine.symmetry import Group, plane_group, space_group, stack_group
@@ -22,9 +23,14 @@ DIMENSIONS = {"space_group": 3, "hall": 3, "plane_group": 2, "stack_group": 1}
 
 
 def prepared(
-    given: ReflectionSetIn, lattice: Lattice | None, *, max_rows: int
+    given: ReflectionSetIn, lattice: Lattice | None, *, max_rows: int, progress: Progress | None = None
 ) -> tuple[tuple[ReadTable, tuple[LeftOut, ...]], Prepared]:
     """Read the file of a request and prepare its reflections.
+
+    Parameters
+    ----------
+    progress : callable, optional
+        Called with the bytes read and in all while delimited text is read; may raise to end it.
 
     Returns
     -------
@@ -41,7 +47,7 @@ def prepared(
     if part is None:
         raise at(("set", "reflections"), "is absent", "send the file as the part reflections of a form")
     with located("set", "reflections"):
-        table = read(part.data, name=part.name or None, block=wanted.block, mapping=wanted.mapping)
+        table = read(part.data, name=part.name or None, block=wanted.block, mapping=wanted.mapping, progress=progress)
         if table.count > max_rows:
             raise InputError((), f"the file has {table.count:,} rows, more than {max_rows:,}", "send fewer rows")
         if lattice is None and table.lattice is None:

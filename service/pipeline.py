@@ -88,7 +88,7 @@ def run(
     return Done(coefficients, field, time.perf_counter() - begin)
 
 
-def inspect(request: InspectIn, settings: Settings) -> dict[str, Any]:
+def inspect(request: InspectIn, settings: Settings, *, progress: Progress | None = None) -> dict[str, Any]:
     """Read and prepare a file of reflections, and summarise it.
 
     Raises
@@ -97,7 +97,9 @@ def inspect(request: InspectIn, settings: Settings) -> dict[str, Any]:
         The file or the preparation is at fault.
     """
     lattice = None if request.set.cell is None else interpret_set.lattice_of(request.set.cell)
-    (table, left), made = interpret_file.prepared(request.set, lattice, max_rows=settings.max_coefficients)
+    (table, left), made = interpret_file.prepared(
+        request.set, lattice, max_rows=settings.max_coefficients, progress=progress
+    )
     with located("set", "reflections"):
         return summary_document(table, left, summarize_set(made))
 
