@@ -281,6 +281,8 @@ def _notes(work: Work) -> tuple[str, ...]:
         notes.append(PHASES_DECIDE)
     if tally.zero_term == "absent" and work.treatment.field == "density":
         notes.append("The zero term was not given: values are relative to the mean density.")
+    elif work.treatment.field == "density" and not given.phase_known[~given.indices.any(axis=1)].all():
+        notes.append("The zero term has no phase and is left out: values are relative to the mean density.")
     if work.parts.unphased:
         notes.append(f"{work.parts.unphased} of {given.count} coefficients have no phase and are left out.")
     if tally.beyond_resolution:

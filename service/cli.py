@@ -23,7 +23,7 @@ from engine.synthesis import Progress
 from service import intake, pipeline
 from service.encoders.negotiation import ROW_FORMATS, formats_of
 from service.parts import Part
-from service.problems import Problem
+from service.problems import Problem, at
 from service.schemas.coefficient_set import ReflectionSetIn
 from service.schemas.requests import INSPECT, InspectIn
 from service.settings import load_settings
@@ -164,6 +164,8 @@ def _inspect(options: argparse.Namespace) -> int:
     document: dict[str, Any] = {} if options.request is None else intake.decode(options.request.read_bytes())
     # A request for a density says how its file is prepared; that is all an inspection takes from it.
     given = document.get("set", {})
+    if not isinstance(given, dict):
+        raise at(("set",), "is not an object", "give a JSON object")
     taken = {name: given[name] for name in given if name in ReflectionSetIn.model_fields}
     _, request = intake.check(
         INSPECT, {"set": taken}, None, _file(options.reflections), max_body_bytes=settings.max_body_bytes

@@ -61,11 +61,10 @@ def read(product: str | None, content_type: str, body: bytes, *, max_body_bytes:
         return check(product, request, table, reflections, max_body_bytes=max_body_bytes)
     if product == INSPECT and media_type in FILE_TYPES:
         return check(product, {"set": {}}, None, Part(media_type, body), max_body_bytes=max_body_bytes)
-    raise Problem(
-        "unsupported-media-type",
-        f"The body is {media_type[:60] or 'of no stated type'}; send {JSON}, or {MULTIPART} with the parts request "
-        f"({JSON}) and columns ({CSV} or {NPZ}).",
-    )
+    send = f"{JSON}, or {MULTIPART} with the parts request ({JSON}) and columns ({CSV} or {NPZ})"
+    if product == INSPECT:
+        send = f"the file as {', '.join(FILE_TYPES)}, or as the part reflections of {MULTIPART}"
+    raise Problem("unsupported-media-type", f"The body is {media_type[:60] or 'of no stated type'}; send {send}.")
 
 
 def decode(body: bytes) -> dict[str, Any]:

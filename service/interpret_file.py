@@ -2,24 +2,39 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+
 import numpy as np
 
 from engine.amplitudes.corrections import Correction, FilmAbsorption, Footprint, Lorentz, Polarisation
-from engine.errors import InputError
+from engine.errors import InputError, TooLargeError
 from engine.lattice import Lattice
 from engine.preparation import Prepared, Recipe, TrialModel, prepare_reflections, with_distributions
 from engine.readers import ReadTable, read, to_reflections
-from engine.readers.mapping import Status
+from engine.readers.mapping import QUANTITIES, Status
 from engine.readers.table import LeftOut, Symmetry
 from engine.readers.tabular import Progress
 from engine.reflections import Reflections
-from engine.scattering import Composition, composition
+from engine.scattering import Composition, composition, sum_of_squares
 from engine.symmetry import Group, plane_group, space_group, stack_group
 from service.problems import at, located
 from service.schemas.coefficient_set import ReflectionSetIn
-from service.schemas.preparation import CorrectionIn, ModelIn, PreparationIn, SymmetryIn
+from service.schemas.preparation import CorrectionIn, ModelIn, PreparationIn, ScaleIn, SymmetryIn
 
 DIMENSIONS = {"space_group": 3, "hall": 3, "plane_group": 2, "stack_group": 1}
+ROW_BYTES = 8 * len(QUANTITIES)
+"""Of a row that has every quantity there is."""
+OF_READING: dict[str, tuple[str, ...]] = {
+    name: (name,) for name in ("block", "mapping", "observed", "phase", "missing_sigma", "omit")
+}
+OF_THE_CHAIN: dict[str, tuple[str, ...]] = {
+    **{name: (name,) for name in ("wavelength", "corrections", "amplitudes")},
+    "content": ("scale", "formula"),
+    "factor": ("scale", "factor"),
+    **dict.fromkeys(("elements", "species", "positions"), ("model", "atoms")),
+}
+"""Members of a preparation by what the engine calls them, in either of two steps."""
 
 
 def prepared(
@@ -46,10 +61,18 @@ def prepared(
     part, wanted = given.reflections, given.preparation or PreparationIn()
     if part is None:
         raise at(("set", "reflections"), "is absent", "send the file as the part reflections of a form")
-    with located("set", "reflections"):
-        table = read(part.data, name=part.name or None, block=wanted.block, mapping=wanted.mapping, progress=progress)
+    with _of_file(OF_READING):
+        table = read(
+            part.data,
+            name=part.name or None,
+            block=wanted.block,
+            mapping=wanted.mapping,
+            progress=progress,
+            # No more is unpacked of an archive than the rows allowed can hold.
+            max_bytes=max(len(part.data), ROW_BYTES * max_rows),
+        )
         if table.count > max_rows:
-            raise InputError((), f"the file has {table.count:,} rows, more than {max_rows:,}", "send fewer rows")
+            raise TooLargeError((), f"the file has {table.count:,} rows, more than {max_rows:,}", "send fewer rows")
         if lattice is None and table.lattice is None:
             raise at(("set", "cell"), "is absent, and the file gives none", "give the lattice")
         phase = _phase_column(wanted, table)
@@ -72,24 +95,30 @@ def prepared(
         amplitudes=wanted.amplitudes,
         reject_outliers=wanted.reject_outliers,
         scale=wanted.scale.kind,
-        content=None if wanted.scale.formula is None else _content(wanted.scale.formula),
+        content=None if wanted.scale.formula is None else _content(wanted.scale, wanted.scale.formula),
         units=wanted.scale.units,
         probe=wanted.scale.probe,
         factor=wanted.scale.factor,
         model=None if wanted.model is None else _model(wanted.model, reflections.lattice.dimension),
     )
-    renamed: dict[str, tuple[str | int, ...]] = {
-        "content": ("preparation", "scale", "formula"),
-        "factor": ("preparation", "scale", "factor"),
-        "wavelength": ("preparation", "wavelength"),
-        "corrections": ("preparation", "corrections"),
-        "amplitudes": ("preparation", "amplitudes"),
-        "elements": ("preparation", "model", "atoms"),
-        "species": ("preparation", "model", "atoms"),
-        "positions": ("preparation", "model", "atoms"),
-    }
-    with located("set", renamed=renamed):
+    with _of_file(OF_THE_CHAIN):
         return (table, left), prepare_reflections(reflections, recipe)
+
+
+@contextmanager
+def _of_file(members: Mapping[str, tuple[str, ...]]) -> Iterator[None]:
+    """Point a fault to the member of the preparation that asks for what cannot be had, any other to the file."""
+    try:
+        yield
+    except InputError as fault:
+        name = str(fault.path[0]) if fault.path else ""
+        if name not in members:
+            with located("set", "reflections"):
+                raise
+        # Rows are the file's, and its words name them; but those of positions are the model's atoms.
+        within = {"corrections": fault.path[1:], "positions": fault.rows[:1]}.get(name, ())
+        with located("set", "preparation"):
+            raise type(fault)((*members[name], *within), fault.reason, fault.cure) from fault
 
 
 def _phase_column(wanted: PreparationIn, table: ReadTable) -> str | None:
@@ -215,6 +244,11 @@ def _correction(one: CorrectionIn) -> Correction:
     return Polarisation(degree=one.degree, monochromator_2theta_deg=one.monochromator_2theta_deg, perfect=one.perfect)
 
 
-def _content(formula: str) -> Composition:
+def _content(scale: ScaleIn, formula: str) -> Composition:
     with located("set", "preparation", "scale"):
-        return composition(formula)
+        content = composition(formula)
+        try:
+            sum_of_squares(content, np.zeros(1), probe=scale.probe)
+        except InputError as fault:
+            raise InputError("formula", fault.reason, fault.cure) from fault
+    return content

@@ -8,6 +8,7 @@ import numpy as np
 
 from engine.assembly import INDEX_COLUMNS, Columns, assemble
 from engine.coefficients import CoefficientSet
+from engine.errors import InputError
 from engine.lattice import Lattice
 from engine.phases import coefficient_set as coefficients_of
 from engine.reflections import Reflections
@@ -158,9 +159,15 @@ def _expanded(made: CoefficientSet, given: CoefficientSetIn, lattice: Lattice, g
         row=np.arange(len(indices)),
         scale="arbitrary",
     )
-    renamed: dict[str, tuple[str | int, ...]] = {"phase": ("phase_deg",), "indices": (names[0],)}
+    renamed: dict[str, tuple[str | int, ...]] = {
+        "phase": ("phase_deg",),
+        "indices": (names[0],),
+        "lattice": ("cell",),
+    }
     with located("set", renamed=renamed):
         full = expand(reflections, group, friedel=given.density == "real")
+        if not full.reflections.count:
+            raise InputError("indices", f"hold no reflection that {group.name} allows", "check the group")
         zero = _mean(given)
         mean = None if zero is None else zero * scale
         expanded = coefficients_of(full.reflections, unit=given.unit, mean=mean, density=given.density)

@@ -11,6 +11,7 @@ from pydantic.json_schema import models_json_schema
 
 from service.encoders.negotiation import MEDIA_TYPES, formats_of
 from service.intake import CSV, FILE_TYPES, JSON, MULTIPART, NPZ
+from service.parts import Part
 from service.problems import MEDIA_TYPE as PROBLEM
 from service.problems import TITLES
 from service.schemas.answers import Answer, ProblemDocument
@@ -165,6 +166,8 @@ def install(app: FastAPI) -> None:
                 (ProblemDocument, "serialization"),
             ]
             _, schemas = models_json_schema(models, ref_template=_SCHEMAS + "{model}")
+            # A file is a part of a form, never JSON.
+            schemas["$defs"].pop(Part.__name__, None)
             made.setdefault("components", {}).setdefault("schemas", {}).update(schemas["$defs"])
             app.openapi_schema = made
         return app.openapi_schema

@@ -68,7 +68,12 @@ def run(
         )
     treatment = interpret.treatment(request, coefficients.lattice)
     demand = Demand(precision=request.precision, tolerance=request.tolerance, threads=threads)
-    with located(renamed={"phase_deg": ("set", "phase_deg"), "samples": (_place_of_size(request),)}):
+    renamed: dict[str, tuple[str | int, ...]] = {
+        "phase_deg": ("set", "phase_deg"),
+        "amplitude": ("set",),
+        "samples": (_place_of_size(request),),
+    }
+    with located(renamed=renamed):
         work = prepare(coefficients, sampling, treatment, demand, max_bytes=settings.max_memory_bytes)
     numbers = math.prod(work.shape) * (2 if work.dtype.kind == "c" else 1)
     if form in ("json", "csv") and numbers > settings.max_json_values:

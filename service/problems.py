@@ -141,6 +141,9 @@ def from_validation(error: ValidationError) -> Problem:
     for complaint in error.errors(include_url=False, include_input=False)[:ERRORS_NAMED]:
         context = complaint.get("ctx", {})
         parts = [*complaint["loc"], *([context["row"]] if "row" in context else [])]
+        if complaint["type"] in ("int_type", "string_type") and parts[-1:] in (["int"], ["str"]):
+            # A member of either type: each is tried, complains, and adds its own name.
+            parts.pop()
         cure = str(context.get("cure", _CURES.get(complaint["type"], "see the request's schema at /docs")))
         # The stock message for an object names our own class.
         reason = "is not an object" if complaint["type"] == "model_type" else complaint["msg"].lower().rstrip(".")

@@ -96,7 +96,7 @@ class Prepared:
     unique : Reflections
         Amplitudes, one of each orbit, scaled; of a model's map, its coefficients.
     expansion : Expansion
-    zero_term : float or None
+    zero_term : float, complex or None
         F(000): of the row of all indices zero, or of the content; None where neither is known.
     applied : tuple of str
         Every step in words.
@@ -112,7 +112,7 @@ class Prepared:
     model: ModelAgreement | None
     unique: Reflections
     expansion: Expansion
-    zero_term: float | None
+    zero_term: float | complex | None
     applied: tuple[str, ...]
     notes: tuple[str, ...]
     recipe: Recipe
@@ -141,12 +141,13 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
     ------
     InputError
         What the steps refuse, a correction without wavelength, a scale without what it needs, or
-        corrections and scales that do not fit amplitudes.
+        corrections and scales that do not fit amplitudes; a zero term given with different values, or
+        of a real density with a phase other than 0 and 180°.
     """
     _check(reflections, recipe)
     applied: list[str] = []
     notes: list[str] = []
-    given, zero = _without_zero(reflections, notes)
+    given, zero = _without_zero(reflections, recipe, notes)
     corrected = given
     if recipe.corrections and recipe.wavelength is not None:
         step = correct(given, recipe.wavelength, recipe.corrections)
@@ -164,9 +165,10 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
     applied.append(_merging_words(merged, recipe))
     if merged.absences.count:
         notes.append(f"{merged.absences.count} rows are systematically absent in {recipe.group.name} and left out.")
-    if merged.outliers.row.size:
-        fate = "left out" if recipe.reject_outliers else "kept"
-        notes.append(f"{merged.outliers.row.size} measurements lie far from their equivalents and are {fate}.")
+    # Of two that differ none is rejected, even where rejection is asked for.
+    for chosen, fate in ((merged.outliers.rejected, "left out"), (~merged.outliers.rejected, "kept")):
+        if chosen.any():
+            notes.append(f"{np.count_nonzero(chosen)} measurements lie far from their equivalents and are {fate}.")
     kinds = classify(merged.reflections.indices, recipe.group)
     plot, factor = _scale(merged.reflections, kinds, recipe, applied, notes)
     unique, converted = _amplitudes(merged.reflections, kinds, recipe, applied, notes)
@@ -219,7 +221,9 @@ def _check(reflections: Reflections, recipe: Recipe) -> None:
         raise InputError("factor", "has no meaning for this scale", "leave it out")
 
 
-def _without_zero(reflections: Reflections, notes: list[str]) -> tuple[Reflections, float | None]:
+def _without_zero(
+    reflections: Reflections, recipe: Recipe, notes: list[str]
+) -> tuple[Reflections, float | complex | None]:
     """Take out the row of all indices zero: it is neither measured like others nor merged with any."""
     at_zero = np.asarray(~reflections.indices.any(axis=1))
     rows = np.flatnonzero(at_zero)
@@ -231,15 +235,24 @@ def _without_zero(reflections: Reflections, notes: list[str]) -> tuple[Reflectio
     if reflections.quantity == "intensity":
         notes.append(f"{rows.size} rows of the zero term hold an intensity, which has no sign, and are left out.")
         return rest, None
-    values = reflections.observed[rows]
+    values = reflections.observed[rows].astype(np.complex128)
     if reflections.phase is not None:
-        phase = reflections.phase[rows]
-        values = values * np.where(np.isnan(phase), 1.0, np.cos(phase))
-    if np.ptp(values) > 1e-6 * np.abs(values).max():
+        values *= np.exp(1j * np.nan_to_num(reflections.phase[rows]))
+    rounding = 1e-6 * np.abs(values).max()
+    if np.abs(values - values[0]).max() > rounding:
         raise InputError.for_rows(
             "indices", reflections.row[rows], "are zero with different values", "give F(000) once"
         )
-    return rest, float(values[0])
+    if not recipe.friedel:
+        return rest, complex(values[0])
+    if abs(values[0].imag) > rounding:
+        raise InputError.for_rows(
+            "phase",
+            reflections.row[rows],
+            "is neither 0 nor 180° where the zero term of a real density is real",
+            "give it one of the two, or ask for a complex density",
+        )
+    return rest, float(values[0].real)
 
 
 def _merging_words(merged: Merged, recipe: Recipe) -> str:
@@ -296,7 +309,9 @@ def _amplitudes(
     return made.reflections, made
 
 
-def _zero_term(zero: float | None, unique: Reflections, recipe: Recipe, applied: list[str]) -> float | None:
+def _zero_term(
+    zero: float | complex | None, unique: Reflections, recipe: Recipe, applied: list[str]
+) -> float | complex | None:
     """F(000) of its row, or of the content where the scale is absolute."""
     if zero is not None:
         applied.append(f"zero term {zero:.6g} of its own row")

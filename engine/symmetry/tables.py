@@ -15,6 +15,8 @@ from engine.symmetry.group import Group
 Notation = Literal["any", "hermann_mauguin", "hall"]
 
 _NAMES_OFFERED = 3
+_SHOWN = 40
+"""Characters of an unknown symbol that a message repeats."""
 _MONOCLINIC = range(3, 16)
 
 _BEFORE_E_GLIDES = {39: "A b m 2", 41: "A b a 2", 64: "C m c a", 67: "C m m a", 68: "C c c a"}
@@ -81,14 +83,14 @@ def space_group(symbol: int | str, *, notation: Notation = "any") -> Group:
         offered = ", ".join(list(dict.fromkeys(spelt[key] for key in near))[:_NAMES_OFFERED])
         raise InputError(
             "symbol",
-            f"'{symbol}' is no known space-group symbol" + (f"; the nearest are {offered}" if offered else ""),
+            f"'{symbol[:_SHOWN]}' is no known space-group symbol" + (f"; the nearest are {offered}" if offered else ""),
             "give a number 1 to 230, a Hermann–Mauguin symbol or a Hall symbol",
         )
     if len(readings) > 1:
         raise InputError(
             "symbol",
             f"'{symbol}' names different settings as a Hermann–Mauguin and as a Hall symbol",
-            'say which is meant with notation "hermann_mauguin" or "hall"',
+            'write it in full, P 1 2 1 or P 1 1 2, or say which is meant with notation "hermann_mauguin" or "hall"',
         )
     return space_group_setting(readings.pop())
 
@@ -124,7 +126,7 @@ def plane_group(symbol: int | str) -> Group:
     number = _position(symbol, names)
     if number is None:
         listed = ", ".join(name[0] for name in names)
-        raise InputError("symbol", f"'{symbol}' is no plane group", f"give 1 to 17 or one of {listed}")
+        raise InputError("symbol", f"'{str(symbol)[:_SHOWN]}' is no plane group", f"give 1 to 17 or one of {listed}")
     aliases, generators = _PLANE_GROUPS[number - 1]
     return Group.from_operations(generators, 2, name=aliases[0], number=number)
 

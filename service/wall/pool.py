@@ -131,6 +131,8 @@ class _Worker:
             process = subprocess.Popen(  # noqa: S603 - our own module
                 [sys.executable, "-m", "service.wall.worker", str(theirs.fileno())],
                 stdin=subprocess.PIPE,
+                # A library that prints what it cannot read would mix clients' text into our output.
+                stdout=subprocess.DEVNULL,
                 pass_fds=[theirs.fileno()],
                 env={**os.environ, **limits, "PYTHONPATH": os.pathsep.join(filter(None, sys.path))},
             )

@@ -262,6 +262,9 @@ def test_notes_say_what_a_reader_must_know():
     assert "relative to the mean" not in notes_of(absent, Treatment(field="gradient"))
     missing = Columns(indices=(orders,), amplitude=[1.0] * 4, phase_deg=[0.0, np.nan, 60.0, np.nan])
     assert "2 of 4 coefficients have no phase" in notes_of(missing)
+    assert "zero term" not in notes_of(missing)
+    unphased = Columns(indices=(orders,), amplitude=[1.0] * 4, phase_deg=[np.nan, 30.0, 60.0, 90.0])
+    assert "zero term has no phase and is left out: values are relative to the mean" in notes_of(unphased)
     autocorrelation = notes_of(missing, Treatment(field="autocorrelation"))
     assert "no phase" not in autocorrelation
     assert PHASES_DECIDE not in autocorrelation

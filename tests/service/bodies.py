@@ -6,6 +6,7 @@ import copy
 import io
 import json
 from collections.abc import Mapping
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -200,3 +201,30 @@ def film_profile(positions: np.ndarray) -> np.ndarray:
     """The film's density in closed form: centric orders of a stack are cosines."""
     strengths = np.array(FILM["amplitude"]) * np.cos(np.deg2rad(FILM["phase_deg"])) / PERIOD
     return 2 * strengths @ np.cos(2 * np.pi * np.outer(FILM["l"], positions))
+
+
+SAMPLES = Path(__file__).parents[2] / "sample_requests"
+CRYSTAL_FILE = (SAMPLES / "crystal_OR4.cif").read_bytes()
+"""Raw intensities of an invented orthorhombic crystal, with equivalents, absences and the phases of its model."""
+SCALED = {"scale": {"kind": "wilson", "formula": "SClONC2", "units": 4}}
+SCAN_FILE = (SAMPLES / "film_scan.csv").read_bytes()
+ORTHORHOMBIC = {"a": 10.0, "b": 12.0, "c": 14.0, "alpha": 90, "beta": 90, "gamma": 90}
+AMPLITUDES_FILE = (
+    b"h,k,l,amplitude,amplitude_sigma,phase_deg\n1,1,0,10,0.1,30\n2,0,1,20,0.2,180\n0,2,3,5,0.1,\n-1,2,2,7,0.3,-77\n"
+)
+"""Four rows without symmetry, one of them without a phase."""
+AMPLITUDES_SET: dict[str, Any] = {
+    "cell": ORTHORHOMBIC,
+    "values": "structure_factor",
+    "h": [1, 2, 0, -1],
+    "k": [1, 0, 2, 2],
+    "l": [0, 1, 3, 2],
+    "amplitude": [10, 20, 5, 7],
+    "sigma": [0.1, 0.2, 0.1, 0.3],
+    "phase_deg": [30, 180, None, -77],
+}
+
+
+def reflections_form(request: Mapping[str, Any], file: bytes, media_type: str = "text/csv") -> bytes:
+    """A request and a laboratory's file."""
+    return form(("request", "application/json", json.dumps(request).encode()), ("reflections", media_type, file))

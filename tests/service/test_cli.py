@@ -102,7 +102,7 @@ def test_columns_from_a_table(run, tmp_path, ending, packed):
         (NAMED["profile"], ["--columns", "table.txt"], "--columns: table.txt does not end in .csv or .npz"),
         (NAMED["profile"], ["--columns", "table.csv"], "No such file or directory"),
         (NAMED["profile"], ["--threads", "0"], "--threads: give at least 1"),
-        (bodies.PROFILE, [], "/product: names no product. Give one of profile, slice, grid, points."),
+        (bodies.PROFILE, [], "/product: names no product. Give one of profile, slice, grid, points, inspect."),
         ({**NAMED["profile"], "product": ["profile"]}, [], "/product: names no product"),
         (b"{", [], "The body is not JSON"),
         ({**NAMED["profile"], "samples": 1}, [], "/samples: input should be greater than or equal to 2"),
@@ -147,8 +147,9 @@ def test_fault_of_a_library_is_told_without_a_trace(run, tmp_path, monkeypatch):
 def test_failed_run_leaves_an_older_file_alone(run, tmp_path):
     out = tmp_path / "out.npy"
     out.write_bytes(b"older")
-    overflowing = bodies.changed(NAMED["profile"], "set/amplitude", [1e200] * 4)
-    code, _, errors = run({**overflowing, "field": "autocorrelation"}, "--out", out)
+    # Found out only once the values are there.
+    overflowing = bodies.changed(NAMED["profile"], "set/amplitude", [1e50] * 4)
+    code, _, errors = run({**overflowing, "precision": "single"}, "--out", out)
     assert code == 2
     assert "overflow" in errors
     assert out.read_bytes() == b"older"

@@ -18,10 +18,6 @@ def request(product, body):
     return check(product, body, None, max_body_bytes=2**20)[1]
 
 
-def coefficients(body, product="profile", limit=100):
-    return interpret.coefficient_set(request(product, body), max_coefficients=limit)
-
-
 def samples(product, body, lattice=LATTICE):
     return interpret.samples(request(product, body), lattice)
 
@@ -31,97 +27,6 @@ def place(function, *arguments, **options):
         function(*arguments, **options)
     assert caught.value.kind == "invalid-request"
     return caught.value.places[0].pointer
-
-
-def test_sign_convention_is_that_of_the_engine():
-    """Structure factors stand at −h, scaled by the volume; coefficients as they are."""
-    given = {**bodies.FILM, "density": "complex", "l": [1, -2, 3, 4], "phase_deg": [90, 180, 0, 0]}
-    made = coefficients({**bodies.PROFILE, "set": given})
-    found = dict(zip(made.indices[:, 0].tolist(), made.values.tolist(), strict=True))
-    assert found[-1] == pytest.approx(12.1j / bodies.PERIOD)
-    assert found[2] == pytest.approx(-41.3 / bodies.PERIOD)
-    made = coefficients({**bodies.PROFILE, "set": {**given, "values": "density_coefficient"}})
-    found = dict(zip(made.indices[:, 0].tolist(), made.values.tolist(), strict=True))
-    assert found[1] == pytest.approx(12.1j)
-
-
-def test_every_column_arrives():
-    rows = len(bodies.CRYSTAL["h"])
-    given = {
-        **bodies.CRYSTAL,
-        "sigma": np.linspace(0.1, 1, rows).tolist(),
-        "phase_sigma_deg": np.linspace(1, 40, rows).tolist(),
-        "merit": np.linspace(0, 1, rows).tolist(),
-    }
-    made, expected = coefficients({**bodies.GRID, "set": given}, "grid"), bodies.coefficients(given)
-    for name in ("indices", "values", "phase_known", "sigma", "phase_sigma", "merit"):
-        np.testing.assert_array_equal(getattr(made, name), getattr(expected, name))
-    assert (made.real, made.unit, made.tally) == (expected.real, "e/Å³", expected.tally)
-    assert made.sigma is not None
-    assert made.phase_sigma is not None
-
-
-@pytest.mark.parametrize(
-    ("cell", "given", "vectors"),
-    [
-        ({"period": 17.4}, bodies.FILM, [[17.4]]),
-        ({"vectors": [[17.4]]}, bodies.FILM, [[17.4]]),
-        ({"a": 31.0, "b": 27.0, "gamma": 90}, bodies.SHEET, [[31, 0], [0, 27]]),
-        ({"vectors": [[31, 0], [1, 27]]}, bodies.SHEET, [[31, 0], [1, 27]]),
-        (
-            dict(zip(("a", "b", "c", "alpha", "beta", "gamma"), (3, 4, 5, 90, 90, 90), strict=True)),
-            bodies.CRYSTAL,
-            np.diag([3, 4, 5]),
-        ),
-        ({"vectors": [[3, 0, 0], [0, 4, 0], [1, 0, 5]]}, bodies.CRYSTAL, [[3, 0, 0], [0, 4, 0], [1, 0, 5]]),
-        ({"period": 17.4, "vectors": None, "a": None}, bodies.FILM, [[17.4]]),
-    ],
-)
-def test_cells(cell, given, vectors):
-    made = coefficients({**bodies.PROFILE, "set": {**given, "cell": cell}})
-    np.testing.assert_allclose(made.lattice.vectors, vectors, atol=1e-12)
-
-
-@pytest.mark.parametrize(
-    "cell",
-    [
-        {},
-        {"a": None},
-        {"a": 3.0},
-        {"a": 3.0, "b": 4.0},
-        {"a": 3.0, "b": 4.0, "c": 5.0, "gamma": 90},
-        {"period": 3.0, "vectors": [[3.0]]},
-        {"period": 3.0, "gamma": 90},
-    ],
-)
-def test_cells_that_say_too_little_or_too_much(cell):
-    assert place(coefficients, changed(bodies.PROFILE, "set/cell", cell)) == "/set/cell"
-
-
-@pytest.mark.parametrize(
-    ("given", "pointer"),
-    [
-        ({**bodies.FILM, "h": [0, 0, 0, 0]}, "/set/h"),
-        ({**bodies.SHEET, "l": bodies.SHEET["h"]}, "/set/l"),
-        ({**bodies.CRYSTAL, "cell": bodies.PLANAR}, "/set/l"),
-        ({**bodies.SHEET, "cell": bodies.TRICLINIC}, "/set/l"),
-    ],
-)
-def test_index_columns_must_be_those_of_the_cell(given, pointer):
-    assert place(coefficients, {**bodies.PROFILE, "set": given}) == pointer
-
-
-def test_mean_of_two_parts():
-    assert coefficients({**bodies.POINTS, "set": bodies.ABSORBING}, "points").series().zero_term == pytest.approx(
-        (3 - 0.25j) / LATTICE.volume
-    )
-    assert place(coefficients, changed(bodies.PROFILE, "set/mean_imag", 1.0)) == "/set/mean"
-
-
-def test_resolution_cuts_the_set():
-    made = coefficients({**bodies.PROFILE, "resolution": {"d_min": 5.8, "d_max": 8.7}})
-    assert sorted(abs(made.indices[:, 0]).tolist()) == [2, 3]
-    assert made.tally.beyond_resolution == 2
 
 
 def test_self_term_is_in_the_square_of_what_the_columns_carry():

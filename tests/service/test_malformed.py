@@ -108,7 +108,7 @@ UNREADABLE = [
 ]
 MEMBERS = [
     Row("nothing in it", "profile", {}, 422, "/set"),
-    Row("deep but readable", "profile", '{"set": ' * 900 + "1" + "}" * 900, 422, "/set/cell"),
+    Row("deep but readable", "profile", '{"set": ' * 900 + "1" + "}" * 900, 422, "/set/values"),
     Row("unknown key", "profile", merged(PROFILE, widow=1), 422, "/widow"),
     Row("unknown key of any length", "profile", merged(PROFILE, **{LONG: 1}), 422, "/" + LONG[:80]),
     Row("unknown key in the set", "profile", film(widow=1), 422, "/set/widow"),

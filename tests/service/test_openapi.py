@@ -24,7 +24,7 @@ each_operation = pytest.mark.parametrize("operation", OPERATIONS.values(), ids=[
 STATEMENTS = {
     "$ref", "type", "properties", "required", "additionalProperties", "items", "minItems", "maxItems", "enum", "const",
     "anyOf", "allOf", "oneOf", "minimum", "maximum", "exclusiveMinimum", "exclusiveMaximum", "minLength", "maxLength",
-    "title", "description", "default", "format", "examples",
+    "title", "description", "default", "format", "examples", "maxProperties",
 }  # fmt: skip
 TYPES = {"object", "array", "string", "number", "integer", "boolean", "null"}
 
@@ -72,7 +72,12 @@ def test_frame():
     assert DOCUMENT["info"]["version"]
     assert "phases" in DOCUMENT["info"]["description"]
     assert set(DOCUMENT) <= {"openapi", "info", "paths", "components", "tags", "servers"}
-    assert {path for _, path in OPERATIONS} == {*(f"/v1/{name}" for name in PRODUCTS), "/health/live", "/health/ready"}
+    assert {path for _, path in OPERATIONS} == {
+        *(f"/v1/{name}" for name in PRODUCTS),
+        "/v1/sets/inspect",
+        "/health/live",
+        "/health/ready",
+    }
 
 
 def test_every_reference_resolves():

@@ -36,8 +36,12 @@ def test_good_sets(given):
         {"unit": None},
         {"mean": "0"},
         {"mean": [0]},
-        {"cell": None},
         {"cell": [1]},
+        {"symmetry": "P 1"},
+        {"symmetry": {"number": 2}},
+        {"preparation": []},
+        {"preparation": {"widow": 1}},
+        {"reflections": "h,k,l"},
         {"wavelength": 1.54},
     ],
 )
