@@ -107,6 +107,8 @@ def summands(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
     as_choice(treatment.field, FIELD_KINDS, "field")
     needs_phases = treatment.field != "autocorrelation"
     used = coefficients.phased() if needs_phases else coefficients
+    if coefficients.count == 0:
+        raise InputError("resolution", "leaves no coefficient", "widen the limits")
     if used.count == 0:
         raise InputError("phase_deg", "no coefficient has a phase", "give phases, or ask for the autocorrelation")
     lattice, indices = used.lattice, used.indices

@@ -24,7 +24,7 @@ from service import intake, pipeline
 from service.encoders.negotiation import ROW_FORMATS, formats_of
 from service.parts import Part
 from service.problems import Problem, at
-from service.schemas.coefficient_set import ReflectionSetIn
+from service.schemas.coefficient_set import CoefficientSetIn, ReflectionSetIn
 from service.schemas.requests import INSPECT, InspectIn
 from service.settings import load_settings
 from service.spool import Spool
@@ -162,11 +162,12 @@ def _file(path: Path | None) -> Part | None:
 def _inspect(options: argparse.Namespace) -> int:
     settings = load_settings()
     document: dict[str, Any] = {} if options.request is None else intake.decode(options.request.read_bytes())
-    # A request for a density says how its file is prepared; that is all an inspection takes from it.
     given = document.get("set", {})
     if not isinstance(given, dict):
         raise at(("set",), "is not an object", "give a JSON object")
-    taken = {name: given[name] for name in given if name in ReflectionSetIn.model_fields}
+    # A request for a density says how its file is prepared; what else it says of its set, an inspection does not ask.
+    others = set(CoefficientSetIn.model_fields) - set(ReflectionSetIn.model_fields)
+    taken = {name: value for name, value in given.items() if name not in others}
     _, request = intake.check(
         INSPECT, {"set": taken}, None, _file(options.reflections), max_body_bytes=settings.max_body_bytes
     )

@@ -58,9 +58,12 @@ _CRYSTAL = {
 }
 _PREPARATION = {
     "set": {
+        "cell": {"a": 5.1, "b": 6.2, "c": 7.3, "alpha": 82, "beta": 97, "gamma": 105},
         "symmetry": {"space_group": "P-1"},
-        "preparation": {"scale": {"kind": "wilson", "formula": "SiO2", "units": 3}},
-        "unit": "e/Å³",
+        "preparation": {
+            "wavelength": 0.7107,
+            "corrections": [{"kind": "lorentz", "geometry": "rotation"}, {"kind": "polarisation"}],
+        },
     }
 }
 EXAMPLES: dict[str, dict[str, Any]] = {
@@ -107,7 +110,7 @@ def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
         form = {"type": "object", "required": ["reflections"], "properties": {**properties, "request": schema}}
         example = {
             "request": _PREPARATION,
-            "reflections": "h,k,l,intensity,intensity_sigma\n0,0,1,812.4,6.1\n0,1,0,77.0,2.9\n",
+            "reflections": "h,k,l,intensity,intensity_sigma\n0,0,1,812.4,6.1\n0,0,-1,820.3,6.2\n0,1,0,77.0,2.9\n",
         }
         whole = {media_type: {"schema": binary} for media_type in FILE_TYPES}
         examples = {"small": {"summary": "A table and how to prepare it", "value": example}}

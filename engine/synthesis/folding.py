@@ -60,9 +60,14 @@ def find_fold(grid: AffineGrid) -> Fold | None:
         exact = all(abs(float(fraction) - x) <= 4 * math.ulp(x) for fraction, x in zip(fractions, step, strict=True))
         if not exact or length > LARGEST:
             return None
-        translations.append([int(fraction * length) for fraction in fractions])
+        translations.append([_reduced(int(fraction * length), length) for fraction in fractions])
         lengths.append(length)
     return Fold(np.array(translations, dtype=np.int64), tuple(lengths))
+
+
+def _reduced(translation: int, length: int) -> int:
+    """A translation counts modulo the length; a long one times an index would leave the integers' range."""
+    return translation if abs(translation) <= length else translation % length
 
 
 def fold(series: Series, grid: AffineGrid, found: Fold) -> Modes:

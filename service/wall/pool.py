@@ -10,6 +10,7 @@ import subprocess
 import sys
 import time
 from concurrent.futures import ThreadPoolExecutor
+from contextlib import suppress
 from dataclasses import dataclass
 
 from service.problems import Problem
@@ -137,11 +138,12 @@ class _Worker:
                 env={**os.environ, **limits, "PYTHONPATH": os.pathsep.join(filter(None, sys.path))},
             )
         self._process, self._channel = process, ours
-        if process.stdin is not None:
-            process.stdin.write(self._settings.model_dump_json().encode())
-            process.stdin.close()
         ours.settimeout(START_SECONDS)
         try:
+            if process.stdin is not None:
+                # One that has ended before it read its settings is found out by the channel.
+                with suppress(BrokenPipeError), process.stdin:
+                    process.stdin.write(self._settings.model_dump_json().encode())
             wire.receive(ours)
         except BaseException:
             self.end()

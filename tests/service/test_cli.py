@@ -16,6 +16,7 @@ from engine.errors import TransformError
 from service import cli, pipeline
 from service.cli import main
 from tests.service import bodies
+from tests.service.raw_files import AMPLITUDES, CELL, CIF, GRID, TABLE, WITHOUT_CELL, sent, with_set
 
 NAMED = {product: {"product": product, **body} for product, body in bodies.GOOD.items()}
 
@@ -90,6 +91,101 @@ def test_columns_from_a_table(run, tmp_path, ending, packed):
     code, _, errors = run({"product": "profile", **bodies.bare(bodies.PROFILE)}, "--columns", table, "--out", out)
     assert (code, errors) == (0, "")
     np.testing.assert_allclose(np.load(out), bodies.film_profile(np.linspace(0, 1, 17)), rtol=0, atol=1e-12)
+
+
+@pytest.fixture
+def inspected(tmp_path, capsys):
+    """Inspect a file; gives the exit code, standard output and error."""
+
+    def go(file, request=None, *options, name="file.cif"):
+        path = tmp_path / name
+        path.write_text(file)
+        if request is not None:
+            (tmp_path / "request.json").write_text(json.dumps(request))
+            options = (*options, "--request", str(tmp_path / "request.json"))
+        code = main(["inspect", str(path), *options])
+        told = capsys.readouterr()
+        return code, told.out, told.err
+
+    return go
+
+
+@pytest.mark.parametrize(
+    ("file", "members"),
+    [(CIF, {}), (TABLE, {"cell": CELL, "symmetry": {"space_group": 19}}), (AMPLITUDES, {"cell": CELL})],
+)
+def test_inspection_as_json_is_what_the_service_answers(client, inspected, file, members):
+    code, told, errors = inspected(file, {"set": members}, "--json", name="file")
+    assert (code, errors) == (0, "")
+    body = sent({"set": members}, file)
+    assert (
+        json.loads(told) == client.post("/v1/sets/inspect", content=body, headers={"Content-Type": bodies.FORM}).json()
+    )
+
+
+def test_inspection_is_told_in_words(inspected):
+    code, told, errors = inspected(CIF)
+    assert (code, errors) == (0, "")
+    assert "4 reflections, 4 unique in P 21 21 21" in told
+    assert not told.startswith("{")
+
+
+def test_inspection_takes_of_a_density_how_its_file_is_prepared(inspected):
+    asked = with_set({"product": "grid", **GRID}, preparation={"amplitudes": "root_exclude"}, unit="e/Å³", mean=1.0)
+    code, told, errors = inspected(CIF, asked, "--json")
+    assert (code, errors) == (0, "")
+    assert "1 reflections without a root are left out." in json.loads(told)["warnings"]
+
+
+@pytest.mark.parametrize(
+    ("file", "request_body", "message"),
+    [
+        (WITHOUT_CELL, None, "/set/cell: is absent, and the file gives none."),
+        (CIF.replace("21'", "21"), None, "/set/reflections/file.cif/line 8: a quotation mark is not closed"),
+        (CIF, {"set": {"preparations": {}}}, "/set/preparations: extra inputs are not permitted."),
+        (CIF, {"set": [1]}, "/set: is not an object."),
+        (CIF, {"set": None}, "/set: is not an object."),
+        (CIF, [1], "not an object"),
+    ],
+)
+def test_inspections_that_fail_are_readable(inspected, file, request_body, message):
+    code, told, errors = inspected(file, request_body)
+    assert (code, told) == (2, "")
+    assert errors.startswith("densityloom: ")
+    assert message in errors
+    assert "Traceback" not in errors
+
+
+def test_inspection_of_a_file_that_is_not_there(tmp_path, capsys):
+    assert main(["inspect", str(tmp_path / "none.cif")]) == 2
+    assert "none.cif" in capsys.readouterr().err
+
+
+def test_progress_of_a_long_reading_is_shown(inspected, monkeypatch):
+    table = "h,k,l,amplitude\n" + "".join(f"{h},{k},{l},1\n" for h in range(40) for k in range(40) for l in range(30))
+    monkeypatch.setattr(cli, "SILENT_SECONDS", 0.0)
+    code, told, errors = inspected(table, {"set": {"cell": {**CELL, "a": 40.0}}}, name="long.csv")
+    assert code == 0
+    assert "reading" in errors
+    assert "47999 reflections" in told
+
+
+def test_density_of_a_file(client, run, tmp_path):
+    file, out = tmp_path / "crystal.cif", tmp_path / "out.npy"
+    file.write_text(CIF)
+    asked = {"product": "grid", **with_set(GRID, preparation={"amplitudes": "root_exclude"})}
+    code, _, errors = run(asked, "--reflections", file, "--out", out)
+    assert (code, errors) == (0, "")
+    headers = {"Content-Type": bodies.FORM, "Accept": "application/x-npy"}
+    assert out.read_bytes() == client.post("/v1/grid", content=sent(asked, CIF), headers=headers).content
+
+
+def test_run_of_an_inspection_names_the_right_command(run, tmp_path):
+    file = tmp_path / "crystal.cif"
+    file.write_text(CIF)
+    code, told, errors = run({"product": "inspect", "set": {}}, "--reflections", file)
+    assert (code, told) == (2, "")
+    assert "use densityloom inspect" in errors
 
 
 @pytest.mark.parametrize(
@@ -267,3 +363,69 @@ def test_serve_on_a_taken_port_ends_with_a_message(service):
     done = subprocess.run(command, capture_output=True, text=True, timeout=60, check=False)
     assert done.returncode != 0
     assert "address already in use" in done.stderr
+
+
+@pytest.fixture
+def inspect(tmp_path, capsys):
+    """Inspect the sample crystal's file; gives the exit code, standard output and error."""
+
+    def go(request, *options):
+        file = tmp_path / "crystal.cif"
+        file.write_bytes(bodies.CRYSTAL_FILE)
+        arguments = ["inspect", str(file), *options]
+        if request is not None:
+            path = tmp_path / "request.json"
+            path.write_text(json.dumps(request))
+            arguments += ["--request", str(path)]
+        code = main(arguments)
+        told = capsys.readouterr()
+        return code, told.out, told.err
+
+    return go
+
+
+def test_inspection_is_that_of_the_service(client, inspect):
+    asked = {"set": {"preparation": bodies.SCALED}}
+    code, told, errors = inspect(asked, "--json")
+    assert (code, errors) == (0, "")
+    sent = bodies.reflections_form(asked, bodies.CRYSTAL_FILE)
+    answer = client.post("/v1/sets/inspect", content=sent, headers={"Content-Type": bodies.FORM}).json()
+    assert json.loads(told) == answer
+
+
+def test_inspection_is_shown(inspect):
+    code, told, errors = inspect(None)
+    assert (code, errors) == (0, "")
+    assert "unique in P 21 21 21" in told
+
+
+def test_inspection_takes_a_request_for_a_density(inspect):
+    """Of it, only what concerns the file."""
+    code, told, _ = inspect({"product": "grid", "set": {"values": "structure_factor", "preparation": bodies.SCALED}})
+    assert code == 0
+    assert "Wilson's plot: B" in told
+
+
+@pytest.mark.parametrize(
+    ("request_body", "message"),
+    [
+        ({"set": [1]}, "/set: is not an object"),
+        ({"set": 3}, "/set: is not an object"),
+        ({"set": {"symmetry": {"space_group": 0}}}, "/set/symmetry/space_group"),
+    ],
+)
+def test_inspections_that_fail(inspect, request_body, message):
+    code, told, errors = inspect(request_body)
+    assert (code, told) == (2, "")
+    assert message in errors
+
+
+def test_density_from_a_file(run, tmp_path):
+    table = tmp_path / "rows.csv"
+    table.write_bytes(bodies.AMPLITUDES_FILE)
+    given = {name: bodies.AMPLITUDES_SET[name] for name in ("cell", "values")}
+    request = {"product": "points", "set": given, "positions": [[0.1, 0.2, 0.3]]}
+    code, _, errors = run(request, "--reflections", table, "--out", tmp_path / "out.npy")
+    assert (code, errors) == (0, "")
+    run({**request, "set": bodies.AMPLITUDES_SET}, "--out", tmp_path / "direct.npy")
+    np.testing.assert_allclose(np.load(tmp_path / "out.npy"), np.load(tmp_path / "direct.npy"), rtol=1e-12)

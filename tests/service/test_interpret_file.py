@@ -12,7 +12,7 @@ from service.schemas.preparation import SymmetryIn
 from tests.service import bodies
 
 
-def made(given, file, name="rows.csv", limit=100_000):
+def made(given, file, name="", limit=100_000):
     request = check("inspect", {"set": given}, None, Part("", file, name), max_body_bytes=2**22)[1]
     lattice = None if request.set.cell is None else lattice_of(request.set.cell)
     return prepared(request.set, lattice, max_rows=limit)
@@ -30,20 +30,24 @@ def test_file_says_what_the_request_does_not():
     assert table.kind == "cif"
     assert not left
     np.testing.assert_allclose(result.given.lattice.lengths, [7.12, 8.95, 10.43])
-    assert "21 21 21" in result.group.name
+    assert "21 21 21" in result.recipe.group.name
     assert result.unique.count < result.given.count
 
 
 def test_request_goes_before_the_file():
     cell = {"a": 7.2, "b": 9.0, "c": 10.5, "alpha": 90, "beta": 90, "gamma": 90}
-    _, result = made({"cell": cell, "symmetry": {"space_group": "P 2 2 2"}}, bodies.CRYSTAL_FILE, "crystal.cif")
+    _, result = made(
+        {"cell": cell, "symmetry": {"space_group": "P 2 2 2"}, "preparation": {"phase": "none"}},
+        bodies.CRYSTAL_FILE,
+        "crystal.cif",
+    )
     np.testing.assert_allclose(result.given.lattice.lengths, [7.2, 9.0, 10.5])
-    assert "21" not in result.group.name
+    assert "21" not in result.recipe.group.name
 
 
 def test_without_any_symmetry_there_are_translations_alone():
     _, result = made({"cell": bodies.ORTHORHOMBIC}, bodies.AMPLITUDES_FILE)
-    assert result.group.name == "P1"
+    assert result.recipe.group.name == "P1"
     assert result.unique.count == 4
 
 
@@ -81,11 +85,14 @@ def test_phases_may_come_from_a_model():
             {"corrections": [{"kind": "polarisation"}, {"kind": "footprint", "length_mm": 3.0}]},
             "/set/preparation/corrections/1/width_mm",
         ),
-        ({"corrections": [{"kind": "film_absorption", "mu_per_cm": 3.0}]}, "/set/preparation/corrections/0/thickness_um"),
+        ({"corrections": [{"kind": "film_absorption", "mu_per_cm": 3}]}, "/set/preparation/corrections/0/thickness_um"),
         ({"scale": {"kind": "wilson"}}, "/set/preparation/scale/formula"),
         ({"scale": {"kind": "wilson", "formula": "Xx"}}, "/set/preparation/scale/formula"),
         ({"scale": {"kind": "factor"}}, "/set/preparation/scale/factor"),
         ({"phase": "hendrickson_lattman"}, "/set/preparation/phase"),
+        ({"phase": "phase_calc_deg"}, "/set/preparation/phase"),
+        ({"block": "one"}, "/set/preparation/block"),
+        ({"omit": ["unreliable"]}, "/set/preparation/omit"),
         ({"phase": "phase_deg", "model": {"atoms": [{"element": "O", "position": [0, 0, 0], "b_iso": 1}]}},
          "/set/preparation/phase"),
         ({"model": {"atoms": [{"element": "O", "position": [0, 0], "b_iso": 1}]}},
@@ -112,10 +119,6 @@ def test_corrections_need_a_wavelength():
         ({}, b"h,k,l,fobs\n1,2,3,4\n", "fobs"),
         ({}, b"h,k,l,amplitude,amplitude_sigma\n1,2,3,x,1\n", "line 2"),
         ({"cell": {"period": 9.0}}, bodies.AMPLITUDES_FILE, "dimension 1"),
-        ({"preparation": {"observed": "f_calc"}}, bodies.AMPLITUDES_FILE, "f_calc"),
-        ({"preparation": {"block": "one"}}, bodies.AMPLITUDES_FILE, "no meaning"),
-        ({"preparation": {"mapping": {"none": "h"}}}, bodies.AMPLITUDES_FILE, "none"),
-        ({"preparation": {"omit": ["unreliable"]}}, bodies.AMPLITUDES_FILE, "statuses"),
     ],
 )
 def test_faults_of_a_file_are_named(given, file, part):

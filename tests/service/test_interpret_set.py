@@ -234,7 +234,7 @@ def test_resolution_cuts_a_file_too():
     body = {**bodies.GRID, "set": FILE_SET, "resolution": {"d_min": 5.0}}
     made = coefficients(body, "grid", file=ROWS)
     assert made.count == 1
-    assert made.tally.beyond_resolution == 2
+    assert made.tally.beyond_resolution == 3
 
 
 @pytest.mark.parametrize(

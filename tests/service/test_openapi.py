@@ -9,12 +9,14 @@ import pytest
 
 from service.app import create_app
 from service.encoders.negotiation import MEDIA_TYPES, formats_of
+from service.intake import FILE_TYPES
 from service.openapi import EXAMPLES
 from service.problems import TITLES
 from service.schemas.products import PRODUCTS
 from service.settings import Settings
 from tests.service import bodies
 from tests.service.problem_shape import assert_problem
+from tests.service.raw_files import AMPLITUDES, CELL, CIF, TABLE, sent
 
 DOCUMENT = create_app(Settings()).openapi()
 OPERATIONS = {
@@ -170,6 +172,67 @@ def test_every_example_is_answered(client, product):
 
 def test_examples_are_of_every_product():
     assert set(EXAMPLES) == set(PRODUCTS)
+
+
+INSPECTION = OPERATIONS["post", "/v1/sets/inspect"]
+
+
+def test_files_are_described_wherever_they_are_taken():
+    for product in PRODUCTS:
+        form = OPERATIONS["post", f"/v1/{product}"]["requestBody"]["content"]["multipart/form-data"]
+        assert set(form["schema"]["properties"]) == {"request", "columns", "reflections"} == set(form["encoding"])
+        assert form["schema"]["required"] == ["request"]
+    content = INSPECTION["requestBody"]["content"]
+    assert set(content) == {"multipart/form-data", *FILE_TYPES}
+    form = content["multipart/form-data"]
+    assert form["schema"]["properties"]["request"] == {"$ref": "#/components/schemas/InspectIn"}
+    assert form["schema"]["required"] == ["reflections"]
+    assert form["encoding"]["reflections"]["contentType"] == ", ".join(FILE_TYPES)
+    assert DOCUMENT["components"]["schemas"]["InspectIn"]["additionalProperties"] is False
+
+
+def test_a_file_is_no_component():
+    """It comes as a part of a form, so a body of JSON can only leave it out."""
+    assert "Part" not in DOCUMENT["components"]["schemas"]
+    file = DOCUMENT["components"]["schemas"]["CoefficientSetIn"]["properties"]["reflections"]
+    assert {one["type"] for one in file["anyOf"]} == {"null"}
+
+
+def test_errors_of_an_inspection_are_described():
+    assert set(map(int, INSPECTION["responses"])) == {200, 400, 406, 413, 415, 422, 500, 503, 504}
+
+
+def test_forms_of_a_summary_are_described():
+    answers = INSPECTION["responses"]["200"]["content"]
+    assert answers == {"application/json": {"schema": {"$ref": "#/components/schemas/SummaryAnswer"}}}
+    assert INSPECTION["parameters"][0]["schema"]["enum"] == ["json"]
+
+
+def test_example_of_an_inspection_is_answered(client):
+    (example,) = INSPECTION["requestBody"]["content"]["multipart/form-data"]["examples"].values()
+    body = sent(example["value"]["request"], example["value"]["reflections"], "text/csv")
+    answer = client.post("/v1/sets/inspect", content=body, headers={"Content-Type": bodies.FORM})
+    assert answer.status_code == 200, answer.text
+    assert (answer.json()["rows"], answer.json()["unique"]) == (3, 2)
+
+
+@pytest.mark.parametrize(
+    ("file", "members"),
+    [
+        (CIF, {}),
+        (TABLE, {"cell": CELL, "density": "complex"}),
+        (AMPLITUDES, {"cell": CELL}),
+        (AMPLITUDES.replace("sigma", "merit"), {"cell": CELL, "symmetry": {"space_group": 19}}),
+        ("l,f_squared,sigma\n0,40,1\n1,20,1\n-1,21,1\n2,7,1\n", {"cell": {"period": 30.0}}),
+        (bodies.CRYSTAL_FILE, {"preparation": bodies.SCALED}),
+    ],
+    ids=["cif", "complex", "amplitudes", "merit", "stack", "sample"],
+)
+def test_summary_has_the_shape_described(client, file, members):
+    body = sent({"set": members}, file)
+    answer = client.post("/v1/sets/inspect", content=body, headers={"Content-Type": bodies.FORM})
+    assert answer.status_code == 200, answer.text
+    check_shape(answer.json(), "SummaryAnswer")
 
 
 def test_problems_have_the_shape_described(client):

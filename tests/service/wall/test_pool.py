@@ -2,6 +2,7 @@ from __future__ import annotations
 
 import asyncio
 import json
+import subprocess
 import sys
 import time
 
@@ -127,3 +128,21 @@ def test_worker_that_does_not_start_is_not_mistaken_for_one(monkeypatch):
     with pytest.raises(module.wire.Closed):
         worker.start()
     assert worker._process is None
+
+
+def test_worker_that_ends_before_it_reads_its_settings(monkeypatch):
+    """Writing to it fails, and nothing of it may be left behind."""
+    started = subprocess.Popen
+
+    def ended(*arguments, **options):
+        process = started(*arguments, **options)
+        process.wait()
+        return process
+
+    monkeypatch.setattr(sys, "executable", "/bin/false")
+    monkeypatch.setattr(subprocess, "Popen", ended)
+    worker = module._Worker(LIMITS)
+    with pytest.raises(module.wire.Closed):
+        worker.start()
+    assert worker._process is None
+    assert worker._channel is None
