@@ -73,6 +73,7 @@ def _parser() -> argparse.ArgumentParser:
     run.add_argument("request", type=Path, help="JSON file; its member product names what is wanted")
     run.add_argument("--columns", type=Path, help="CSV or .npz file with the columns of the set")
     run.add_argument("--reflections", type=Path, help="CIF, delimited text or .npz with reflections to prepare")
+    run.add_argument("--reference", type=Path, help="a second such file, whose scale the first is brought to")
     run.add_argument(
         "--out", type=Path, help=f"file to write, by its ending: {', '.join(ROW_FORMATS)}; without it, show the field"
     )
@@ -81,6 +82,7 @@ def _parser() -> argparse.ArgumentParser:
 
     inspect = actions.add_parser("inspect", help="summarise a file of reflections")
     inspect.add_argument("reflections", type=Path, help="CIF, delimited text or .npz")
+    inspect.add_argument("--reference", type=Path, help="a second such file, whose scale the first is brought to")
     inspect.add_argument("--request", type=Path, help="JSON file whose set says how to prepare the reflections")
     inspect.add_argument("--json", action="store_true", help="print the summary as JSON")
     inspect.set_defaults(action=_inspect)
@@ -135,7 +137,12 @@ def _run(options: argparse.Namespace) -> int:
             raise ValueError(f"--columns: {options.columns.name} does not end in {' or '.join(TABLE_TYPES)}")
         table = Part(media_type, options.columns.read_bytes())
     product, request = intake.check(
-        None, document, table, _file(options.reflections), max_body_bytes=settings.max_body_bytes
+        None,
+        document,
+        table,
+        _file(options.reflections),
+        _file(options.reference),
+        max_body_bytes=settings.max_body_bytes,
     )
     if isinstance(request, InspectIn):
         raise ValueError(f"{options.request.name} asks for an inspection: use densityloom inspect")
@@ -169,7 +176,12 @@ def _inspect(options: argparse.Namespace) -> int:
     others = set(CoefficientSetIn.model_fields) - set(ReflectionSetIn.model_fields)
     taken = {name: value for name, value in given.items() if name not in others}
     _, request = intake.check(
-        INSPECT, {"set": taken}, None, _file(options.reflections), max_body_bytes=settings.max_body_bytes
+        INSPECT,
+        {"set": taken},
+        None,
+        _file(options.reflections),
+        _file(options.reference),
+        max_body_bytes=settings.max_body_bytes,
     )
     if not isinstance(request, InspectIn):
         raise TypeError("an inspection was checked as something else")

@@ -57,8 +57,8 @@ def read(product: str | None, content_type: str, body: bytes, *, max_body_bytes:
     if media_type == JSON:
         return check(product, decode(body), None, max_body_bytes=max_body_bytes)
     if media_type == MULTIPART:
-        request, table, reflections = _parts(content_type, body, product)
-        return check(product, request, table, reflections, max_body_bytes=max_body_bytes)
+        request, table, files = _parts(content_type, body, product)
+        return check(product, request, table, **files, max_body_bytes=max_body_bytes)
     if product == INSPECT and media_type in FILE_TYPES:
         return check(product, {"set": {}}, None, Part(media_type, body), max_body_bytes=max_body_bytes)
     send = f"{JSON}, or {MULTIPART} with the parts request ({JSON}) and columns ({CSV} or {NPZ})"
@@ -93,6 +93,7 @@ def check(
     document: dict[str, Any],
     table: Part | None,
     reflections: Part | None = None,
+    reference: Part | None = None,
     *,
     max_body_bytes: int,
 ) -> tuple[str, Request]:
@@ -106,8 +107,10 @@ def check(
         raise at(("product",), f"differs from the address, which asks for a {product}", "make the two agree")
     if table is not None:
         document = _joined(document, columns(table, max_body_bytes=max_body_bytes))
-    if reflections is not None:
-        document = _joined(document, {"reflections": reflections})
+    files = {"reflections": reflections, "reference": reference}
+    sent = {name: part for name, part in files.items() if part is not None}
+    if sent:
+        document = _joined(document, sent)
     try:
         return product, REQUESTS[product].model_validate(document)
     except ValidationError as fault:
@@ -143,17 +146,20 @@ def _joined(document: dict[str, Any], found: Mapping[str, NDArray[np.float64] | 
     return {**document, "set": {**given, **found}}
 
 
-def _parts(content_type: str, body: bytes, product: str | None) -> tuple[dict[str, Any], Part | None, Part | None]:
-    """The request, the columns and the reflections of a form."""
+def _parts(
+    content_type: str, body: bytes, product: str | None
+) -> tuple[dict[str, Any], Part | None, dict[str, Part | None]]:
+    """The request, the columns, and the files of reflections of a form."""
     parts = split(content_type, body)
-    unknown = sorted(set(parts) - {"request", "columns", "reflections"})
+    unknown = sorted(set(parts) - {"request", "columns", "reflections", "reference"})
     if unknown:
         raise Problem(
             "malformed-body",
             f"The form has the part {unknown[0][:40]!r}; send the part request, and columns or reflections.",
         )
+    files = {name: parts.get(name) for name in ("reflections", "reference")}
     if "request" not in parts:
         if product != INSPECT:
             raise Problem("malformed-body", "The form has no part request; send it as JSON.")
-        return {"set": {}}, parts.get("columns"), parts.get("reflections")
-    return decode(parts["request"].data), parts.get("columns"), parts.get("reflections")
+        return {"set": {}}, parts.get("columns"), files
+    return decode(parts["request"].data), parts.get("columns"), files

@@ -4,20 +4,30 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
+from dataclasses import replace
 
 import numpy as np
 
-from engine.amplitudes.corrections import Correction, FilmAbsorption, Footprint, Lorentz, Polarisation
+from engine.amplitudes.corrections import Correction, FilmAbsorption, Footprint, Lorentz, Multiplicity, Polarisation
 from engine.errors import InputError, TooLargeError
 from engine.lattice import Lattice
-from engine.preparation import Prepared, Recipe, TrialModel, prepare_reflections, with_distributions
+from engine.preparation import (
+    KnownDensities,
+    Prepared,
+    Recipe,
+    ReferenceSet,
+    TrialModel,
+    prepare_reflections,
+    with_distributions,
+)
 from engine.readers import ReadTable, read, to_reflections
 from engine.readers.mapping import QUANTITIES, Status
 from engine.readers.table import LeftOut, Symmetry
 from engine.readers.tabular import Progress
 from engine.reflections import Reflections
 from engine.scattering import Composition, composition, sum_of_squares
-from engine.symmetry import Group, plane_group, space_group, stack_group
+from engine.symmetry import Group, classify, plane_group, space_group, stack_group
+from service.parts import Part
 from service.problems import at, located
 from service.schemas.coefficient_set import ReflectionSetIn
 from service.schemas.preparation import CorrectionIn, ModelIn, PreparationIn, ScaleIn, SymmetryIn
@@ -32,6 +42,9 @@ OF_THE_CHAIN: dict[str, tuple[str, ...]] = {
     **{name: (name,) for name in ("wavelength", "corrections", "amplitudes")},
     "content": ("scale", "formula"),
     "factor": ("scale", "factor"),
+    "mean": ("scale", "mean"),
+    "zero_term": ("scale", "kind"),
+    **dict.fromkeys(("known", "profile", "density"), ("scale", "places")),
     **dict.fromkeys(("elements", "species", "positions"), ("model", "atoms")),
 }
 """Members of a preparation by what the engine calls them, in either of two steps."""
@@ -58,9 +71,38 @@ def prepared(
     Problem
         Pointing to the place in the body, or to the file.
     """
-    part, wanted = given.reflections, given.preparation or PreparationIn()
-    if part is None:
+    wanted = given.preparation or PreparationIn()
+    if given.reflections is None:
         raise at(("set", "reflections"), "is absent", "send the file as the part reflections of a form")
+    table, reflections, left = _reflections(given.reflections, given, lattice, max_rows=max_rows, progress=progress)
+    group = _group(given.symmetry, table.crystal.symmetry, reflections.lattice.dimension)
+    if wanted.phase == "hendrickson_lattman":
+        reflections = _with_coefficients(reflections, table, group)
+    recipe = Recipe(
+        group=group,
+        friedel=given.density == "real",
+        wavelength=wanted.wavelength or table.crystal.wavelength,
+        corrections=_corrections(wanted.corrections, reflections, table, group),
+        amplitudes=wanted.amplitudes,
+        reject_outliers=wanted.reject_outliers,
+        scale=wanted.scale.kind,
+        content=None if wanted.scale.formula is None else _content(wanted.scale, wanted.scale.formula),
+        units=wanted.scale.units,
+        probe=wanted.scale.probe,
+        factor=wanted.scale.factor,
+        mean=wanted.scale.mean,
+        known=_known(wanted.scale, reflections.lattice.dimension),
+        model=None if wanted.model is None else _model(wanted.model, reflections.lattice.dimension),
+    )
+    recipe = replace(recipe, reference=_reference(given, lattice, recipe, max_rows=max_rows))
+    with _of_file(OF_THE_CHAIN):
+        return (table, left), prepare_reflections(reflections, recipe)
+
+
+def _reflections(
+    part: Part, given: ReflectionSetIn, lattice: Lattice | None, *, max_rows: int, progress: Progress | None
+) -> tuple[ReadTable, Reflections, tuple[LeftOut, ...]]:
+    wanted = given.preparation or PreparationIn()
     with _of_file(OF_READING):
         table = read(
             part.data,
@@ -75,34 +117,49 @@ def prepared(
             raise TooLargeError((), f"the file has {table.count:,} rows, more than {max_rows:,}", "send fewer rows")
         if lattice is None and table.lattice is None:
             raise at(("set", "cell"), "is absent, and the file gives none", "give the lattice")
-        phase = _phase_column(wanted, table)
         reflections, left = to_reflections(
             table,
             observed=wanted.observed,
-            phase=phase,
+            phase=_phase_column(wanted, table),
             lattice=lattice,
             missing_sigma=wanted.missing_sigma,
             omit=[Status[name.upper()] for name in wanted.omit],
         )
-    group = _group(given.symmetry, table.crystal.symmetry, reflections.lattice.dimension)
-    if wanted.phase == "hendrickson_lattman":
-        reflections = _with_coefficients(reflections, table, group)
-    recipe = Recipe(
-        group=group,
-        friedel=given.density == "real",
-        wavelength=wanted.wavelength or table.crystal.wavelength,
-        corrections=_corrections(wanted.corrections),
-        amplitudes=wanted.amplitudes,
-        reject_outliers=wanted.reject_outliers,
-        scale=wanted.scale.kind,
-        content=None if wanted.scale.formula is None else _content(wanted.scale, wanted.scale.formula),
-        units=wanted.scale.units,
-        probe=wanted.scale.probe,
-        factor=wanted.scale.factor,
-        model=None if wanted.model is None else _model(wanted.model, reflections.lattice.dimension),
+    return table, reflections, left
+
+
+def _reference(
+    given: ReflectionSetIn, lattice: Lattice | None, recipe: Recipe, *, max_rows: int
+) -> ReferenceSet | None:
+    """The second file's unique amplitudes, prepared like the first but neither scaled nor phased."""
+    asked = (given.preparation or PreparationIn()).scale
+    if given.reference is None:
+        if asked.kind == "reference":
+            raise at(("set", "reference"), "is absent", "send the second file as the part reference of the form")
+        return None
+    if asked.kind != "reference":
+        raise at(("set", "reference"), "was sent, and nothing is scaled to it", 'ask for the scale "reference"')
+    _, reflections, _ = _reflections(given.reference, given, lattice, max_rows=max_rows, progress=None)
+    plain = replace(reflections, phase=None, phase_sigma=None, merit=None)
+    alone = replace(recipe, scale="none", factor=None, content=None, mean=None, known=None, model=None)
+    with located("set", "reference"):
+        made = prepare_reflections(plain, alone)
+    return ReferenceSet(reflections=made.unique, displacement=asked.displacement, robust=asked.robust)
+
+
+def _known(asked: ScaleIn, dimension: int) -> KnownDensities | None:
+    if asked.places is None:
+        return None
+    for place, one in enumerate(asked.places):
+        if len(one.position) != dimension:
+            where = ("set", "preparation", "scale", "places", place, "position")
+            raise at(where, f"has {len(one.position)} coordinates", f"give {dimension}")
+    first, second = asked.places
+    return KnownDensities(
+        positions=np.array([first.position, second.position], dtype=np.float64),
+        densities=(first.density, second.density),
+        sigmas=(first.sigma, second.sigma),
     )
-    with _of_file(OF_THE_CHAIN):
-        return (table, left), prepare_reflections(reflections, recipe)
 
 
 @contextmanager
@@ -214,12 +271,15 @@ def _group(asked: SymmetryIn | None, found: Symmetry, dimension: int) -> Group:
     return Group(rotations=identity, translations=np.zeros((1, dimension)), name=name)
 
 
-def _corrections(asked: list[CorrectionIn]) -> tuple[Correction, ...]:
+def _corrections(
+    asked: list[CorrectionIn], reflections: Reflections, table: ReadTable, group: Group
+) -> tuple[Correction, ...]:
     made: list[Correction] = []
     for place, one in enumerate(asked):
         own = {
             "lorentz": {"geometry"},
             "polarisation": {"degree", "monochromator_2theta_deg", "perfect"},
+            "multiplicity": set[str](),
             "film_absorption": {"thickness_um", "mu_per_cm"},
             "footprint": {"length_mm", "width_mm", "profile"},
         }[one.kind]
@@ -230,8 +290,20 @@ def _corrections(asked: list[CorrectionIn]) -> tuple[Correction, ...]:
             if getattr(one, name) is None:
                 raise at((*where, name), "is absent", f"{one.kind} needs it")
         with located(*where):
-            made.append(_correction(one))
+            if one.kind == "multiplicity":
+                made.append(_multiplicity(reflections, table, group))
+            else:
+                made.append(_correction(one))
     return tuple(made)
+
+
+def _multiplicity(reflections: Reflections, table: ReadTable, group: Group) -> Multiplicity:
+    """Of the file's column, else of the group; the zero term, which the chain takes out, has none."""
+    if "multiplicity" in table.columns:
+        values = table.columns["multiplicity"][np.searchsorted(table.row, reflections.row)]
+    else:
+        values = classify(reflections.indices, group).multiplicity.astype(np.float64)
+    return Multiplicity(values[reflections.indices.any(axis=1)])
 
 
 def _correction(one: CorrectionIn) -> Correction:

@@ -101,10 +101,11 @@ def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
     """The request body in each media type."""
     binary = {"type": "string", "format": "binary"}
     request = {"type": "object", "description": "the request without columns in its set"}
-    properties: dict[str, Any] = {"request": request, "reflections": binary}
+    properties: dict[str, Any] = {"request": request, "reflections": binary, "reference": binary}
     encoding: dict[str, Any] = {
         "request": {"contentType": JSON},
         "reflections": {"contentType": ", ".join(FILE_TYPES)},
+        "reference": {"contentType": ", ".join(FILE_TYPES)},
     }
     if product == INSPECT:
         form = {"type": "object", "required": ["reflections"], "properties": {**properties, "request": schema}}

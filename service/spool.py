@@ -59,7 +59,9 @@ class Spool:
         count = int(np.prod(shape, dtype=np.int64))
         os.ftruncate(self._descriptor, offset + count * dtype.itemsize)
         os.lseek(self._descriptor, 0, os.SEEK_END)
-        mapping = mmap.mmap(self._descriptor, offset + count * dtype.itemsize)
+        # Populated at once: page by page the kernel would interrupt the computation at every 4 KiB.
+        flags = mmap.MAP_SHARED | getattr(mmap, "MAP_POPULATE", 0)
+        mapping = mmap.mmap(self._descriptor, offset + count * dtype.itemsize, flags=flags)
         mapped: AnyArray = np.frombuffer(mapping, dtype=dtype, count=count, offset=offset).reshape(shape)
         return mapped
 

@@ -22,12 +22,13 @@ from engine.merging import Merged, merge
 from engine.phases import Agreement as ModelAgreement
 from engine.phases import coefficient_set
 from engine.preparation.phasing import TrialModel, with_model
+from engine.preparation.scales import KnownDensities, ReferenceSet, by_reference, by_two_densities, by_zero_term
 from engine.reflections import Reflections
 from engine.scattering import Composition, Probe, sum_of_squares, zero_term
 from engine.symmetry import Classification, Expansion, Group, classify, expand
 
 AmplitudeRule = Literal["bayesian", "root", "root_exclude"]
-ScaleRule = Literal["none", "wilson", "factor"]
+ScaleRule = Literal["none", "wilson", "factor", "zero_term", "two_densities", "reference"]
 
 HALVES_SEED = 1729
 """Seed of the random halves of CC½: the same data give the same figure."""
@@ -51,13 +52,19 @@ class Recipe:
         Intensities to amplitudes: the estimate of French & Wilson; the plain square root, negative
         intensities refused; or the same, negative ones excluded and counted.
     reject_outliers : bool
-    scale : {"none", "wilson", "factor"}
-        Wilson's plot against ``content``, or ``factor`` by which amplitudes are multiplied.
+    scale : {"none", "wilson", "factor", "zero_term", "two_densities", "reference"}
+        Wilson's plot against ``content``; ``factor`` by which amplitudes are multiplied; the zero
+        term of its own row against that of the content, or against ``mean`` × V; two ``known``
+        densities; or the common reflections of a ``reference``.
     content : Composition or None
         Of one formula unit; with ``units`` in the cell it also gives the zero term.
     units : float
     probe : {"xray", "neutron"}
     factor : float or None
+    mean : float or None
+        Mean density.
+    known : KnownDensities or None
+    reference : ReferenceSet or None
     model : TrialModel or None
         Where the phases are to come from a model instead of the reflections.
     """
@@ -73,6 +80,9 @@ class Recipe:
     units: float = 1.0
     probe: Probe = "xray"
     factor: float | None = None
+    mean: float | None = None
+    known: KnownDensities | None = None
+    reference: ReferenceSet | None = None
     model: TrialModel | None = None
 
 
@@ -172,6 +182,16 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
     kinds = classify(merged.reflections.indices, recipe.group)
     plot, factor = _scale(merged.reflections, kinds, recipe, applied, notes)
     unique, converted = _amplitudes(merged.reflections, kinds, recipe, applied, notes)
+    if recipe.scale == "zero_term":
+        factor = by_zero_term(zero, _known_zero_term(recipe, reflections.lattice.volume))
+        applied.append(f"put on the absolute scale by the zero term: amplitudes multiplied by {factor:.4g}")
+    if recipe.reference is not None:
+        unique, found = by_reference(unique, recipe.reference)
+        applied.append(
+            f"put on the scale of a reference by {found.common} common reflections: amplitudes multiplied by "
+            f"{found.scale:.4g} ± {found.scale_sigma:.2g}, B {found.b:.3g} ± {found.b_sigma:.2g} Å²"
+        )
+        notes.extend(f"Scale to the reference: {note}." for note in found.notes)
     if factor is not None:
         unique = replace(unique.scaled(factor), scale="absolute")
         zero = None if zero is None else zero * factor
@@ -183,7 +203,17 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
     applied.append(
         f"expanded by {recipe.group.name} from {unique.count} unique to {expansion.reflections.count} reflections"
     )
-    if recipe.model is not None and recipe.model.kind == "difference":
+    if recipe.known is not None:
+        line = by_two_densities(expansion.reflections, recipe.known)
+        expansion = replace(expansion, reflections=line.apply(expansion.reflections))
+        phased, unique = line.apply(phased), line.apply(unique)
+        zero = line.offset * reflections.lattice.volume
+        applied.append(
+            f"put on the absolute scale by two known densities: amplitudes multiplied by {line.slope:.4g} ± "
+            f"{np.sqrt(line.covariance[0, 0]):.2g}, mean density {line.offset:.4g} ± "
+            f"{np.sqrt(line.covariance[1, 1]):.2g}"
+        )
+    elif recipe.model is not None and recipe.model.kind == "difference":
         # What the model lacks or has too much in all is not in the measured amplitudes.
         zero = None
     else:
@@ -217,8 +247,23 @@ def _check(reflections: Reflections, recipe: Recipe) -> None:
         if recipe.factor is None:
             raise InputError("factor", "is absent", "give the factor that amplitudes are multiplied by")
         as_positive(recipe.factor, "factor", "absolute over given amplitude")
-    elif recipe.factor is not None:
-        raise InputError("factor", "has no meaning for this scale", "leave it out")
+    for name, scale in (("factor", "factor"), ("known", "two_densities"), ("reference", "reference")):
+        given = getattr(recipe, name) is not None
+        if given and recipe.scale != scale:
+            raise InputError(name, "has no meaning for this scale", "leave it out")
+        if recipe.scale == scale and not given:
+            raise InputError(name, "is absent", f"the scale {scale} needs it")
+    if recipe.mean is not None and recipe.scale != "zero_term":
+        raise InputError("mean", "has no meaning for this scale", "leave it out")
+
+
+def _known_zero_term(recipe: Recipe, volume: float) -> float | None:
+    """F(000) by the mean density, or by the content."""
+    if recipe.mean is not None:
+        return recipe.mean * volume
+    if recipe.content is None:
+        return None
+    return zero_term(recipe.content, units=recipe.units, probe=recipe.probe)
 
 
 def _without_zero(
@@ -270,6 +315,8 @@ def _scale(
     if recipe.scale == "none":
         if merged.scale == "arbitrary":
             notes.append("The scale is arbitrary: nothing was said that would make it absolute.")
+        return None, None
+    if recipe.scale in ("zero_term", "two_densities", "reference"):
         return None, None
     if recipe.scale == "factor" or recipe.content is None:
         applied.append(f"amplitudes multiplied by {recipe.factor:g}")

@@ -40,6 +40,7 @@ class ReflectionSetIn(Strict):
     )
     preparation: PreparationIn | None = Field(None, description="how the file of reflections is read and treated")
     reflections: ReflectionsFile | None = None
+    reference: ReflectionsFile | None = None
     density: Literal["real", "complex"] = Field(
         "real", description="a real density obeys Friedel's law, and one of each pair suffices"
     )

@@ -15,14 +15,14 @@ def _part(value: Any) -> Part:  # noqa: ANN401
     if isinstance(value, Part):
         return value
     raise PydanticCustomError(
-        "part", "is not a file", {"cure": "send the file as the part reflections of a form (multipart/form-data)"}
+        "part", "is not a file", {"cure": "send the file as a part of a form (multipart/form-data)"}
     )
 
 
 ReflectionsFile = Annotated[
     Part,
     PlainValidator(_part),
-    WithJsonSchema({"type": "null", "description": "the file is sent as the part reflections of the form"}),
+    WithJsonSchema({"type": "null", "description": "the file is sent as the part of this name of the form"}),
 ]
 
 
@@ -51,7 +51,9 @@ class SymmetryIn(Strict):
 class CorrectionIn(Strict):
     """One effect that recorded intensities are freed of; the members belong to the kinds as named."""
 
-    kind: Literal["lorentz", "polarisation", "film_absorption", "footprint"]
+    kind: Literal["lorentz", "polarisation", "multiplicity", "film_absorption", "footprint"] = Field(
+        description="multiplicity: of the file's column, else of the symmetry (powder)"
+    )
     geometry: Literal["rotation", "powder", "film_whole_arc", "film_part_of_arc"] | None = Field(
         None, description="lorentz: how the sample is measured"
     )
@@ -65,14 +67,31 @@ class CorrectionIn(Strict):
     profile: Literal["uniform", "gaussian"] = Field("uniform", description="footprint: of the beam")
 
 
+class PlaceIn(Strict):
+    """A place whose density is known."""
+
+    position: Annotated[list[float], Field(min_length=1, max_length=3)] = Field(description="fractional")
+    density: float
+    sigma: float = Field(0.0, ge=0)
+
+
 class ScaleIn(Strict):
     """What makes the scale absolute."""
 
-    kind: Literal["none", "wilson", "factor"] = "none"
+    kind: Literal["none", "wilson", "factor", "zero_term", "two_densities", "reference"] = Field(
+        "none",
+        description="wilson: Wilson's plot against the content; factor: amplitudes times it; zero_term: the row of all "
+        "indices zero against the content or the mean; two_densities: places whose densities are known; reference: "
+        "the common reflections of a second file, sent as the part reference",
+    )
     formula: str | None = Field(None, max_length=1000, description="composition of a formula unit, such as SiO2")
     units: float = Field(1.0, gt=0, description="formula units in the cell")
     probe: Literal["xray", "neutron"] = "xray"
     factor: float | None = Field(None, gt=0, description="absolute over given amplitude")
+    mean: float | None = Field(None, description="zero_term: the mean density, in the unit of the density")
+    places: list[PlaceIn] | None = Field(None, min_length=2, max_length=2, description="two_densities")
+    displacement: bool = Field(False, description="reference: fit a Gaussian exp(−B s²) as well")
+    robust: bool = Field(False, description="reference: bound the pull of outliers")
 
 
 class AtomIn(Strict):
@@ -110,7 +129,7 @@ class PreparationIn(Strict):
     missing_sigma: Literal["refuse", "omit_rows", "without"] = "refuse"
     omit: list[OmittedStatus] = Field(default=[], description="rows of these statuses are left out")
     wavelength: float | None = Field(None, gt=0, description="Å; by default the file's")
-    corrections: list[CorrectionIn] = Field(default=[], max_length=4)
+    corrections: list[CorrectionIn] = Field(default=[], max_length=5)
     amplitudes: Literal["bayesian", "root", "root_exclude"] = Field(
         "bayesian", description="intensities to amplitudes: French & Wilson's estimate, or square roots"
     )

@@ -6,11 +6,13 @@ import numpy as np
 import pytest
 
 from service import intake
-from service.intake import CSV, JSON, NPZ, check, columns, decode, read
+from service.intake import CSV, FILE_TYPES, JSON, NPZ, check, columns, decode, read
 from service.parts import Part
 from service.problems import Problem
 from service.schemas.products import GridIn, ProfileIn
+from service.schemas.requests import INSPECT, InspectIn
 from tests.service import bodies
+from tests.service.raw_files import CIF, GRID, TABLE, sent, with_set
 
 LIMIT = 2**20
 
@@ -154,3 +156,73 @@ def test_what_is_refused_is_not_echoed_at_length():
     assert len(refusal(read_, "profile", "x" * 10_000, b"").detail) < 400
     sent = bodies.form(("p" * 300, CSV, b""))
     assert len(refusal(read_, "profile", bodies.FORM, sent).detail) < 400
+
+
+@pytest.mark.parametrize("media_type", FILE_TYPES)
+def test_file_of_reflections(media_type):
+    """It is kept as it came: what it is, is for its reader to find out."""
+    product, request = read_("grid", bodies.FORM, sent(GRID, CIF, media_type))
+    assert product == "grid"
+    assert isinstance(request, GridIn)
+    assert request.set.reflections == Part(media_type, CIF.encode(), "reflections")
+    assert request.set.h is None
+
+
+@pytest.mark.parametrize("media_type", [*FILE_TYPES, "Text/CSV; charset=utf-8"])
+def test_file_as_the_whole_body_of_an_inspection(media_type):
+    product, request = read_(INSPECT, media_type, TABLE.encode())
+    assert product == "inspect"
+    assert isinstance(request, InspectIn)
+    assert request.set.reflections == Part(media_type.split(";")[0].lower(), TABLE.encode())
+
+
+@pytest.mark.parametrize("media_type", FILE_TYPES)
+def test_density_needs_more_than_a_file(media_type):
+    problem = refusal(read_, "grid", media_type, TABLE.encode())
+    assert problem.kind == "unsupported-media-type"
+    assert "multipart/form-data" in problem.detail
+
+
+def test_form_of_an_inspection_may_lack_its_request():
+    _, request = read_(INSPECT, bodies.FORM, sent(None, CIF))
+    assert request.set.reflections.data == CIF.encode()
+    assert request.set.preparation is None
+    assert "no part request" in refusal(read_, "grid", bodies.FORM, sent(None, CIF)).detail
+
+
+def test_media_types_of_an_inspection_are_named_where_another_came():
+    problem = refusal(read_, INSPECT, "image/png", b"")
+    assert problem.status == 415
+    assert [kind for kind in (*FILE_TYPES, "image/png") if kind not in problem.detail] == []
+
+
+def test_preparation_comes_with_the_request():
+    asked = with_set(GRID, preparation={"block": "x", "omit": ["set_aside"]}, symmetry={"space_group": 19})
+    _, request = read_("grid", bodies.FORM, sent(asked, CIF))
+    assert (request.set.preparation.block, request.set.preparation.omit) == ("x", ["set_aside"])
+    assert request.set.symmetry.space_group == 19
+    assert request.set.cell is None
+
+
+@pytest.mark.parametrize(
+    ("request_body", "pointer"),
+    [
+        (with_set(GRID, reflections="data_x"), "/set/reflections"),
+        (with_set(GRID, reflections=None), "/set/reflections"),
+        ({"shape": [4, 4, 4]}, "/set"),
+        ({**GRID, "set": [1]}, "/set"),
+    ],
+)
+def test_files_that_a_request_leaves_no_room_for(request_body, pointer):
+    assert places(refusal(read_, "grid", bodies.FORM, sent(request_body, CIF))) == [pointer]
+
+
+@pytest.mark.parametrize("file", [None, "data_x", {"data": "data_x"}, b"data_x".hex()])
+def test_file_is_no_json(file):
+    asked = with_set(bodies.GRID, reflections=file)
+    if file is None:
+        assert read_("grid", JSON, asked)[1].set.reflections is None
+        return
+    problem = refusal(read_, "grid", JSON, asked)
+    assert places(problem) == ["/set/reflections"]
+    assert "part reflections of a form" in problem.detail

@@ -103,7 +103,7 @@ def test_plane_through_sulfur(client):
     assert list(values.shape) == answer["shape"]
     place = np.array(answer["origin"]["cartesian"])
     for number, axis in zip(np.unravel_index(values.argmax(), values.shape), answer["axes"], strict=True):
-        place = place + (axis["start"] + number * axis["step"]) * np.array(axis["direction"])
+        place = place + number * axis["step"] * np.array(axis["direction"])
     sulfur = samples_raw.ATOMS[0][1]
     apart = min(np.linalg.norm(((place / EDGES - image + 0.5) % 1 - 0.5) * EDGES) for image in images(sulfur))
     # The samples of the plane are 0.1 Å apart: half a diagonal.

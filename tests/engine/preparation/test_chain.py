@@ -8,15 +8,19 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+import xraydb
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from scipy import integrate
 
 from engine import InputError, Lattice, Treatment, evaluate, sampling
 from engine.amplitudes.corrections import Lorentz, Polarisation
+from engine.amplitudes.shells import shell_means
+from engine.amplitudes.wilson import wilson_plot
 from engine.preparation import Recipe, prepare_reflections
 from engine.scattering import composition
 from engine.symmetry import plane_group, space_group, stack_group
-from tests.engine.preparation.crystal import ELECTRONS, FORMULA, B, crystal, measured, with_row
+from tests.engine.preparation.crystal import ATOMS, ELECTRONS, FORMULA, B, crystal, measured, with_row
 
 OR = crystal()
 """P2₁2₁2₁, 7.1 × 8.9 × 10.4 Å."""
@@ -233,6 +237,39 @@ def test_the_bayesian_estimate_nears_the_root_where_intensities_are_strong():
     assert np.all(unique.observed[weak] > np.sqrt(np.maximum(merged.observed[weak], 0)))
 
 
+def plain_kinds(indices):
+    """ε and centric of P2₁2₁2₁ by what its twofold axes do: 2 on an axis, centric where an index is zero."""
+    return np.where(np.count_nonzero(indices, axis=1) == 1, 2, 1), np.any(indices == 0, axis=1)
+
+
+def test_the_prior_knows_axes_and_centric_zones():
+    """⟨F⟩ over J^(ν−½) exp(−J/Σ′) exp(−(I − J)²/2σ²) by numerical integration, the whole of French & Wilson's
+    posterior: ν = 1, Σ′ = ε⟨I/ε⟩, centric ν = ½, Σ′ = 2ε⟨I/ε⟩. A weak reflection of every kind.
+    """
+    prepared = prepare_reflections(noisy(floor=2.0), recipe())
+    merged, unique = prepared.merged.reflections, prepared.unique
+    epsilon, centric = plain_kinds(merged.indices)
+    means = shell_means(merged, epsilon=epsilon, centric=centric)
+    expected = epsilon * means.at(OR.lattice.sine_over_wavelength(merged.indices) ** 2)
+    ratio = merged.observed / merged.sigma
+    for kind in ((1, False), (1, True), (2, True)):
+        chosen = np.flatnonzero((epsilon == kind[0]) & (centric == kind[1]))
+        row = chosen[np.argmin(np.abs(ratio[chosen]))]
+        measured_, sigma = merged.observed[row], merged.sigma[row]
+        prior = expected[row] * (2 if centric[row] else 1)
+        power = 0 if centric[row] else 1
+
+        # In F = √J, which has no singularity: dJ = 2F dF.
+        def weight(f, measured_=measured_, sigma=sigma, prior=prior, power=power):
+            return f**power * math.exp(-(f**2) / prior - (measured_ - f**2) ** 2 / (2 * sigma**2))
+
+        # The exponent is below −50 there.
+        end = math.sqrt(max(measured_, 0) + 10 * sigma)
+        norm = integrate.quad(weight, 0, end)[0]
+        mean = integrate.quad(lambda f, weight=weight: f * weight(f), 0, end)[0] / norm
+        assert unique.observed[row] == pytest.approx(mean, rel=1e-6)
+
+
 def test_amplitudes_need_no_rule():
     given_ = measured(OR, OR.sphere(D_MIN), quantity="amplitude")
     made = [prepare_reflections(given_, recipe(amplitudes=rule)) for rule in ("bayesian", "root", "root_exclude")]
@@ -353,6 +390,21 @@ def test_wilsons_plot_recovers_scale_and_b_in_every_centring(symbol):
     bound = 4 * np.sqrt(np.sum(variances, axis=0)) / 4
     assert np.all(np.abs(np.mean(deviations, axis=0)) < bound)
     assert bound[0] < math.log(2) / 2
+
+
+def test_wilsons_plot_is_that_of_the_merged_reflections():
+    """With Σf² by xraydb, ε and centric by plain counting. The libraries' tables agree to 1e-6 of an atom."""
+    prepared = prepare_reflections(noisy(), recipe(scale="wilson", content=CONTENT, units=4))
+    merged = prepared.merged.reflections
+    s = OR.lattice.sine_over_wavelength(merged.indices)
+    squares = 4 * sum(xraydb.f0(name, s) ** 2 for name in ATOMS)
+    epsilon, centric = plain_kinds(merged.indices)
+    plain = wilson_plot(merged, squares, epsilon=epsilon, centric=centric)
+    assert prepared.plot.scale == pytest.approx(plain.scale, rel=1e-5)
+    assert prepared.plot.scale_sigma == pytest.approx(plain.scale_sigma, rel=1e-5)
+    assert prepared.plot.b == pytest.approx(plain.b, abs=1e-5)
+    without = wilson_plot(merged, squares, centric=centric)
+    assert without.scale != pytest.approx(plain.scale, rel=1e-3)
 
 
 @settings(max_examples=10)

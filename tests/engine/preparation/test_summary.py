@@ -40,6 +40,11 @@ def octant(h):
     return tuple(abs(x) for x in h)
 
 
+def handed(h):
+    """Of P2₁2₁2₁ without Friedel's law: its axes turn two signs at a time, so that the product of the signs stays."""
+    return octant(h), int(np.sign(np.prod(h)))
+
+
 def forbidden(h):
     """Screw axes along all three (International Tables A, No. 19): h00, 0k0, 00l of odd index."""
     return np.count_nonzero(h) == 1 and sum(h) % 2 != 0
@@ -122,6 +127,31 @@ def test_completeness_by_plain_counting():
     assert sum(shell.possible for shell in made.completeness_shells) == len(possible)
 
 
+def test_completeness_is_that_of_the_range_measured():
+    """What lies above 1.2 Å of a set that begins there is not missing from it, and makes no shells."""
+    given = noisy()
+    given = given.select(OR.lattice.spacings(given.indices) < 1.2)
+    made = summary(given)
+    possible = possible_orbits(made.d_min, made.d_max)
+    assert made.d_max < 1.2
+    assert made.completeness == 1.0
+    assert len(made.completeness_shells) == min(10, len(possible) // 20)
+    few = given.select(OR.lattice.spacings(given.indices) > 1.15)
+    assert len(summary(few).completeness_shells) == len(possible_orbits(1.15, 1.2)) // 20 < 5
+
+
+def test_mates_that_lack_are_missed_in_a_complex_density():
+    """One octant: all there is of a real density, and one hand of every general reflection of a complex one."""
+    given = measured(OR, OR.sphere(1.2), relative=0.02, floor=0.1, phases=False)
+    octants = given.select(np.all(given.indices >= 0, axis=1))
+    made = summary(octants, friedel=False)
+    possible = {handed(h) for h in given.indices.tolist() if not forbidden(h)}
+    seen = {handed(h) for h in octants.indices.tolist() if not forbidden(h)}
+    assert made.completeness == pytest.approx(len(seen) / len(possible))
+    assert 0.5 < made.completeness < 0.7
+    assert summary(octants).completeness == 1.0
+
+
 def test_a_plot_and_what_is_without_one():
     given = noisy()
     made = summary(given, scale="wilson", content=CONTENT, units=4)
@@ -189,8 +219,7 @@ def test_complex_densities_count_mates_apart(friedel):
     given = measured(OR, OR.sphere(1.5), relative=0.02, floor=0.1, phases=False)
     made = summary(given, friedel=friedel)
     allowed = [tuple(h) for h in OR.sphere(1.5).tolist() if not forbidden(h)]
-    # 222 turns two signs at a time: the product of the signs tells the mates of a general orbit apart.
-    names = {octant(h) if friedel else (octant(h), np.sign(np.prod(h))) for h in allowed}
+    names = {octant(h) if friedel else handed(h) for h in allowed}
     assert made.unique == len(names)
     assert made.expanded == (len(allowed) // 2 if friedel else len(allowed))
     assert made.completeness == 1.0
