@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import replace
+from typing import Literal
 
 import numpy as np
 
@@ -27,7 +28,6 @@ from engine.readers.tabular import Progress
 from engine.reflections import Reflections
 from engine.scattering import Composition, composition, sum_of_squares
 from engine.symmetry import Group, classify, plane_group, space_group, stack_group
-from service.parts import Part
 from service.problems import at, located
 from service.schemas.coefficient_set import ReflectionSetIn
 from service.schemas.preparation import CorrectionIn, ModelIn, PreparationIn, ScaleIn, SymmetryIn
@@ -74,7 +74,7 @@ def prepared(
     wanted = given.preparation or PreparationIn()
     if given.reflections is None:
         raise at(("set", "reflections"), "is absent", "send the file as the part reflections of a form")
-    table, reflections, left = _reflections(given.reflections, given, lattice, max_rows=max_rows, progress=progress)
+    table, reflections, left = _reflections("reflections", given, lattice, max_rows=max_rows, progress=progress)
     group = _group(given.symmetry, table.crystal.symmetry, reflections.lattice.dimension)
     if wanted.phase == "hendrickson_lattman":
         reflections = _with_coefficients(reflections, table, group)
@@ -100,10 +100,15 @@ def prepared(
 
 
 def _reflections(
-    part: Part, given: ReflectionSetIn, lattice: Lattice | None, *, max_rows: int, progress: Progress | None
+    member: Literal["reflections", "reference"],
+    given: ReflectionSetIn,
+    lattice: Lattice | None,
+    *,
+    max_rows: int,
+    progress: Progress | None,
 ) -> tuple[ReadTable, Reflections, tuple[LeftOut, ...]]:
-    wanted = given.preparation or PreparationIn()
-    with _of_file(OF_READING):
+    part, wanted = getattr(given, member), given.preparation or PreparationIn()
+    with _of_file(OF_READING, member):
         table = read(
             part.data,
             name=part.name or None,
@@ -132,16 +137,26 @@ def _reference(
     given: ReflectionSetIn, lattice: Lattice | None, recipe: Recipe, *, max_rows: int
 ) -> ReferenceSet | None:
     """The second file's unique amplitudes, prepared like the first but neither scaled nor phased."""
-    asked = (given.preparation or PreparationIn()).scale
+    wanted = given.preparation or PreparationIn()
+    asked = wanted.scale
     if given.reference is None:
         if asked.kind == "reference":
             raise at(("set", "reference"), "is absent", "send the second file as the part reference of the form")
         return None
     if asked.kind != "reference":
         raise at(("set", "reference"), "was sent, and nothing is scaled to it", 'ask for the scale "reference"')
-    _, reflections, _ = _reflections(given.reference, given, lattice, max_rows=max_rows, progress=None)
+    table, reflections, _ = _reflections("reference", given, lattice, max_rows=max_rows, progress=None)
     plain = replace(reflections, phase=None, phase_sigma=None, merit=None)
-    alone = replace(recipe, scale="none", factor=None, content=None, mean=None, known=None, model=None)
+    alone = replace(
+        recipe,
+        corrections=_corrections(wanted.corrections, plain, table, recipe.group),
+        scale="none",
+        factor=None,
+        content=None,
+        mean=None,
+        known=None,
+        model=None,
+    )
     with located("set", "reference"):
         made = prepare_reflections(plain, alone)
     return ReferenceSet(reflections=made.unique, displacement=asked.displacement, robust=asked.robust)
@@ -163,14 +178,14 @@ def _known(asked: ScaleIn, dimension: int) -> KnownDensities | None:
 
 
 @contextmanager
-def _of_file(members: Mapping[str, tuple[str, ...]]) -> Iterator[None]:
+def _of_file(members: Mapping[str, tuple[str, ...]], file: str = "reflections") -> Iterator[None]:
     """Point a fault to the member of the preparation that asks for what cannot be had, any other to the file."""
     try:
         yield
     except InputError as fault:
         name = str(fault.path[0]) if fault.path else ""
         if name not in members:
-            with located("set", "reflections"):
+            with located("set", file):
                 raise
         # Rows are the file's, and its words name them; but those of positions are the model's atoms.
         within = {"corrections": fault.path[1:], "positions": fault.rows[:1]}.get(name, ())

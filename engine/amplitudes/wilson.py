@@ -184,6 +184,11 @@ def wilson_plot(
             f"the points scatter about the line by more than chance (reduced χ² {chi_squared / degrees:.3g}); "
             "the uncertainties are enlarged by its root"
         )
+    elif special.chdtr(degrees, chi_squared) < UNLIKELY:
+        notes.append(
+            f"the points lie on the line better than atoms at random would (reduced χ² {chi_squared / degrees:.2g}): "
+            "few atoms, or atoms on special positions, whose true scale may lie far outside the uncertainties"
+        )
     if left_out:
         notes.append(f"{left_out} shells with a mean not above zero are left out")
     scale, b_sigma = float(np.exp(intercept)), float(np.sqrt(covariance[1, 1]))

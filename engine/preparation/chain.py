@@ -288,6 +288,8 @@ def _without_zero(
         raise InputError.for_rows(
             "indices", reflections.row[rows], "are zero with different values", "give F(000) once"
         )
+    if reflections.phase is None or np.isnan(reflections.phase[rows]).any():
+        notes.append("The zero term has no phase and is taken as positive.")
     if not recipe.friedel:
         return rest, complex(values[0])
     if abs(values[0].imag) > rounding:

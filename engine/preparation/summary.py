@@ -12,7 +12,7 @@ from engine.arrays import FloatArray
 from engine.completeness import completeness
 from engine.errors import InputError
 from engine.preparation.chain import Prepared
-from engine.symmetry import unique_reflections
+from engine.symmetry import classify, unique_reflections
 
 FEW_FOR_STATISTICS = 100
 """Unique reflections below which shells and intensity statistics say little."""
@@ -165,7 +165,7 @@ def summarize_set(prepared: Prepared) -> Summary:
         other_signal=merged.absences.mean_signal_of_others,
         outliers=int(merged.outliers.row.size),
         negative=None if prepared.converted is None else prepared.converted.negative,
-        centric_share=float(prepared.kinds.centric.mean()),
+        centric_share=float(classify(unique.indices, recipe.group).centric.mean()),
         phased=phased,
         scale=unique.scale,
         wilson_scale=None if plot is None else plot.scale,
@@ -216,7 +216,8 @@ def _warnings(prepared: Prepared, fraction: float, phased: int, spacing: FloatAr
     last = merged.shells[-1]
     if last.mean_signal is not None and last.mean_signal < WEAK_SHELL:
         warnings.append(
-            f"From {last.d_max:.3g} to {last.d_min:.3g} Å the mean I/σ is {last.mean_signal:.2g}: mostly noise."
+            f"From {last.d_max:.3g} to {last.d_min:.3g} Å the mean of value over σ is "
+            f"{last.mean_signal:.2g}: mostly noise."
         )
     absences = merged.absences
     if absences.mean_signal is not None and absences.mean_signal > 3:

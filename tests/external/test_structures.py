@@ -314,7 +314,7 @@ def test_wilsons_plot_finds_the_scale_of_quartz():
 
     The others are left to a known factor. With all atoms at special positions F is a sum in phase or in
     antiphase and nothing in between, which is far from atoms at random: k of rutile comes out at 0.6, of
-    rock salt at 0.3 of what it is. tests/engine/preparation/test_chain.py holds the plot against structures
+    rock salt at 0.3 of what it is. tests/engine/preparation/test_chain_scale.py holds the plot against structures
     at random.
     """
     made = prepared("quartz", "wilson")

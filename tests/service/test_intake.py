@@ -225,4 +225,4 @@ def test_file_is_no_json(file):
         return
     problem = refusal(read_, "grid", JSON, asked)
     assert places(problem) == ["/set/reflections"]
-    assert "part reflections of a form" in problem.detail
+    assert "part of a form" in problem.detail

@@ -13,7 +13,7 @@ from tests.service.bodies import FORM, changed
 from tests.service.conftest import SMALL
 from tests.service.problem_shape import assert_problem
 from tests.service.raw_files import AMPLITUDES, CELL, CIF, GRID, TABLE, WITHOUT_CELL, archive, sent, with_set
-from tests.service.test_malformed import JSON, LONG, Row, declared, posted
+from tests.service.test_malformed import JSON, LONG, Row, declared, posted, text
 
 ORTHORHOMBIC = {
     "set": {
@@ -237,7 +237,25 @@ PREPARATIONS = [
     prepared("unknown atom", "/set/preparation/model/atoms", model={"atoms": [ATOM, {**ATOM, "element": "Qq"}]}),
     prepared("widow in the preparation", "/set/preparation/widow", widow=1),
 ]  # fmt: skip
-TABLES = [*SYMMETRY, *BESIDE, *FILES, *PREPARATIONS]
+
+
+def compared(name, pointer, file, reference, **scale):
+    """An inspection of a table that is scaled to a second file."""
+    members = {"cell": CELL, "preparation": {"scale": {"kind": "reference", **scale}}}
+    parts = [("request", JSON, text({"set": members}).encode()), ("reflections", "text/csv", file.encode())]
+    if reference is not None:
+        parts.append(("reference", "text/csv", reference.encode()))
+    return Row(name, "sets/inspect", bodies.form(*parts), 422, pointer, FORM)
+
+
+REFERENCES = [
+    compared("reference that is not there", "/set/reference", AMPLITUDES, None),
+    compared("reference that cannot be read", "/set/reference/reference/line 1", AMPLITUDES, "h,k,l,fobs\n1,1,1,3\n"),
+    compared("reference with a word", "/set/reference/reference/line 3/column 4 (amplitude)", AMPLITUDES,
+             AMPLITUDES.replace(",7,", ",seven,")),
+    compared("reference that nothing asks for", "/set/reference", AMPLITUDES, AMPLITUDES, kind="none"),
+]  # fmt: skip
+TABLES = [*SYMMETRY, *BESIDE, *FILES, *PREPARATIONS, *REFERENCES]
 
 OVER_LIMIT = [
     Row(

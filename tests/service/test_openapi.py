@@ -180,7 +180,8 @@ INSPECTION = OPERATIONS["post", "/v1/sets/inspect"]
 def test_files_are_described_wherever_they_are_taken():
     for product in PRODUCTS:
         form = OPERATIONS["post", f"/v1/{product}"]["requestBody"]["content"]["multipart/form-data"]
-        assert set(form["schema"]["properties"]) == {"request", "columns", "reflections"} == set(form["encoding"])
+        parts = {"request", "columns", "reflections", "reference"}
+        assert set(form["schema"]["properties"]) == parts == set(form["encoding"])
         assert form["schema"]["required"] == ["request"]
     content = INSPECTION["requestBody"]["content"]
     assert set(content) == {"multipart/form-data", *FILE_TYPES}

@@ -53,6 +53,14 @@ def test_reference_is_the_second_file():
     np.testing.assert_allclose(made, 2 * alone, rtol=1e-6)
 
 
+def test_reference_has_multiplicities_of_its_own():
+    """A reference of fewer orders is corrected by its own rows."""
+    fewer = Part("text/csv", b"\n".join(SCAN.data.splitlines()[:-3]), "fewer.csv")
+    kinds = [{"kind": "multiplicity"}]
+    made = computed({"kind": "reference"}, corrections=kinds, reference=fewer).field.values
+    np.testing.assert_allclose(made, computed({"kind": "none"}, corrections=kinds).field.values, rtol=1e-6)
+
+
 def test_multiplicity_divides_intensities():
     plain = computed({"kind": "none"}, corrections=[]).field.values
     shared = computed({"kind": "none"}, corrections=[{"kind": "multiplicity"}]).field.values

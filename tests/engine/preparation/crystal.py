@@ -1,4 +1,5 @@
-"""An invented crystal for the tests of preparation, and measurements of it; nothing of the engine's arithmetic.
+"""An invented crystal for the tests of preparation, measurements of it, and what must come out; nothing of the
+engine's arithmetic.
 
 Form factors by xraydb (Waasmaier & Kirfel, Acta Cryst. A51 (1995) 416), structure factors by the sum written out.
 """
@@ -12,7 +13,9 @@ import numpy as np
 import xraydb
 
 from engine.lattice import Lattice
+from engine.preparation import Recipe
 from engine.reflections import Reflections
+from engine.scattering import composition
 from engine.symmetry import Group, space_group
 
 ATOMS = ("S", "Cl", "O", "O", "N", "C", "C", "C")
@@ -101,3 +104,47 @@ def with_row(reflections, indices, observed, phase=None, sigma=None):
         phase=longer(reflections.phase, phase),
         row=np.append(reflections.row, reflections.row.max() + 1),
     )
+
+
+OR = crystal()
+"""P2₁2₁2₁, 7.1 × 8.9 × 10.4 Å."""
+D_MIN = 1.1
+CONTENT = composition(FORMULA)
+P1 = space_group(1)
+ROUNDING = 1e-10
+"""Of sums of some thousand terms of some hundred electrons, relative to the largest."""
+
+
+def recipe(**more):
+    return Recipe(**({"group": OR.group} | more))
+
+
+def exact(**more):
+    """|F|² of every reflection of OR, without noise and without σ."""
+    return measured(OR, OR.sphere(D_MIN), **more)
+
+
+def noisy(**more):
+    return measured(OR, OR.sphere(D_MIN), **({"scale": 0.02, "relative": 0.03, "floor": 0.3} | more))
+
+
+def by_index(made):
+    """m -> n_m of a coefficient set."""
+    return dict(zip(map(tuple, made.indices.tolist()), made.values.tolist(), strict=True))
+
+
+def agrees_with_the_structure(made, one):
+    """n_m = F(−m)/V for every coefficient, and none is missing of those the group allows (conventions, section 2)."""
+    factors = one.factors(-made.indices) / one.lattice.volume
+    others = made.indices.any(axis=1)
+    worst = np.abs(made.values - factors)[others].max()
+    assert worst <= ROUNDING * np.abs(factors).max()
+    spacing = 2 * np.pi / np.linalg.norm(made.indices[others] @ one.lattice.reciprocal, axis=1)
+    all_of = one.sphere(spacing.min() * (1 - 1e-9), half=True)
+    allowed = np.abs(one.factors(all_of)) > 1e-9
+    assert np.count_nonzero(others) == np.count_nonzero(allowed)
+
+
+def plain_kinds(indices):
+    """ε and centric of P2₁2₁2₁ by what its twofold axes do: 2 on an axis, centric where an index is zero."""
+    return np.where(np.count_nonzero(indices, axis=1) == 1, 2, 1), np.any(indices == 0, axis=1)

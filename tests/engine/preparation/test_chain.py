@@ -1,4 +1,4 @@
-"""The chain of preparation: each step alone, steps together, what it counts, what it says and what it refuses."""
+"""The chain of preparation: each step alone, steps together, what it counts and what it says."""
 
 from __future__ import annotations
 
@@ -8,59 +8,32 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-import xraydb
-from hypothesis import given, settings
-from hypothesis import strategies as st
 from scipy import integrate
 
 from engine import InputError, Lattice, Treatment, evaluate, sampling
 from engine.amplitudes.corrections import Lorentz, Polarisation
 from engine.amplitudes.shells import shell_means
-from engine.amplitudes.wilson import wilson_plot
 from engine.preparation import Recipe, prepare_reflections
-from engine.scattering import composition
-from engine.symmetry import plane_group, space_group, stack_group
-from tests.engine.preparation.crystal import ATOMS, ELECTRONS, FORMULA, B, crystal, measured, with_row
+from engine.symmetry import plane_group, stack_group
+from tests.engine.preparation.crystal import (
+    CONTENT,
+    D_MIN,
+    OR,
+    P1,
+    ROUNDING,
+    agrees_with_the_structure,
+    by_index,
+    crystal,
+    exact,
+    measured,
+    noisy,
+    plain_kinds,
+    recipe,
+    with_row,
+)
 
-OR = crystal()
-"""P2₁2₁2₁, 7.1 × 8.9 × 10.4 Å."""
-CONTENT = composition(FORMULA)
-D_MIN = 1.1
-P1 = space_group(1)
 NO_CORRECTION = "No correction was asked for: intensities are taken to be proportional to |F|²."
 NO_SCALE = "The scale is arbitrary: nothing was said that would make it absolute."
-ROUNDING = 1e-10
-"""Of sums of some thousand terms of some hundred electrons, relative to the largest."""
-
-
-def recipe(**more):
-    return Recipe(**({"group": OR.group} | more))
-
-
-def exact(**more):
-    """|F|² of every reflection of OR, without noise and without σ."""
-    return measured(OR, OR.sphere(D_MIN), **more)
-
-
-def noisy(**more):
-    return measured(OR, OR.sphere(D_MIN), **({"scale": 0.02, "relative": 0.03, "floor": 0.3} | more))
-
-
-def by_index(made):
-    """m -> n_m of a coefficient set."""
-    return dict(zip(map(tuple, made.indices.tolist()), made.values.tolist(), strict=True))
-
-
-def agrees_with_the_structure(made, one, *, factor=1.0, bound=ROUNDING):
-    """n_m = F(−m)/V for every coefficient, and none is missing of those the group allows (conventions, section 2)."""
-    factors = one.factors(-made.indices) * factor / one.lattice.volume
-    others = made.indices.any(axis=1)
-    worst = np.abs(made.values - factors)[others].max()
-    assert worst <= bound * np.abs(factors).max()
-    spacing = 2 * np.pi / np.linalg.norm(made.indices[others] @ one.lattice.reciprocal, axis=1)
-    all_of = one.sphere(spacing.min() * (1 - 1e-9), half=True)
-    allowed = np.abs(one.factors(all_of)) > 1e-9
-    assert np.count_nonzero(others) == np.count_nonzero(allowed)
 
 
 # Nothing asked
@@ -68,15 +41,15 @@ def agrees_with_the_structure(made, one, *, factor=1.0, bound=ROUNDING):
 
 def test_amplitudes_in_p1_pass_through():
     """Nothing is asked, so nothing is done and nothing is said of steps that were not taken."""
-    given_ = measured(OR, OR.sphere(D_MIN, half=True), quantity="amplitude")
-    given_ = given_.select(given_.observed > 0)
-    prepared = prepare_reflections(given_, Recipe(group=P1))
+    given = measured(OR, OR.sphere(D_MIN, half=True), quantity="amplitude")
+    given = given.select(given.observed > 0)
+    prepared = prepare_reflections(given, Recipe(group=P1))
     agrees_with_the_structure(prepared.coefficients(), OR)
     assert prepared.converted is None
     assert prepared.plot is None
     assert prepared.zero_term is None
     assert prepared.notes == (NO_SCALE,)
-    n = given_.count
+    n = given.count
     assert prepared.applied == (
         f"{n} measurements merged to {n} unique in {P1.name}, Friedel mates joined",
         f"expanded by {P1.name} from {n} unique to {n} reflections",
@@ -84,8 +57,8 @@ def test_amplitudes_in_p1_pass_through():
 
 
 def test_an_absolute_scale_that_was_given_stays():
-    given_ = replace(measured(OR, OR.sphere(2.0), quantity="amplitude"), scale="absolute")
-    prepared = prepare_reflections(given_, recipe())
+    given = replace(measured(OR, OR.sphere(2.0), quantity="amplitude"), scale="absolute")
+    prepared = prepare_reflections(given, recipe())
     assert prepared.unique.scale == "absolute"
     assert NO_SCALE not in prepared.notes
     assert prepared.zero_term is None
@@ -126,10 +99,10 @@ def test_without_friedels_law_mates_stand_for_themselves():
     images = np.concatenate([OR.group.rotations @ site + OR.group.translations for site in OR.sites])
     factors = OR.factors(indices) + 4j * np.exp(2j * np.pi * (indices @ images.T)).sum(axis=1)
     allowed = np.abs(factors) > 1e-9
-    given_ = replace(
+    given = replace(
         measured(OR, indices), observed=np.abs(factors) ** 2, phase=np.where(allowed, np.angle(factors), np.nan)
     )
-    prepared = prepare_reflections(given_, recipe(friedel=False, amplitudes="root"))
+    prepared = prepare_reflections(given, recipe(friedel=False, amplitudes="root"))
     made = prepared.coefficients()
     assert not made.real
     assert made.count == np.count_nonzero(allowed)
@@ -141,7 +114,7 @@ def test_without_friedels_law_mates_stand_for_themselves():
     np.testing.assert_allclose([found[m] for m in expected], list(expected.values()), rtol=0, atol=ROUNDING)
     assert "Friedel mates kept apart" in prepared.applied[0]
     # Joined, the same intensities are a different set: mates differ by far more than rounding.
-    joined = prepare_reflections(replace(given_, phase=None), recipe(amplitudes="root"))
+    joined = prepare_reflections(replace(given, phase=None), recipe(amplitudes="root"))
     assert joined.unique.count < prepared.unique.count
     assert joined.merged.overall.r_merge > 0.01
     assert prepared.merged.overall.r_merge < 1e-12
@@ -149,9 +122,9 @@ def test_without_friedels_law_mates_stand_for_themselves():
 
 def test_absences_are_left_out_and_counted():
     """P2₁2₁2₁ forbids h00, 0k0 and 00l of odd index (International Tables A, No. 19)."""
-    given_ = noisy()
-    odd = (np.count_nonzero(given_.indices, axis=1) == 1) & (given_.indices.sum(axis=1) % 2 != 0)
-    prepared = prepare_reflections(given_, recipe())
+    given = noisy()
+    odd = (np.count_nonzero(given.indices, axis=1) == 1) & (given.indices.sum(axis=1) % 2 != 0)
+    prepared = prepare_reflections(given, recipe())
     assert odd.sum() > 20
     assert prepared.merged.absences.row.tolist() == np.flatnonzero(odd).tolist()
     assert f"{odd.sum()} rows are systematically absent in P 21 21 21 and left out." in prepared.notes
@@ -183,23 +156,21 @@ def test_corrections_are_undone_in_words_and_numbers():
 
 
 def test_root():
-    given_ = measured(OR, OR.sphere(D_MIN, half=True), relative=0.02)
-    given_ = given_.select(given_.observed > 1e-6)
-    given_ = replace(given_, row=np.arange(given_.count))
-    prepared = prepare_reflections(given_, Recipe(group=P1, amplitudes="root"))
+    given = measured(OR, OR.sphere(D_MIN, half=True), relative=0.02)
+    given = given.select(given.observed > 1e-6)
+    given = replace(given, row=np.arange(given.count))
+    prepared = prepare_reflections(given, Recipe(group=P1, amplitudes="root"))
     row = prepared.unique.row
-    np.testing.assert_allclose(prepared.unique.observed, np.sqrt(given_.observed[row]), rtol=1e-14)
-    np.testing.assert_allclose(
-        prepared.unique.sigma, given_.sigma[row] / (2 * np.sqrt(given_.observed[row])), rtol=1e-14
-    )
+    np.testing.assert_allclose(prepared.unique.observed, np.sqrt(given.observed[row]), rtol=1e-14)
+    np.testing.assert_allclose(prepared.unique.sigma, given.sigma[row] / (2 * np.sqrt(given.observed[row])), rtol=1e-14)
     assert "amplitudes are the square roots of the intensities" in prepared.applied
     assert prepared.converted.negative == 0
 
 
 def test_negative_intensities_by_each_rule():
     """Refused, left out and counted, or kept: no fourth way, and none is lost unmentioned."""
-    given_ = noisy(floor=2.0)
-    kept = prepare_reflections(given_, recipe())
+    given = noisy(floor=2.0)
+    kept = prepare_reflections(given, recipe())
     merged = kept.merged.reflections
     negative = np.flatnonzero(merged.observed < 0)
     assert negative.size > 10
@@ -208,13 +179,13 @@ def test_negative_intensities_by_each_rule():
     assert kept.converted.negative == negative.size
     assert f"{negative.size} merged intensities are negative by noise." in kept.notes
     assert "amplitudes are the Bayesian estimate of French & Wilson (1978)" in kept.applied
-    excluded = prepare_reflections(given_, recipe(amplitudes="root_exclude"))
+    excluded = prepare_reflections(given, recipe(amplitudes="root_exclude"))
     assert excluded.unique.count == merged.count - negative.size
     assert set(excluded.unique.row) == set(merged.row) - set(merged.row[negative])
     assert f"{negative.size} merged intensities are negative by noise." in excluded.notes
     assert f"{negative.size} reflections without a root are left out." in excluded.notes
     with pytest.raises(InputError) as caught:
-        prepare_reflections(given_, recipe(amplitudes="root"))
+        prepare_reflections(given, recipe(amplitudes="root"))
     assert caught.value.path == ("observed",)
     assert caught.value.rows == tuple(merged.row[negative][:10])
 
@@ -235,11 +206,6 @@ def test_the_bayesian_estimate_nears_the_root_where_intensities_are_strong():
     weak = ratio < 0.3
     assert weak.sum() > 5
     assert np.all(unique.observed[weak] > np.sqrt(np.maximum(merged.observed[weak], 0)))
-
-
-def plain_kinds(indices):
-    """ε and centric of P2₁2₁2₁ by what its twofold axes do: 2 on an axis, centric where an index is zero."""
-    return np.where(np.count_nonzero(indices, axis=1) == 1, 2, 1), np.any(indices == 0, axis=1)
 
 
 def test_the_prior_knows_axes_and_centric_zones():
@@ -271,8 +237,8 @@ def test_the_prior_knows_axes_and_centric_zones():
 
 
 def test_amplitudes_need_no_rule():
-    given_ = measured(OR, OR.sphere(D_MIN), quantity="amplitude")
-    made = [prepare_reflections(given_, recipe(amplitudes=rule)) for rule in ("bayesian", "root", "root_exclude")]
+    given = measured(OR, OR.sphere(D_MIN), quantity="amplitude")
+    made = [prepare_reflections(given, recipe(amplitudes=rule)) for rule in ("bayesian", "root", "root_exclude")]
     for one in made:
         assert one.converted is None
         np.testing.assert_array_equal(one.unique.observed, made[0].unique.observed)
@@ -285,10 +251,10 @@ def test_amplitudes_need_no_rule():
 
 @pytest.mark.parametrize(("phase", "sign"), [(0.0, 1), (math.pi, -1), (None, 1)], ids=["0°", "180°", "no phase"])
 def test_the_zero_term_of_its_row(phase, sign):
-    given_ = with_row(measured(OR, OR.sphere(1.5), quantity="amplitude"), (0, 0, 0), 150.0, phase)
-    prepared = prepare_reflections(given_, recipe())
+    given = with_row(measured(OR, OR.sphere(1.5), quantity="amplitude"), (0, 0, 0), 150.0, phase)
+    prepared = prepare_reflections(given, recipe())
     assert prepared.zero_term == pytest.approx(sign * 150)
-    assert prepared.given.count == given_.count - 1
+    assert prepared.given.count == given.count - 1
     assert f"zero term {sign * 150} of its own row" in prepared.applied
     made = prepared.coefficients()
     assert by_index(made)[0, 0, 0] == pytest.approx(sign * 150 / OR.lattice.volume)
@@ -296,142 +262,39 @@ def test_the_zero_term_of_its_row(phase, sign):
 
 
 def test_the_zero_term_is_scaled_with_the_others():
-    given_ = with_row(measured(OR, OR.sphere(1.5), quantity="amplitude"), (0, 0, 0), 150.0, 0.0)
-    prepared = prepare_reflections(given_, recipe(scale="factor", factor=4.0, content=CONTENT, units=4))
+    given = with_row(measured(OR, OR.sphere(1.5), quantity="amplitude"), (0, 0, 0), 150.0, 0.0)
+    prepared = prepare_reflections(given, recipe(scale="factor", factor=4.0, content=CONTENT, units=4))
     assert prepared.zero_term == pytest.approx(600)
     assert not any("of the content" in words for words in prepared.applied)
 
 
 def test_the_zero_term_given_twice_alike():
-    given_ = measured(OR, OR.sphere(1.5), quantity="amplitude")
-    given_ = with_row(with_row(given_, (0, 0, 0), 150.0, 0.0), (0, 0, 0), 150.0, 0.0)
-    prepared = prepare_reflections(given_, recipe())
+    given = measured(OR, OR.sphere(1.5), quantity="amplitude")
+    given = with_row(with_row(given, (0, 0, 0), 150.0, 0.0), (0, 0, 0), 150.0, 0.0)
+    prepared = prepare_reflections(given, recipe())
     assert prepared.zero_term == pytest.approx(150)
-    assert prepared.given.count == given_.count - 2
+    assert prepared.given.count == given.count - 2
 
 
 def test_an_intensity_has_no_zero_term():
-    given_ = with_row(exact(), (0, 0, 0), 1e4, 0.0)
-    prepared = prepare_reflections(given_, recipe(amplitudes="root"))
+    given = with_row(exact(), (0, 0, 0), 1e4, 0.0)
+    prepared = prepare_reflections(given, recipe(amplitudes="root"))
     assert prepared.zero_term is None
-    assert prepared.given.count == given_.count - 1
+    assert prepared.given.count == given.count - 1
     assert "1 rows of the zero term hold an intensity, which has no sign, and are left out." in prepared.notes
     assert prepared.coefficients().tally.zero_term == "absent"
 
 
 def test_a_zero_term_that_is_not_real_belongs_to_a_complex_density():
-    given_ = with_row(measured(OR, OR.sphere(1.5), quantity="amplitude"), (0, 0, 0), 150.0, math.radians(30))
+    given = with_row(measured(OR, OR.sphere(1.5), quantity="amplitude"), (0, 0, 0), 150.0, math.radians(30))
     with pytest.raises(InputError) as caught:
-        prepare_reflections(given_, recipe())
+        prepare_reflections(given, recipe())
     assert caught.value.path == ("phase",)
-    assert caught.value.rows == (given_.count - 1,)
-    prepared = prepare_reflections(given_, recipe(friedel=False))
+    assert caught.value.rows == (given.count - 1,)
+    prepared = prepare_reflections(given, recipe(friedel=False))
     expected = 150 * complex(math.sqrt(3) / 2, 0.5)
     assert prepared.zero_term == pytest.approx(expected)
     assert by_index(prepared.coefficients())[0, 0, 0] == pytest.approx(expected / OR.lattice.volume)
-
-
-# The scale
-
-
-def test_the_zero_term_of_the_content_where_the_scale_is_absolute():
-    asked = {"amplitudes": "root", "content": CONTENT, "units": 4.0}
-    prepared = prepare_reflections(exact(scale=0.04), recipe(scale="factor", factor=5.0, **asked))
-    assert prepared.zero_term == 4 * ELECTRONS
-    assert f"zero term {4 * ELECTRONS} of the content, {FORMULA} × 4" in prepared.applied
-    assert by_index(prepared.coefficients())[0, 0, 0] == pytest.approx(4 * ELECTRONS / OR.lattice.volume)
-    assert prepare_reflections(exact(), recipe(**asked)).zero_term is None
-
-
-def test_a_factor_multiplies_amplitudes():
-    """Of amplitudes made from intensities too: on k|F|² it is k^−½."""
-    prepared = prepare_reflections(exact(scale=0.04), recipe(amplitudes="root", scale="factor", factor=0.04**-0.5))
-    agrees_with_the_structure(prepared.coefficients(), OR)
-    assert prepared.unique.scale == "absolute"
-    assert prepared.plot is None
-    assert "amplitudes multiplied by 5" in prepared.applied
-    assert NO_SCALE not in prepared.notes
-    noise = prepare_reflections(noisy(), recipe())
-    scaled = prepare_reflections(noisy(), recipe(scale="factor", factor=3.0))
-    np.testing.assert_allclose(scaled.unique.observed, 3 * noise.unique.observed, rtol=1e-14)
-    np.testing.assert_allclose(scaled.unique.sigma, 3 * noise.unique.sigma, rtol=1e-14)
-
-
-CENTRED = {
-    "P 21 21 21": {},
-    "C 1 2 1": {"lengths": (14.1, 7.3, 9.2), "angles": (90.0, 101.0, 90.0)},
-    "C 1 2/c 1": {"lengths": (14.1, 8.3, 11.2), "angles": (90.0, 101.0, 90.0)},
-    "F 2 2 2": {"lengths": (13.1, 15.2, 17.3)},
-}
-
-
-@pytest.mark.parametrize("symbol", CENTRED)
-def test_wilsons_plot_recovers_scale_and_b_in_every_centring(symbol):
-    """ln k and B of four structures at random: their mean within 4 of its own uncertainties, some 6 % of k.
-
-    A centring left out of the sum of squares would be a factor 2 or 4 in k, ten such uncertainties or more.
-    """
-    scale = 0.02
-    deviations, variances = [], []
-    for seed in range(4):
-        one = crystal(symbol, seed=seed, **CENTRED[symbol])
-        given_ = measured(one, one.sphere(0.9, half=True), scale=scale, relative=0.02, floor=0.05, seed=seed)
-        asked = Recipe(group=one.group, scale="wilson", content=CONTENT, units=one.units)
-        prepared = prepare_reflections(given_, asked)
-        plot = prepared.plot
-        deviations.append((math.log(plot.scale / scale), plot.b - B))
-        variances.append(((plot.scale_sigma / plot.scale) ** 2, plot.b_sigma**2))
-        assert prepared.unique.scale == "absolute"
-        assert prepared.zero_term == one.units * ELECTRONS
-        assert any("put on the absolute scale by Wilson's plot" in words for words in prepared.applied)
-        # What is divided by k as an intensity is divided by √k as an amplitude.
-        bare = prepare_reflections(given_, replace(asked, scale="none"))
-        np.testing.assert_allclose(prepared.unique.observed, bare.unique.observed / math.sqrt(plot.scale), rtol=1e-13)
-    bound = 4 * np.sqrt(np.sum(variances, axis=0)) / 4
-    assert np.all(np.abs(np.mean(deviations, axis=0)) < bound)
-    assert bound[0] < math.log(2) / 2
-
-
-def test_wilsons_plot_is_that_of_the_merged_reflections():
-    """With Σf² by xraydb, ε and centric by plain counting. The libraries' tables agree to 1e-6 of an atom."""
-    prepared = prepare_reflections(noisy(), recipe(scale="wilson", content=CONTENT, units=4))
-    merged = prepared.merged.reflections
-    s = OR.lattice.sine_over_wavelength(merged.indices)
-    squares = 4 * sum(xraydb.f0(name, s) ** 2 for name in ATOMS)
-    epsilon, centric = plain_kinds(merged.indices)
-    plain = wilson_plot(merged, squares, epsilon=epsilon, centric=centric)
-    assert prepared.plot.scale == pytest.approx(plain.scale, rel=1e-5)
-    assert prepared.plot.scale_sigma == pytest.approx(plain.scale_sigma, rel=1e-5)
-    assert prepared.plot.b == pytest.approx(plain.b, abs=1e-5)
-    without = wilson_plot(merged, squares, centric=centric)
-    assert without.scale != pytest.approx(plain.scale, rel=1e-3)
-
-
-@settings(max_examples=10)
-@given(exponent=st.integers(-20, 20))
-def test_wilsons_scale_follows_the_scale_of_the_data(exponent):
-    """Law: intensities times c give the same absolute amplitudes; c is a power of two, but logarithms round."""
-    asked = recipe(scale="wilson", content=CONTENT, units=4)
-    factor = 2.0**exponent
-    one, other = prepare_reflections(noisy(), asked), prepare_reflections(noisy().scaled(factor), asked)
-    assert other.plot.scale == pytest.approx(factor * one.plot.scale, rel=1e-9)
-    np.testing.assert_allclose(other.unique.observed, one.unique.observed, rtol=1e-9)
-    np.testing.assert_allclose(other.unique.sigma, one.unique.sigma, rtol=1e-9)
-
-
-def test_wilson_against_scattering_lengths():
-    """Atoms at random with the b of carbon, which no angle weakens: k|F|² is back on fm²."""
-    length = 6.646  # fm, Sears, Neutron News 3 (1992) 26, memory
-    sites = np.random.default_rng(5).random((60, 3))
-    indices = OR.sphere(0.9, half=True)
-    factors = length * np.exp(2j * np.pi * (indices @ sites.T)).sum(axis=1)
-    given_ = replace(measured(OR, indices), observed=7.0 * np.abs(factors) ** 2, phase=np.angle(factors))
-    asked = Recipe(group=P1, scale="wilson", content=composition("C"), units=60, probe="neutron", amplitudes="root")
-    prepared = prepare_reflections(given_, asked)
-    assert prepared.plot.scale == pytest.approx(7.0, abs=4 * prepared.plot.scale_sigma)
-    assert prepared.plot.scale_sigma < 1
-    assert abs(prepared.plot.b) < 4 * prepared.plot.b_sigma
-    assert prepared.zero_term == pytest.approx(60 * length, rel=1e-3)
 
 
 # Outliers
@@ -439,10 +302,10 @@ def test_wilson_against_scattering_lengths():
 
 def spoilt(rows, factor=4.0):
     """Noisy strong measurements of which some are wrong by a factor."""
-    given_ = noisy()
-    observed = given_.observed.copy()
+    given = noisy()
+    observed = given.observed.copy()
     observed[rows] *= factor
-    return replace(given_, observed=observed)
+    return replace(given, observed=observed)
 
 
 def of_orbits(prepared_rows, size, count):
@@ -474,12 +337,12 @@ def test_of_two_that_differ_none_is_left_out_and_the_note_says_so():
     half = OR.sphere(D_MIN, half=True)
     # Mates of one general octant: orbits of two.
     octant = half[np.all(half > 0, axis=1)]
-    given_ = measured(OR, np.concatenate([octant, -octant]), scale=0.02, relative=0.03, floor=0.3)
-    strongest = int(np.argmax(given_.observed))
-    observed = given_.observed.copy()
+    given = measured(OR, np.concatenate([octant, -octant]), scale=0.02, relative=0.03, floor=0.3)
+    strongest = int(np.argmax(given.observed))
+    observed = given.observed.copy()
     observed[strongest] *= 3
-    prepared = prepare_reflections(replace(given_, observed=observed), recipe(reject_outliers=True))
-    assert prepared.merged.overall.measurements == given_.count
+    prepared = prepare_reflections(replace(given, observed=observed), recipe(reject_outliers=True))
+    assert prepared.merged.overall.measurements == given.count
     listed = prepared.merged.outliers
     assert strongest in listed.row
     assert not listed.rejected.any()
@@ -508,10 +371,10 @@ def test_without_phases_the_autocorrelation_can_be_summed():
 
 def test_phases_of_some():
     """Unknown phases stay unknown, in all equivalents and nowhere else."""
-    given_ = exact()
-    kept = prepare_reflections(given_, recipe(amplitudes="root"))
+    given = exact()
+    kept = prepare_reflections(given, recipe(amplitudes="root"))
     # Of one octant alone, so that an orbit has its phase from a single row.
-    octant = given_.select(np.all(given_.indices >= 0, axis=1) & (given_.observed > 0))
+    octant = given.select(np.all(given.indices >= 0, axis=1) & (given.observed > 0))
     phase = octant.phase.copy()
     phase[::3] = np.nan
     prepared = prepare_reflections(replace(octant, phase=phase), recipe(amplitudes="root"))
@@ -530,14 +393,14 @@ def test_a_layer_stack():
     period, orders = 50.0, np.arange(1, 15)
     factors = 9.0 * np.cos(2 * np.pi * orders * 11 / period) + 5.0 * (-1.0) ** orders
     line = Lattice.from_period(period)
-    given_ = replace(
+    given = replace(
         measured(OR, OR.sphere(3.0)).select(np.arange(14)),
         lattice=line,
         indices=orders[:, None],
         observed=factors**2,
         phase=np.where(factors > 0, 0.0, np.pi),
     )
-    prepared = prepare_reflections(given_, Recipe(group=stack_group("-1"), amplitudes="root"))
+    prepared = prepare_reflections(given, Recipe(group=stack_group("-1"), amplitudes="root"))
     made = prepared.coefficients()
     assert made.indices[:, 0].tolist() == orders.tolist()
     np.testing.assert_allclose(made.values, factors / period, atol=1e-12)
@@ -552,7 +415,7 @@ def test_a_planar_lattice():
     indices = np.array([(h, k) for h in range(-6, 7) for k in range(-6, 7) if (h, k) != (0, 0)])
     factors = 3.0 * np.exp(2j * np.pi * (indices @ images.T)).sum(axis=1).real
     template = measured(OR, OR.sphere(2.0)).select(np.arange(len(indices)))
-    given_ = replace(
+    given = replace(
         template,
         lattice=plane,
         indices=np.asfortranarray(indices),
@@ -560,7 +423,7 @@ def test_a_planar_lattice():
         phase=np.where(factors > 0, 0.0, np.pi),
         row=np.arange(len(indices)),
     )
-    prepared = prepare_reflections(given_, Recipe(group=group, amplitudes="root"))
+    prepared = prepare_reflections(given, Recipe(group=group, amplitudes="root"))
     made = prepared.coefficients()
     lookup = dict(zip(map(tuple, (-indices).tolist()), factors.tolist(), strict=True))
     for m, value in by_index(made).items():
@@ -576,12 +439,12 @@ def test_a_planar_lattice():
 @pytest.mark.parametrize("reject", [False, True])
 def test_every_row_is_accounted_for(rule, reject):
     """Rows in = zero terms + absent + rejected + merged; merged = unique + without a root."""
-    given_ = with_row(spoilt(of_orbits(noisy(), 8, 3)), (0, 0, 0), 5.0, 0.0, 1.0)
-    prepared = prepare_reflections(given_, recipe(amplitudes=rule, reject_outliers=reject))
+    given = with_row(spoilt(of_orbits(noisy(), 8, 3)), (0, 0, 0), 5.0, 0.0, 1.0)
+    prepared = prepare_reflections(given, recipe(amplitudes=rule, reject_outliers=reject))
     merged = prepared.merged
     rejected = np.count_nonzero(merged.outliers.rejected)
     assert rejected == (3 if reject else 0)
-    assert prepared.given.count == given_.count - 1
+    assert prepared.given.count == given.count - 1
     assert prepared.given.count == merged.absences.count + rejected + merged.overall.measurements
     assert merged.overall.measurements == merged.redundancy.sum()
     assert prepared.unique.count == merged.reflections.count - prepared.converted.excluded_rows.size
@@ -622,99 +485,14 @@ def flat(thing):
 def test_the_same_data_give_the_same_figures():
     """To the last bit, the random halves of CC½ among them; and what was given is left as it was."""
     asked = recipe(scale="wilson", content=CONTENT, units=4)
-    given_, untouched = noisy(), noisy()
+    given, untouched = noisy(), noisy()
     np.random.seed(1)  # noqa: NPY002  (whatever the state of the global generator)
-    one = prepare_reflections(given_, asked)
+    one = prepare_reflections(given, asked)
     np.random.seed(2)  # noqa: NPY002
-    two = prepare_reflections(given_, asked)
+    two = prepare_reflections(given, asked)
     for first, second in zip(flat(one), flat(two), strict=True):
         np.testing.assert_array_equal(first, second)
-    for first, second in zip(flat(given_), flat(untouched), strict=True):
+    for first, second in zip(flat(given), flat(untouched), strict=True):
         if isinstance(first, np.ndarray):
             np.testing.assert_array_equal(first, second)
     assert one.merged.overall.cc_half > 0.9
-
-
-# Refusals
-
-
-def without_sigma():
-    return replace(noisy(), sigma=None)
-
-
-def zero_alone():
-    return with_row(measured(OR, OR.sphere(3.0), quantity="amplitude"), (0, 0, 0), 1.0).select(np.array([-1]))
-
-
-def two_zero_terms():
-    given_ = measured(OR, OR.sphere(3.0), quantity="amplitude")
-    return with_row(with_row(given_, (0, 0, 0), 150.0), (0, 0, 0), 151.0)
-
-
-def wrong_phase():
-    """One row of a general orbit turned by 40°."""
-    given_ = exact()
-    row = np.flatnonzero(np.all(given_.indices > 0, axis=1))[0]
-    phase = given_.phase.copy()
-    phase[row] += math.radians(40)
-    return replace(given_, phase=phase)
-
-
-def only_absent():
-    return measured(OR, np.array([[1, 0, 0], [0, 3, 0]]), floor=1.0)
-
-
-def few():
-    return noisy().select(np.arange(0, 60, 4))
-
-
-def amplitudes_given():
-    return measured(OR, OR.sphere(3.0), quantity="amplitude")
-
-
-WILSON = {"scale": "wilson", "content": CONTENT, "units": 4}
-
-
-@pytest.mark.parametrize(
-    ("make", "asked", "path"),
-    [
-        (noisy, {"corrections": (Polarisation(),)}, "wavelength"),
-        (noisy, {"corrections": (Polarisation(),), "wavelength": 2.5}, "wavelength"),
-        (noisy, {"corrections": (Polarisation(),), "wavelength": -1.0}, "wavelength"),
-        (amplitudes_given, {"corrections": (Polarisation(),), "wavelength": 0.7}, "corrections"),
-        (noisy, {"amplitudes": "guess"}, "amplitudes"),
-        (amplitudes_given, {"amplitudes": "guess"}, "amplitudes"),
-        (noisy, {"scale": "guess"}, "scale"),
-        (noisy, {"scale": "wilson"}, "content"),
-        (noisy, {**WILSON, "probe": "electron"}, "probe"),
-        (noisy, {**WILSON, "units": 0.0}, "units"),
-        (few, WILSON, "reflections"),
-        (noisy, {"scale": "factor"}, "factor"),
-        (noisy, {"scale": "factor", "factor": 0.0}, "factor"),
-        (noisy, {"scale": "factor", "factor": -2.0}, "factor"),
-        (noisy, {"scale": "factor", "factor": math.nan}, "factor"),
-        (noisy, {"factor": 2.0}, "factor"),
-        (noisy, {**WILSON, "factor": 2.0}, "factor"),
-        (without_sigma, {}, "sigma"),
-        (zero_alone, {}, "indices"),
-        (two_zero_terms, {}, "indices"),
-        (only_absent, {}, "indices"),
-        (wrong_phase, {"amplitudes": "root"}, "phase"),
-        (noisy, {"group": space_group("P 4 2 2")}, "lattice"),
-        (noisy, {"group": plane_group("p2")}, "group"),
-    ],
-)
-def test_refusals_name_their_place(make, asked, path):
-    with pytest.raises(InputError) as caught:
-        prepare_reflections(make(), recipe(**asked))
-    assert caught.value.path == (path,)
-    assert caught.value.reason
-    assert caught.value.cure
-
-
-def test_rows_are_those_of_the_source():
-    """Whatever was left out before: rows 1000, 1001, … here."""
-    given_ = two_zero_terms()
-    with pytest.raises(InputError) as caught:
-        prepare_reflections(replace(given_, row=given_.row + 1000), recipe())
-    assert caught.value.rows == (1000 + given_.count - 2, 1000 + given_.count - 1)

@@ -317,7 +317,9 @@ def test_a_noisy_outer_shell(floor, warns):
     made = summary(noisy(floor=floor))
     last = made.agreement_shells[-1]
     assert (last.mean_signal < 1) == warns
-    expected = [f"From {last.d_max:.3g} to {last.d_min:.3g} Å the mean I/σ is {last.mean_signal:.2g}: mostly noise."]
+    expected = [
+        f"From {last.d_max:.3g} to {last.d_min:.3g} Å the mean of value over σ is {last.mean_signal:.2g}: mostly noise."
+    ]
     assert warned(made, "mostly noise") == (expected if warns else [])
 
 

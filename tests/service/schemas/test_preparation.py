@@ -52,7 +52,7 @@ def test_file_comes_as_a_part_and_in_no_other_way():
         {"corrections": [{"kind": "film_absorption", "thickness_um": 0, "mu_per_cm": 1}]},
         {"corrections": [{"kind": "film_absorption", "thickness_um": 1, "mu_per_cm": -1}]},
         {"corrections": [{"kind": "footprint", "length_mm": -1, "width_mm": 1}]},
-        {"corrections": [{"kind": "lorentz"}] * 5},
+        {"corrections": [{"kind": "lorentz"}] * 6},
         {"amplitudes": "abs"},
         {"reject_outliers": "yes"},
         {"scale": "wilson"},
