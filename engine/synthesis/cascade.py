@@ -37,6 +37,9 @@ ROWS_PER_TERM = 8
 than it saves, and it would be large beside the output."""
 CHUNK = 1 << 15
 """Most coefficients scattered at a time, so that temporaries stay in cache."""
+SHARED_FROM = 1 << 18
+"""Coefficients from which on threads share the first stage: with fewer, they wait for each other longer than they
+work, each needing the interpreter between its many short calls."""
 SECONDS_PER_COEFFICIENT = 3.0e-8
 SECONDS_PER_BUTTERFLY = 1.1e-9
 
@@ -153,6 +156,7 @@ class _Cascade:
         self._shape = grid.shape
         self._lengths = lengths
         self._threads = demand.threads
+        self._count = modes.values.size
         self._low_k, self._low_l, self._stage, occupied = self._scatter(modes)
         self._first_stage(occupied)
         deep = self._stage.shape[2]
@@ -251,12 +255,18 @@ class _Cascade:
             self._each(transform, range(occupied.shape[0]))
 
     def _each(self, work: Callable[[int], None], items: range, *, alone: bool = False) -> None:
-        if alone or self._threads == 1 or len(items) == 1:
+        """Do all items, a run of neighbouring ones to each thread where there is enough to share."""
+        if alone or self._threads == 1 or self._count < SHARED_FROM:
             for item in items:
                 work(item)
             return
+
+        def share(part: np.ndarray[tuple[int], np.dtype[np.int64]]) -> None:
+            for item in part.tolist():
+                work(item)
+
         with ThreadPoolExecutor(self._threads) as pool:
-            list(pool.map(work, items))
+            list(pool.map(share, np.array_split(np.array(items), self._threads)))
 
     def _planes(self, rows: IntArray, out: AnyArray) -> None:
         """Stages 2 and 3 of the planes `rows` into `out`, contiguous, shape (planes, N_2, N_3)."""
