@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from typing import Any
 
+ROWS_SHOWN = 10
+
 
 def render_summary(summary: dict[str, Any]) -> str:
     """The summary as text: what was read, how good it is, what to beware of."""
@@ -39,6 +41,9 @@ def _quality(summary: dict[str, Any]) -> list[str]:
             f"  {summary['absences']} systematically absent: mean I/σ {_shown(summary['absence_signal'])}, "
             f"others {_shown(summary['other_signal'])}"
         )
+    if summary["outliers"]:
+        rows = ", ".join(str(row) for row in summary["outlier_rows"][:ROWS_SHOWN])
+        lines.append(f"  {summary['outliers']} outliers; the worst in rows {rows}, counted from 0")
     if summary["wilson_b"] is not None:
         lines.append(
             f"  Wilson's plot: B {summary['wilson_b']:.3g} ± {summary['wilson_b_sigma']:.2g} Å², "

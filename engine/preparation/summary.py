@@ -17,6 +17,7 @@ from engine.symmetry import classify, unique_reflections
 FEW_FOR_STATISTICS = 100
 """Unique reflections below which shells and intensity statistics say little."""
 SHELLS = 10
+OUTLIERS_NAMED = 100
 WEAK_SHELL = 1.0
 """⟨I/σ⟩ of the highest shell below which its reflections are mostly noise."""
 POOR_AGREEMENT = 0.3
@@ -71,6 +72,8 @@ class Summary:
     absence_signal, other_signal : float or None
         ⟨I/σ⟩ of systematically absent reflections, and of the others.
     outliers : int
+    outlier_rows : tuple of int
+        The worst of them, at most 100: rows of the source, counted from 0.
     negative : int or None
         Merged intensities below zero; None where amplitudes were given.
     centric_share : float
@@ -102,6 +105,7 @@ class Summary:
     absence_signal: float | None
     other_signal: float | None
     outliers: int
+    outlier_rows: tuple[int, ...]
     negative: int | None
     centric_share: float
     phased: int
@@ -164,6 +168,9 @@ def summarize_set(prepared: Prepared) -> Summary:
         absence_signal=merged.absences.mean_signal,
         other_signal=merged.absences.mean_signal_of_others,
         outliers=int(merged.outliers.row.size),
+        outlier_rows=tuple(
+            merged.outliers.row[np.argsort(-np.abs(merged.outliers.deviation))][:OUTLIERS_NAMED].tolist()
+        ),
         negative=None if prepared.converted is None else prepared.converted.negative,
         centric_share=float(classify(unique.indices, recipe.group).centric.mean()),
         phased=phased,

@@ -82,6 +82,7 @@ class SummaryAnswer(BaseModel):
     absence_signal: float | None
     other_signal: float | None
     outliers: int
+    outlier_rows: list[int] = Field(description="the worst, at most 100; rows of the file, counted from 0")
     negative: int | None = Field(description="merged intensities below zero; null where amplitudes were given")
     centric_share: float
     phased: int

@@ -210,6 +210,7 @@ def test_outliers_and_excluded_are_counted():
     prepared = prepare_reflections(replace(given, observed=observed), recipe(amplitudes="root_exclude"))
     made = summarize_set(prepared)
     assert made.outliers == prepared.merged.outliers.row.size >= 1
+    assert sorted(made.outlier_rows) == sorted(prepared.merged.outliers.row.tolist())
     assert made.negative == np.count_nonzero(prepared.merged.reflections.observed < 0) > 0
     assert made.unique == prepared.merged.reflections.count - made.negative
 
