@@ -111,6 +111,19 @@ MAX_INDEX = 2**20
 """Bound of an index: beyond it a phase 2π m·x in double precision loses its tenth digit."""
 
 
+def refuse_rows(bad: BoolArray, name: str, reason: str, cure: str) -> None:
+    """Refuse the rows where `bad` is true.
+
+    Raises
+    ------
+    InputError
+        Naming the column and the first of the rows.
+    """
+    rows = np.flatnonzero(bad)
+    if rows.size:
+        raise InputError.for_rows(name, rows, reason, cure)
+
+
 def _real(value: ArrayLike, name: str | Sequence[str | int]) -> FloatArray:
     try:
         array = np.asarray(value)

@@ -17,7 +17,7 @@ from typing import Literal, get_args
 import numpy as np
 from numpy.typing import ArrayLike
 
-from engine.arrays import MAX_INDEX, BoolArray, ComplexArray, FloatArray, IntArray, as_choice
+from engine.arrays import MAX_INDEX, BoolArray, ComplexArray, FloatArray, IntArray, as_choice, refuse_rows
 from engine.coefficients import CoefficientSet, Tally
 from engine.errors import InputError
 from engine.lattice import Lattice
@@ -171,9 +171,9 @@ def _read(lattice: Lattice, columns: Columns, missing_phase: MissingPhase) -> _R
     merit = _column(columns.merit, "merit", size)
     for column, name in ((sigma, "sigma"), (phase_sigma, "phase_sigma_deg")):
         if column is not None:
-            _refuse_rows(column < 0, name, "is negative", "give standard uncertainties of 0 or more")
+            refuse_rows(column < 0, name, "is negative", "give standard uncertainties of 0 or more")
     if merit is not None:
-        _refuse_rows((merit < 0) | (merit > 1), "merit", "lies outside 0…1", "give figures of merit from 0 to 1")
+        refuse_rows((merit < 0) | (merit > 1), "merit", "lies outside 0…1", "give figures of merit from 0 to 1")
     return _Rows(
         indices,
         values,
@@ -213,10 +213,10 @@ def _numbers(column: ArrayLike, name: str) -> FloatArray:
 
 
 def _index_column(array: FloatArray, name: str) -> IntArray:
-    _refuse_rows(~np.isfinite(array), name, "is not a finite number", "give integer indices")
+    refuse_rows(~np.isfinite(array), name, "is not a finite number", "give integer indices")
     whole = np.rint(array)
-    _refuse_rows(whole != array, name, "is not a whole number", "give integer indices")
-    _refuse_rows(np.abs(whole) > MAX_INDEX, name, f"lies beyond ±{MAX_INDEX}", "check the indices and the cell")
+    refuse_rows(whole != array, name, "is not a whole number", "give integer indices")
+    refuse_rows(np.abs(whole) > MAX_INDEX, name, f"lies beyond ±{MAX_INDEX}", "check the indices and the cell")
     return whole.astype(np.int64)
 
 
@@ -228,7 +228,7 @@ def _column(column: ArrayLike | None, name: str, size: int) -> FloatArray | None
         have = array.size if array.ndim == 1 else "an array of"
         raise InputError(name, f"has {have} rows where the indices have {size}", "give columns of equal length")
     if name != "phase_deg":
-        _refuse_rows(~np.isfinite(array), name, "is not a finite number", "give finite numbers")
+        refuse_rows(~np.isfinite(array), name, "is not a finite number", "give finite numbers")
     return array
 
 
@@ -248,14 +248,14 @@ def _strengths(columns: Columns, size: int, missing_phase: MissingPhase) -> tupl
     amplitude = _column(columns.amplitude, "amplitude", size)
     if amplitude is None:
         raise InputError("amplitude", "is absent", "give amplitude and phase_deg, or real and imag")
-    _refuse_rows(amplitude < 0, "amplitude", "is negative", "give the magnitude and add 180 to the phase")
+    refuse_rows(amplitude < 0, "amplitude", "is negative", "give the magnitude and add 180 to the phase")
     phase = _column(columns.phase_deg, "phase_deg", size)
     if phase is None:
         phase = np.full(size, np.nan)
-    _refuse_rows(np.isinf(phase), "phase_deg", "is infinite", "give degrees, or null where unknown")
+    refuse_rows(np.isinf(phase), "phase_deg", "is infinite", "give degrees, or null where unknown")
     known = ~np.isnan(phase)
     if missing_phase == "refuse":
-        _refuse_rows(~known, "phase_deg", "is missing", 'give every phase, or ask for missing_phase "omit"')
+        refuse_rows(~known, "phase_deg", "is missing", 'give every phase, or ask for missing_phase "omit"')
     return amplitude * _unit_phasor(np.where(known, phase, 0.0)), known
 
 
@@ -265,12 +265,6 @@ def _unit_phasor(degrees: FloatArray) -> ComplexArray:
     quarter, rest = np.divmod(turns, 90.0)
     quarters = np.array([1, 1j, -1, -1j], dtype=np.complex128)
     return quarters[quarter.astype(np.int64) % 4] * np.exp(1j * np.deg2rad(rest))
-
-
-def _refuse_rows(bad: BoolArray, name: str, reason: str, cure: str) -> None:
-    rows = np.flatnonzero(bad)
-    if rows.size:
-        raise InputError.for_rows(name, rows, reason, cure)
 
 
 def _join_repeats(rows: _Rows) -> tuple[_Rows, int]:

@@ -15,7 +15,7 @@ from engine.reflections import Reflections
 from engine.symmetry import Group, expand
 from service.interpret_file import prepared, symmetry_group
 from service.problems import at, located
-from service.schemas.coefficient_set import INDEX_NAMES, Cell, CoefficientSetIn
+from service.schemas.coefficient_set import COLUMN_NAMES, INDEX_NAMES, Cell, CoefficientSetIn
 from service.schemas.products import ProductIn
 
 CELL_PARAMETERS = ("a", "b", "c", "alpha", "beta", "gamma")
@@ -62,18 +62,17 @@ def lattice_of(cell: Cell) -> Lattice:
 
 def _of_file(request: ProductIn, max_coefficients: int) -> CoefficientSet:
     given = request.set
-    for name in (*INDEX_NAMES, "amplitude", "phase_deg", "real", "imag", "sigma", "phase_sigma_deg", "merit"):
+    for name in COLUMN_NAMES:
         if getattr(given, name) is not None:
             raise at(("set", name), "is given beside a file of reflections", "leave it out, or send no file")
     if given.values != "structure_factor":
         raise at(("set", "values"), "must be structure_factor where a file is sent", "files hold structure factors")
+    if _mean(given) is not None:
+        raise at(("set", "mean"), "is given beside a file of reflections", "give the zero term as a row")
     lattice = None if given.cell is None else lattice_of(given.cell)
     _, made = prepared(given, lattice, max_rows=max_coefficients)
     with located("set"):
         coefficients = made.coefficients(unit=given.unit)
-    mean = _mean(given)
-    if mean is not None:
-        raise at(("set", "mean"), "is given beside a file of reflections", "give the zero term as a row")
     if request.missing_phase == "refuse" and coefficients.unphased:
         raise at(
             ("missing_phase",),

@@ -11,10 +11,10 @@ from typing import Literal
 
 import numpy as np
 
-from engine.arrays import ComplexArray, FloatArray, IntArray, as_count
+from engine.arrays import ComplexArray, FloatArray, IntArray, as_count, refuse_rows
 from engine.errors import InputError
 from engine.lattice import Lattice
-from engine.phases.border import amplitudes, calculated_for, refuse_rows
+from engine.phases.border import amplitudes, calculated_for
 from engine.reflections import Reflections
 
 

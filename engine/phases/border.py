@@ -4,22 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 
-from engine.arrays import BoolArray, ComplexArray, FloatArray
+from engine.arrays import ComplexArray, FloatArray, refuse_rows
 from engine.errors import InputError
 from engine.reflections import Reflections
-
-
-def refuse_rows(bad: BoolArray, name: str, reason: str, cure: str) -> None:
-    """Refuse the rows where `bad` is true.
-
-    Raises
-    ------
-    InputError
-        Naming the column and the first of the rows.
-    """
-    rows = np.flatnonzero(bad)
-    if rows.size:
-        raise InputError.for_rows(name, rows, reason, cure)
 
 
 def amplitudes(reflections: Reflections) -> FloatArray:

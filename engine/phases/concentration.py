@@ -19,8 +19,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 from scipy.special import i0e, i1e
 
-from engine.arrays import BoolArray, FloatArray, as_choice
-from engine.phases.border import refuse_rows
+from engine.arrays import BoolArray, FloatArray, as_choice, refuse_rows
 
 SigmaMeaning = Literal["circular", "small_angle"]
 

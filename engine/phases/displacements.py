@@ -17,10 +17,9 @@ import math
 import numpy as np
 from numpy.typing import ArrayLike
 
-from engine.arrays import BoolArray, FloatArray, as_vector
+from engine.arrays import BoolArray, FloatArray, as_vector, refuse_rows
 from engine.errors import InputError
 from engine.lattice import Lattice
-from engine.phases.border import refuse_rows
 
 SITE_SYMMETRY = 0.05
 """How far a tensor may be from the symmetry of its site, relative to its largest element: what the

@@ -13,9 +13,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import ArrayLike
 
-from engine.arrays import BoolArray, FloatArray, as_matrix, as_vector
+from engine.arrays import BoolArray, FloatArray, as_matrix, as_vector, refuse_rows
 from engine.errors import InputError
-from engine.phases.border import refuse_rows
 
 OFF_RESTRICTION = 0.02
 """How far a phase given for a centric reflection may lie from the two it can have, radians: the

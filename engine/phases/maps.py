@@ -17,11 +17,11 @@ from typing import Literal, get_args
 
 import numpy as np
 
-from engine.arrays import FloatArray, as_choice
+from engine.arrays import FloatArray, as_choice, refuse_rows
 from engine.assembly import Columns, assemble
 from engine.coefficients import CoefficientSet
 from engine.errors import InputError
-from engine.phases.border import amplitudes, refuse_rows
+from engine.phases.border import amplitudes
 from engine.phases.weights import ModelWeights
 from engine.reflections import Reflections
 

@@ -13,10 +13,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from engine.arrays import BoolArray, ComplexArray, FloatArray, IntArray, as_matrix, as_positive, as_vector
+from engine.arrays import BoolArray, ComplexArray, FloatArray, IntArray, as_matrix, as_positive, as_vector, refuse_rows
 from engine.errors import InputError
 from engine.lattice import Lattice
-from engine.phases.border import refuse_rows
 from engine.phases.displacements import as_tensors, displacements, refuse_against_site
 from engine.scattering import form_factors
 

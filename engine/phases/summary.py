@@ -12,9 +12,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import ArrayLike
 
-from engine.arrays import ComplexArray, FloatArray, IntArray, as_matrix, as_vector
+from engine.arrays import ComplexArray, FloatArray, IntArray, as_matrix, as_vector, refuse_rows
 from engine.errors import InputError
-from engine.phases.border import refuse_rows
 from engine.phases.concentration import SigmaMeaning, merit_of_concentration, sigma_of_merit
 from engine.phases.distributions import PhaseDistribution, relative
 from engine.reflections import Reflections

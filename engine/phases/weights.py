@@ -17,10 +17,10 @@ from typing import Literal
 import numpy as np
 from numpy.typing import ArrayLike
 
-from engine.arrays import BoolArray, ComplexArray, FloatArray, IntArray, as_vector
+from engine.arrays import BoolArray, ComplexArray, FloatArray, IntArray, as_vector, refuse_rows
 from engine.errors import InputError
 from engine.phases.agreement import Shells, shells
-from engine.phases.border import amplitudes, calculated_for, refuse_rows
+from engine.phases.border import amplitudes, calculated_for
 from engine.phases.concentration import merit_of_concentration
 from engine.phases.distributions import PhaseDistribution, von_mises
 from engine.reflections import Reflections

@@ -243,16 +243,14 @@ def _check(reflections: Reflections, recipe: Recipe) -> None:
         raise InputError("corrections", "are of intensities, and amplitudes were given", "leave them out")
     if recipe.scale == "wilson" and recipe.content is None:
         raise InputError("content", "is absent", "Wilson's plot needs the composition of the cell")
-    if recipe.scale == "factor":
-        if recipe.factor is None:
-            raise InputError("factor", "is absent", "give the factor that amplitudes are multiplied by")
-        as_positive(recipe.factor, "factor", "absolute over given amplitude")
     for name, scale in (("factor", "factor"), ("known", "two_densities"), ("reference", "reference")):
         given = getattr(recipe, name) is not None
         if given and recipe.scale != scale:
             raise InputError(name, "has no meaning for this scale", "leave it out")
         if recipe.scale == scale and not given:
             raise InputError(name, "is absent", f"the scale {scale} needs it")
+    if recipe.factor is not None:
+        as_positive(recipe.factor, "factor", "absolute over given amplitude")
     if recipe.mean is not None and recipe.scale != "zero_term":
         raise InputError("mean", "has no meaning for this scale", "leave it out")
 

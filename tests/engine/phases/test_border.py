@@ -7,7 +7,8 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from engine.phases.border import amplitudes, calculated_for, refuse_rows
+from engine.arrays import refuse_rows
+from engine.phases.border import amplitudes, calculated_for
 from tests.engine.phases.trial import measured, triclinic
 from tests.strategies import refusal_of
 
