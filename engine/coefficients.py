@@ -14,6 +14,7 @@ from engine.arrays import BoolArray, ComplexArray, FloatArray, IntArray, as_posi
 from engine.errors import InputError
 from engine.lattice import Lattice
 from engine.series import Series
+from engine.symmetry.group import Group
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -68,6 +69,12 @@ class CoefficientSet:
     tally : Tally
     history : tuple of str
         What was done to the measurements before they were coefficients, in words.
+    group : Group or None
+        Operations under which the density is invariant. Coefficients that it relates are one
+        measurement and share one error; None: each (each Friedel pair of a real density) is a
+        measurement of its own.
+    scale_sigma : float
+        Relative standard uncertainty of the scale common to all coefficients.
     """
 
     lattice: Lattice
@@ -81,6 +88,8 @@ class CoefficientSet:
     unit: str
     tally: Tally
     history: tuple[str, ...] = ()
+    group: Group | None = None
+    scale_sigma: float = 0.0
 
     @property
     def count(self) -> int:

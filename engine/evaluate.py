@@ -15,6 +15,7 @@ from engine.fields import PHASES_DECIDE, Summands, Treatment, summands
 from engine.sampling.grids import AffineGrid, Axis, Sampling
 from engine.statistics import Statistics, Tracker
 from engine.synthesis import Demand, Method, Plan, Progress, fill, plan, result_dtype, stream
+from engine.uncertainty.sigma import Sigma
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -89,6 +90,8 @@ class Field:
         Every treatment, in words.
     notes : tuple of str
         What a reader must know before trusting the values.
+    sigma : Sigma or None
+        Standard uncertainty of each value, where it was asked for.
     """
 
     values: AnyArray
@@ -104,6 +107,7 @@ class Field:
     resolution: tuple[float, float] | None
     applied: tuple[str, ...]
     notes: tuple[str, ...]
+    sigma: Sigma | None = None
 
 
 def prepare(

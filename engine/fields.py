@@ -89,6 +89,30 @@ class Summands:
     unphased: int
 
 
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Multipliers:
+    """What each coefficient is multiplied by, for a field that is linear in the coefficients.
+
+    Attributes
+    ----------
+    used : CoefficientSet
+        The coefficients that are summed: those with a phase.
+    factors : tuple of complex128 or float64, each of shape (N,)
+        One per component.
+    components : tuple of str
+        Their names; empty for a scalar field.
+    unit : str
+    applied : tuple of str
+        Every step taken, in words.
+    """
+
+    used: CoefficientSet
+    factors: tuple[ComplexArray | FloatArray, ...]
+    components: tuple[str, ...]
+    unit: str
+    applied: tuple[str, ...]
+
+
 def summands(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
     """The series of a field of a set.
 
@@ -98,6 +122,51 @@ def summands(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
         No coefficient is left to sum, the figure of merit is asked for and absent, or an option
         does not belong to the field.
     """
+    _check(coefficients, treatment)
+    if treatment.field == "response":
+        return _response(coefficients, treatment)
+    if treatment.field == "autocorrelation":
+        return _autocorrelation(coefficients, treatment)
+    made = multipliers(coefficients, treatment)
+    magnitude = treatment.field == "gradient_magnitude"
+    return Summands(
+        series=tuple(_summed(made.used, made.used.values * factors) for factors in made.factors),
+        components=() if magnitude else made.components,
+        magnitude=magnitude,
+        unit=made.unit,
+        applied=made.applied,
+        unphased=coefficients.count - made.used.count,
+    )
+
+
+def multipliers(coefficients: CoefficientSet, treatment: Treatment) -> Multipliers:
+    """The factors of a field that is linear in the coefficients; of a gradient's length, those of the gradient.
+
+    Raises
+    ------
+    InputError
+        The field is not linear, or as `summands`.
+    """
+    _check(coefficients, treatment)
+    if treatment.field in ("response", "autocorrelation"):
+        raise InputError("field", f"{treatment.field} is not linear in the coefficients", "choose another field")
+    used = _phased(coefficients)
+    lattice, indices = used.lattice, used.indices
+    factors, applied = _factors(used, treatment)
+    every: tuple[ComplexArray | FloatArray, ...] = (factors,)
+    components: tuple[str, ...] = ()
+    unit = used.unit
+    if treatment.field in ("gradient", "gradient_magnitude"):
+        every = tuple(1j * wave * factors for wave in lattice.wavevectors(indices).T)
+        components = ("x", "y", "z")[: lattice.dimension]
+        unit = _per(used.unit, "Å")
+    elif treatment.field == "laplacian":
+        every = (-(lattice.magnitudes(indices) ** 2) * factors,)
+        unit = _per(used.unit, "Å²")
+    return Multipliers(used=used, factors=every, components=components, unit=unit, applied=tuple(applied))
+
+
+def _check(coefficients: CoefficientSet, treatment: Treatment) -> None:
     if treatment.self_term and treatment.field != "autocorrelation":
         raise InputError("self_term", "belongs to the field autocorrelation alone", "leave it out")
     if treatment.apply_merit and coefficients.merit is None:
@@ -105,48 +174,48 @@ def summands(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
     if not math.isfinite(treatment.sharpen):
         raise InputError("sharpen", "is not a finite number", "give B in Å²")
     as_choice(treatment.field, FIELD_KINDS, "field")
-    needs_phases = treatment.field != "autocorrelation"
-    used = coefficients.phased() if needs_phases else coefficients
     if coefficients.count == 0:
         raise InputError("resolution", "leaves no coefficient", "widen the limits")
+
+
+def _phased(coefficients: CoefficientSet) -> CoefficientSet:
+    used = coefficients.phased()
     if used.count == 0:
         raise InputError("phase_deg", "no coefficient has a phase", "give phases, or ask for the autocorrelation")
-    lattice, indices = used.lattice, used.indices
+    return used
+
+
+def _response(coefficients: CoefficientSet, treatment: Treatment) -> Summands:
+    used = _phased(coefficients)
     factors, applied = _factors(used, treatment)
-    made: tuple[Series, ...]
-    components: tuple[str, ...]
-    length = {1: "Å", 2: "Å²", 3: "Å³"}[lattice.dimension]
-    if treatment.field == "response":
-        series = Series(lattice, indices, factors.astype(np.complex128), used.real)
-        peak = float(series.doubled().real.sum()) if used.real else float(factors.sum())
-        if not abs(peak) > 0:
-            raise InputError("window", "leaves no coefficient", "choose another window or average")
-        scaled = Series(lattice, indices, series.values / peak, used.real)
-        made, components, unit = (scaled,), (), "1"
-    elif treatment.field == "autocorrelation":
-        squares = (np.abs(used.values) ** 2 - treatment.self_term) * lattice.volume
-        if treatment.self_term:
-            applied.append(f"self term {treatment.self_term:g} subtracted from every |n|²")
-        made, components = (_with(used, squares * factors),), ()
-        unit = "arbitrary" if used.unit == "arbitrary" else f"({used.unit})²·{length}"
-    elif treatment.field in ("gradient", "gradient_magnitude"):
-        wavevectors = lattice.wavevectors(indices)
-        made = tuple(_with(used, 1j * wave * used.values * factors) for wave in wavevectors.T)
-        components = ("x", "y", "z")[: lattice.dimension]
-        unit = _per(used.unit, "Å")
-    elif treatment.field == "laplacian":
-        values = -(lattice.magnitudes(indices) ** 2) * used.values * factors
-        made, components, unit = (_with(used, values),), (), _per(used.unit, "Å²")
-    else:
-        made, components, unit = (_with(used, used.values * factors),), (), used.unit
-    magnitude = treatment.field == "gradient_magnitude"
+    series = Series(used.lattice, used.indices, factors.astype(np.complex128), used.real)
+    peak = float(series.doubled().real.sum()) if used.real else float(factors.sum())
+    if not abs(peak) > 0:
+        raise InputError("window", "leaves no coefficient", "choose another window or average")
     return Summands(
-        series=tuple(_without_zeros(one) for one in made),
-        components=() if magnitude else components,
-        magnitude=magnitude,
-        unit=unit,
+        series=(_summed(used, series.values / peak),),
+        components=(),
+        magnitude=False,
+        unit="1",
         applied=tuple(applied),
         unphased=coefficients.count - used.count,
+    )
+
+
+def _autocorrelation(used: CoefficientSet, treatment: Treatment) -> Summands:
+    lattice = used.lattice
+    factors, applied = _factors(used, treatment)
+    squares = (np.abs(used.values) ** 2 - treatment.self_term) * lattice.volume
+    if treatment.self_term:
+        applied.append(f"self term {treatment.self_term:g} subtracted from every |n|²")
+    length = {1: "Å", 2: "Å²", 3: "Å³"}[lattice.dimension]
+    return Summands(
+        series=(_summed(used, squares * factors),),
+        components=(),
+        magnitude=False,
+        unit="arbitrary" if used.unit == "arbitrary" else f"({used.unit})²·{length}",
+        applied=tuple(applied),
+        unphased=0,
     )
 
 
@@ -182,16 +251,13 @@ def _factors(used: CoefficientSet, treatment: Treatment) -> tuple[FloatArray, li
     return factors, applied
 
 
-def _with(used: CoefficientSet, values: ComplexArray | FloatArray) -> Series:
-    return Series(used.lattice, used.indices, values.astype(np.complex128), used.real)
-
-
-def _without_zeros(series: Series) -> Series:
-    """Drop terms that a factor made exactly zero; they cost time and add nothing."""
-    kept = series.values != 0
+def _summed(used: CoefficientSet, values: ComplexArray | FloatArray) -> Series:
+    """The terms that a factor did not make exactly zero; those cost time and add nothing."""
+    complex_values = values.astype(np.complex128)
+    kept = complex_values != 0
     if kept.all():
-        return series
-    return Series(series.lattice, np.asfortranarray(series.indices[kept]), series.values[kept], series.real)
+        return Series(used.lattice, used.indices, complex_values, used.real)
+    return Series(used.lattice, np.asfortranarray(used.indices[kept]), complex_values[kept], used.real)
 
 
 def _per(unit: str, length: str) -> str:
