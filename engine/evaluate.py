@@ -15,7 +15,7 @@ from engine.fields import PHASES_DECIDE, Summands, Treatment, summands
 from engine.sampling.grids import AffineGrid, Axis, Sampling
 from engine.statistics import Statistics, Tracker
 from engine.synthesis import Demand, Method, Plan, Progress, fill, plan, result_dtype, stream
-from engine.uncertainty.sigma import Sigma
+from engine.uncertainty.sigma import Sigma, SigmaWork, perform_sigma, prepare_sigma
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -33,6 +33,8 @@ class Work:
     shape : tuple of int
         Of the values: the sampling's, and the components' number last for a vector.
     dtype : numpy dtype
+    sigma : SigmaWork or None
+        Of the standard uncertainties, where they are asked for.
     """
 
     coefficients: CoefficientSet
@@ -42,6 +44,7 @@ class Work:
     plans: tuple[Plan, ...]
     shape: tuple[int, ...]
     dtype: np.dtype[np.generic]
+    sigma: SigmaWork | None = None
 
     @property
     def bytes_output(self) -> int:
@@ -53,12 +56,13 @@ class Work:
         """Values and workspace together, at the peak."""
         # A vector is summed into strided memory, its length by way of each component.
         one = self.plans[0].output if self.parts.components or self.parts.magnitude else 0
-        return self.bytes_output + one + max(part.chosen.workspace for part in self.plans)
+        alone = self.bytes_output + one + max(part.chosen.workspace for part in self.plans)
+        return alone if self.sigma is None else max(alone, self.bytes_output + self.sigma.bytes)
 
     @property
     def seconds(self) -> float:
         """Estimate."""
-        return sum(one.chosen.seconds for one in self.plans)
+        return sum(one.chosen.seconds for one in self.plans) + (0.0 if self.sigma is None else self.sigma.seconds)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -116,6 +120,7 @@ def prepare(
     treatment: Treatment | None = None,
     demand: Demand | None = None,
     *,
+    uncertainty: bool = False,
     method: Method | None = None,
     max_bytes: int | None = None,
 ) -> Work:
@@ -123,13 +128,15 @@ def prepare(
 
     Parameters
     ----------
+    uncertainty : bool
+        Whether the standard uncertainty of every value is wanted too.
     max_bytes : int, optional
         Bound of the values and the workspace together.
 
     Raises
     ------
     InputError
-        See `engine.fields.summands` and `engine.synthesis.plan`.
+        See `engine.fields.summands`, `engine.synthesis.plan` and `engine.uncertainty.sigma.prepare_sigma`.
     TooLargeError
         No method stays within `max_bytes`.
     """
@@ -152,6 +159,10 @@ def prepare(
     if parts.magnitude:
         dtype = result_dtype(True, plans[0].demand.precision)
     shape = (*sampling.shape, count) if parts.components else sampling.shape
+    sigma = None
+    if uncertainty:
+        left = None if max_bytes is None else max_bytes - math.prod(shape) * dtype.itemsize
+        sigma = prepare_sigma(coefficients, sampling, treatment, demand, max_bytes=left)
     return Work(
         coefficients=coefficients,
         sampling=sampling,
@@ -160,6 +171,7 @@ def prepare(
         plans=plans,
         shape=shape,
         dtype=dtype,
+        sigma=sigma,
     )
 
 
@@ -190,7 +202,7 @@ def perform(work: Work, *, out: AnyArray | None = None, progress: Progress | Non
     kind = result_dtype(work.parts.series[0].real, work.plans[0].demand.precision)
     component = np.empty(work.sampling.shape, kind) if work.parts.magnitude else None
     for number, one in enumerate(work.plans):
-        report = None if progress is None else _share(progress, number, count)
+        report = None if progress is None else _share(progress, number, count + (work.sigma is not None))
         threads = one.demand.threads
         if component is None:
             target = out[..., number] if work.parts.components else out
@@ -203,7 +215,12 @@ def perform(work: Work, *, out: AnyArray | None = None, progress: Progress | Non
     if component is not None:
         np.sqrt(out, out=out)
         tracker.add(out)
-    return _described(work, out, tracker.statistics())
+    sigma = None
+    if work.sigma is not None:
+        component = None
+        last = None if progress is None else _share(progress, count, count + 1)
+        sigma = perform_sigma(work.sigma, out, progress=last)
+    return _described(work, out, tracker.statistics(), sigma)
 
 
 def evaluate(
@@ -212,12 +229,15 @@ def evaluate(
     treatment: Treatment | None = None,
     demand: Demand | None = None,
     *,
+    uncertainty: bool = False,
     method: Method | None = None,
     max_bytes: int | None = None,
     progress: Progress | None = None,
 ) -> Field:
     """Cost and compute a field: `prepare`, then `perform`; raises what they raise."""
-    work = prepare(coefficients, sampling, treatment, demand, method=method, max_bytes=max_bytes)
+    work = prepare(
+        coefficients, sampling, treatment, demand, uncertainty=uncertainty, method=method, max_bytes=max_bytes
+    )
     return perform(work, progress=progress)
 
 
@@ -252,7 +272,7 @@ def _share(progress: Progress, number: int, count: int) -> Progress:
     return report
 
 
-def _described(work: Work, values: AnyArray, statistics: Statistics) -> Field:
+def _described(work: Work, values: AnyArray, statistics: Statistics, sigma: Sigma | None) -> Field:
     given = work.coefficients
     summed = work.parts.series[0].indices if len(work.parts.series) == 1 else given.phased().indices
     others = summed[summed.any(axis=1)]
@@ -275,6 +295,7 @@ def _described(work: Work, values: AnyArray, statistics: Statistics) -> Field:
         resolution=resolution,
         applied=(*given.history, *work.parts.applied),
         notes=_notes(work),
+        sigma=sigma,
     )
 
 
@@ -289,6 +310,10 @@ def _notes(work: Work) -> tuple[str, ...]:
         notes.append("The zero term has no phase and is left out: values are relative to the mean density.")
     if work.parts.unphased:
         notes.append(f"{work.parts.unphased} of {given.count} coefficients have no phase and are left out.")
+    if work.sigma is not None and given.merit is not None and not work.treatment.apply_merit:
+        notes.append(
+            "The uncertainty is that of coefficients weighted by their figures of merit; the values are not so."
+        )
     if tally.beyond_resolution:
         notes.append(f"{tally.beyond_resolution} coefficients lie outside the resolution limits and are left out.")
     if tally.mates_joined:

@@ -112,15 +112,15 @@ def covariance(
         for strengths in (along, across) if sideways else (along,):
             # What one standard deviation of each measurement does to each number.
             moved = np.add.reduceat((made * strengths[part]).real, starts, axis=1).reshape(blocks, size, -1)
-            total += moved @ moved.transpose(0, 2, 1)
+            total += np.matmul(moved, moved.transpose(0, 2, 1))
         scaled += (made @ values[part]).real
     if errors.scale:
         fixed = np.zeros(count)
         if errors.fixed:
             zero = np.zeros((1, errors.lattice.dimension), dtype=np.int64)
             fixed = (functional.factors(errors.lattice, zero)[:, 0] * errors.fixed).real
-        moved = (errors.scale * (scaled - fixed)).reshape(blocks, size)
-        total += moved[:, :, None] * moved[:, None, :]
+        common = (errors.scale * (scaled - fixed)).reshape(blocks, size)
+        total += common[:, :, None] * common[:, None, :]
     if block:
         return total
     return np.asarray(total[0]) if blocks else np.zeros((0, 0))
