@@ -196,9 +196,9 @@ def _inspect(options: argparse.Namespace) -> int:
     return 0
 
 
-def _form(product: str, out: Path | None) -> str:
+def _form(product: str, out: Path | None) -> str | None:
     if out is None:
-        return "npy"
+        return None
     form = out.suffix.removeprefix(".")
     if form not in formats_of(product):
         raise ValueError(f"--out: a {product} is written as {', '.join(formats_of(product))}, not {out.suffix or out}")

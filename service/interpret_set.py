@@ -69,6 +69,8 @@ def _of_file(request: ProductIn, max_coefficients: int) -> CoefficientSet:
         raise at(("set", "values"), "must be structure_factor where a file is sent", "files hold structure factors")
     if _mean(given) is not None:
         raise at(("set", "mean"), "is given beside a file of reflections", "give the zero term as a row")
+    if given.scale_sigma:
+        raise at(("set", "scale_sigma"), "is given beside a file of reflections", "the scale found there has its own")
     lattice = None if given.cell is None else lattice_of(given.cell)
     _, made = prepared(given, lattice, max_rows=max_coefficients)
     with located("set"):
@@ -127,7 +129,7 @@ def _of_columns(request: ProductIn, max_coefficients: int) -> CoefficientSet:
             unit=given.unit,
         )
     if given.symmetry is None:
-        return made
+        return replace(made, scale_sigma=given.scale_sigma)
     group = symmetry_group(given.symmetry, lattice.dimension)
     return _expanded(made, given, lattice, group)
 
@@ -173,7 +175,7 @@ def _expanded(made: CoefficientSet, given: CoefficientSetIn, lattice: Lattice, g
     words = f"expanded by {group.name} from {reflections.count} to {full.reflections.count} reflections"
     left = f"; {full.absent_rows.size} systematically absent ones left out" if full.absent_rows.size else ""
     tally = replace(made.tally, zero_term=expanded.tally.zero_term)
-    return replace(expanded, tally=tally, history=(words + left,))
+    return replace(expanded, tally=tally, history=(words + left,), group=group, scale_sigma=given.scale_sigma)
 
 
 def _mean(given: CoefficientSetIn) -> float | complex | None:

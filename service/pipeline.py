@@ -39,14 +39,14 @@ class Done:
 def run(
     product: str,
     request: ProductIn,
-    form: str,
+    form: str | None,
     spool: Spool,
     settings: Settings,
     *,
     threads: int,
     watch: Watch | None = None,
 ) -> Done:
-    """Interpret, cost, compute and encode a checked request.
+    """Interpret, cost, compute and encode a checked request; without a form, leave the spool empty.
 
     Nothing is allocated before the estimate has passed the limits.
 
@@ -55,6 +55,14 @@ def run(
     Problem
         The request cannot be carried out, or would exceed a limit.
     """
+    if request.uncertainty and request.quantity != "value":
+        raise at(("uncertainty",), f"is asked for beside the quantity {request.quantity}", "ask for one of the two")
+    if request.uncertainty and form == "npy":
+        raise Problem(
+            "not-acceptable",
+            "A .npy holds one array: ask for application/x-npz, which holds values and uncertainties, or for "
+            "the quantity sigma.",
+        )
     begin = time.perf_counter()
     coefficients = interpret_set.coefficient_set(request, max_coefficients=settings.max_coefficients)
     sampling = interpret.samples(request, coefficients.lattice)
@@ -72,10 +80,18 @@ def run(
         "phase_deg": ("set", "phase_deg"),
         "amplitude": ("set",),
         "samples": (_place_of_size(request),),
+        "sigma": ("set", "sigma"),
     }
     with located(renamed=renamed):
-        work = prepare(coefficients, sampling, treatment, demand, max_bytes=settings.max_memory_bytes)
-    numbers = math.prod(work.shape) * (2 if work.dtype.kind == "c" else 1)
+        work = prepare(
+            coefficients,
+            sampling,
+            treatment,
+            demand,
+            uncertainty=request.uncertainty or request.quantity != "value",
+            max_bytes=settings.max_memory_bytes,
+        )
+    numbers = math.prod(work.shape) * ((2 if work.dtype.kind == "c" else 1) + request.uncertainty)
     if form in ("json", "csv") and numbers > settings.max_json_values:
         raise Problem(
             "too-costly",
@@ -83,7 +99,7 @@ def run(
             f"{form.upper()}. Ask for application/x-npy or application/x-npz.",
         )
     progress = None if watch is None else watch(work)
-    field = write(product, work, form, spool, progress)
+    field = write(product, work, form, spool, progress, request.quantity)
     if not math.isfinite(field.statistics.rms):
         raise at(
             ("set",),

@@ -112,6 +112,9 @@ class Prepared:
         Every step in words.
     notes : tuple of str
         What a reader must know.
+    recipe : Recipe
+    scale_sigma : float
+        Relative standard uncertainty of the scale of the amplitudes, as far as the scaling tells it.
     """
 
     given: Reflections
@@ -126,6 +129,7 @@ class Prepared:
     applied: tuple[str, ...]
     notes: tuple[str, ...]
     recipe: Recipe
+    scale_sigma: float
 
     def coefficients(self, *, unit: str = "arbitrary") -> CoefficientSet:
         """The coefficients of the density; reflections without phase are in it, marked.
@@ -141,7 +145,7 @@ class Prepared:
             full = replace(full, phase=np.full(full.count, np.nan), phase_sigma=None, merit=None)
         density: Literal["real", "complex"] = "real" if self.recipe.friedel else "complex"
         made = coefficient_set(full, unit=unit, mean=self.zero_term, density=density)
-        return replace(made, history=self.applied)
+        return replace(made, history=self.applied, group=self.recipe.group, scale_sigma=self.scale_sigma)
 
 
 def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
@@ -181,12 +185,15 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
             notes.append(f"{np.count_nonzero(chosen)} measurements lie far from their equivalents and are {fate}.")
     kinds = classify(merged.reflections.indices, recipe.group)
     plot, factor = _scale(merged.reflections, kinds, recipe, applied, notes)
+    # Intensities were divided by the plot's scale, amplitudes by its root.
+    scale_sigma = 0.0 if plot is None else 0.5 * plot.scale_sigma / plot.scale
     unique, converted = _amplitudes(merged.reflections, kinds, recipe, applied, notes)
     if recipe.scale == "zero_term":
         factor = by_zero_term(zero, _known_zero_term(recipe, reflections.lattice.volume))
         applied.append(f"put on the absolute scale by the zero term: amplitudes multiplied by {factor:.4g}")
     if recipe.reference is not None:
         unique, found = by_reference(unique, recipe.reference)
+        scale_sigma = found.scale_sigma / found.scale
         applied.append(
             f"put on the scale of a reference by {found.common} common reflections: amplitudes multiplied by "
             f"{found.scale:.4g} ± {found.scale_sigma:.2g}, B {found.b:.3g} ± {found.b_sigma:.2g} Å²"
@@ -208,6 +215,7 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
         expansion = replace(expansion, reflections=line.apply(expansion.reflections))
         phased, unique = line.apply(phased), line.apply(unique)
         zero = line.offset * reflections.lattice.volume
+        scale_sigma = float(np.sqrt(line.covariance[0, 0]) / abs(line.slope))
         applied.append(
             f"put on the absolute scale by two known densities: amplitudes multiplied by {line.slope:.4g} ± "
             f"{np.sqrt(line.covariance[0, 0]):.2g}, mean density {line.offset:.4g} ± "
@@ -231,6 +239,7 @@ def prepare_reflections(reflections: Reflections, recipe: Recipe) -> Prepared:
         applied=tuple(applied),
         notes=tuple(notes),
         recipe=recipe,
+        scale_sigma=scale_sigma,
     )
 
 

@@ -13,6 +13,7 @@ from numpy.lib import format as npy
 
 from engine.arrays import AnyArray
 from engine.evaluate import Field, Work, perform
+from engine.quantities import Quantity, shown
 from engine.synthesis import Progress
 from service.encoders.describe import columns, describe
 from service.spool import Spool
@@ -20,23 +21,35 @@ from service.spool import Spool
 Describe = Callable[[Field], dict[str, Any]]
 
 
-def write(product: str, work: Work, form: str, spool: Spool, progress: Progress | None) -> Field:
-    """Compute, and write the answer in the given form to the spool.
+def write(
+    product: str, work: Work, form: str | None, spool: Spool, progress: Progress | None, quantity: Quantity = "value"
+) -> Field:
+    """Compute, and write the answer in the given form (None: in none) to the spool; returns what was written.
 
     The values of a .npy are computed where they will be read from; the other forms copy them once.
     """
-    if form == "npy":
+    if form == "npy" and quantity == "value":
         spool.append(_npy_header(work.shape, work.dtype))
         return perform(work, out=spool.array(work.shape, work.dtype), progress=progress)
-    made = perform(work, progress=progress)
-    metadata = describe(product, work.treatment.field, work.coefficients, made)
+    made = shown(perform(work, progress=progress), quantity)
+    if form is None:
+        return made
+    metadata = describe(product, work.treatment.field, work.coefficients, made, quantity)
+    beside = None if made.sigma is None or quantity != "value" else made.sigma.values
     if form == "json":
-        spool.append(_json(made, metadata))
+        spool.append(_json(made, beside, metadata))
     elif form == "npz":
-        _npz(made, metadata, spool)
+        _npz(made, beside, metadata, spool)
+    elif form == "npy":
+        spool.append(_npy_header(made.values.shape, made.values.dtype))
+        spool.append(_bytes(made.values))
     else:
-        spool.append(_csv(work, made, metadata))
+        spool.append(_csv(work, made, metadata, quantity))
     return made
+
+
+def _bytes(array: AnyArray) -> memoryview:
+    return np.ascontiguousarray(array).reshape(-1).view(np.uint8).data
 
 
 def _npy_header(shape: tuple[int, ...], dtype: np.dtype[np.generic]) -> bytes:
@@ -46,17 +59,19 @@ def _npy_header(shape: tuple[int, ...], dtype: np.dtype[np.generic]) -> bytes:
     return buffer.getvalue()
 
 
-def _json(made: Field, metadata: dict[str, Any]) -> bytes:
+def _json(made: Field, sigma: AnyArray | None, metadata: dict[str, Any]) -> bytes:
     """The array goes into the text whole, in compiled code; no Python object per value."""
     values = made.values
     held: Any = values
     if values.dtype.kind == "c":
         held = {"real": np.ascontiguousarray(values.real), "imag": np.ascontiguousarray(values.imag)}
-    return orjson.dumps({"values": held, **metadata}, option=orjson.OPT_SERIALIZE_NUMPY)
+    return orjson.dumps({"values": held, "uncertainty": sigma, **metadata}, option=orjson.OPT_SERIALIZE_NUMPY)
 
 
-def _npz(made: Field, metadata: dict[str, Any], spool: Spool) -> None:
+def _npz(made: Field, sigma: AnyArray | None, metadata: dict[str, Any], spool: Spool) -> None:
     arrays: dict[str, AnyArray | np.ndarray[Any, Any]] = {"values": made.values}
+    if sigma is not None:
+        arrays["uncertainty"] = sigma
     if made.axes:
         arrays |= {f"axis_{number}": axis.coordinates() for number, axis in enumerate(made.axes, start=1)}
     else:
@@ -66,7 +81,7 @@ def _npz(made: Field, metadata: dict[str, Any], spool: Spool) -> None:
         for name, array in arrays.items():
             with archive.open(f"{name}.npy", "w", force_zip64=True) as member:
                 member.write(_npy_header(array.shape, array.dtype))
-                member.write(np.ascontiguousarray(array).reshape(-1).view(np.uint8).data)
+                member.write(_bytes(array))
 
 
 class _Appending(io.RawIOBase):
@@ -89,12 +104,15 @@ class _Appending(io.RawIOBase):
         return False
 
 
-def _csv(work: Work, made: Field, metadata: dict[str, Any]) -> bytes:
-    found = columns(work.coefficients, made)
+def _csv(work: Work, made: Field, metadata: dict[str, Any], quantity: Quantity) -> bytes:
+    found = columns(work.coefficients, made, quantity)
+    sigma = made.sigma
     told = [
-        f"field: {metadata['field']}; unit: {metadata['unit']}",
+        f"field: {metadata['field']}; quantity: {quantity}; unit: {metadata['unit']}",
         f"method: {metadata['summary']['method']}; coefficients summed: {made.summed}",
         f"sign convention: {metadata['summary']['sign_convention']}",
+        *([] if sigma is None else [f"uncertainty contains: {'; '.join(sigma.contains)}"]),
+        *([] if sigma is None else [f"uncertainty omits: {'; '.join(sigma.omits)}"]),
         *metadata["applied"],
         *metadata["notes"],
     ]

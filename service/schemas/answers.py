@@ -45,6 +45,25 @@ class ResolutionOut(BaseModel):
     unit: str
 
 
+class ContourLevel(BaseModel):
+    """A level offered for a contour line."""
+
+    sigmas: float = Field(description="multiple of the rms uncertainty")
+    value: float
+
+
+class UncertaintyOut(BaseModel):
+    """What the standard uncertainties contain, and how large they are."""
+
+    contains: list[str]
+    omits: list[str]
+    minimum: float
+    maximum: float
+    rms: float
+    accuracy: float = Field(description="largest error of the summation, relative to the largest uncertainty")
+    contour_levels: list[ContourLevel]
+
+
 class SummaryOut(BaseModel):
     """Numbers over all values, and how they were made. Of complex values the extremes are moduli."""
 
@@ -54,6 +73,7 @@ class SummaryOut(BaseModel):
     rms: float
     coefficients: CoefficientsOut
     resolution: ResolutionOut | None
+    uncertainty: UncertaintyOut | None
     method: str
     accuracy: float = Field(description="largest error of the summation, relative to the largest |value|")
     sign_convention: str
@@ -63,8 +83,10 @@ class Answer(BaseModel):
     """Values and all that is needed to read them."""
 
     values: Any = Field(description="nested arrays in the order of the axes; complex values as real and imag")
+    uncertainty: Any = Field(description="standard uncertainty of each value where asked for, else null")
     product: str
     field: str
+    quantity: str = Field(description="what the values are: value, sigma or significance")
     unit: str
     shape: list[int]
     components: list[str] = Field(description="Cartesian components, last in the shape; empty for a scalar")

@@ -69,3 +69,6 @@ class CoefficientSetIn(ReflectionSetIn):
     merit: NumberColumn | None = Field(None, description="figure of merit of the phase, 0 to 1")
     mean: float | None = Field(None, description="the zero term, F(000) or n_0 by `values`, where no row carries it")
     mean_imag: float | None = Field(None, description="its imaginary part, for a complex density")
+    scale_sigma: float = Field(
+        0.0, ge=0, le=1, description="relative standard uncertainty of the scale that all columns share"
+    )

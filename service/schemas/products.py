@@ -67,6 +67,13 @@ class ProductIn(Strict):
         description="autocorrelation only: subtracted from every squared amplitude, in the square of its unit",
     )
     resolution: ResolutionIn = ResolutionIn()
+    uncertainty: bool = Field(
+        False,
+        description="also the standard uncertainty of every value, from sigma, phase_sigma_deg, merit, scale_sigma",
+    )
+    quantity: Literal["value", "sigma", "significance"] = Field(
+        "value", description="what the values of the answer are: the field, its standard uncertainty, or their ratio"
+    )
     missing_phase: Literal["omit", "refuse"] = Field(
         "omit", description="coefficients without phase: leave out and count, or refuse the request"
     )

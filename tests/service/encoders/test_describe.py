@@ -25,8 +25,8 @@ def test_everything_is_plain_data_and_as_described_to_clients():
     where = sampling.box(CRYSTAL.lattice, [0.1, 0, 0], np.eye(3) / 2, (2, 3, 4))
     made, told = described(CRYSTAL, where)
     assert json.loads(json.dumps(told)) == told
-    Answer.model_validate({"values": None, **told}, strict=True)
-    assert set(Answer.model_fields) == {"values", *told}
+    Answer.model_validate({"values": None, "uncertainty": None, **told}, strict=True)
+    assert set(Answer.model_fields) == {"values", "uncertainty", *told}
     assert told["shape"] == [2, 3, 4]
     assert [axis["label"] for axis in told["axes"]] == ["edge_1", "edge_2", "edge_3"]
     assert told["axes"][0]["step"] == pytest.approx(5.1 / 2 / 2)

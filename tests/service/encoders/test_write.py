@@ -68,7 +68,7 @@ def test_complex_values_in_json_have_two_arrays():
 def test_csv_tells_what_it_holds():
     made, content = written("csv", FILM, sampling.line(FILM.lattice, [0], [1], 5), product="profile")
     lines = content.decode().splitlines()
-    assert lines[0] == "# field: density; unit: e/Å³"
+    assert lines[0] == "# field: density; quantity: value; unit: e/Å³"
     head = [line for line in lines if line.startswith("#")]
     assert any("sign convention" in line for line in head)
     assert any("no termination window" in line for line in head)

@@ -71,7 +71,8 @@ def test_short_form_of_the_lateral_average():
         {"tolerance": 0.1},
         {"tolerance": 1e-13},
         {"apply_merit": "yes"},
-        {"uncertainty": False},
+        {"uncertainty": "yes"},
+        {"quantity": "variance"},
     ],
 )
 def test_bad_members(product, members):
