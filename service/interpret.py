@@ -8,13 +8,16 @@ from engine import averages, sampling
 from engine.averages import Average
 from engine.fields import Treatment
 from engine.lattice import Lattice
-from engine.sampling import Sampling
+from engine.sampling import AffineGrid, Sampling
 from engine.windows import Window
 from service.problems import at, located
+from service.schemas.base import Coordinates, Strict
 from service.schemas.products import GridIn, PointsIn, ProductIn, ProfileIn, SliceIn
+from service.schemas.sampling import LineIn, PlaneIn, VolumeIn
+from service.schemas.treatment import TreatedIn
 
 
-def treatment(request: ProductIn, lattice: Lattice) -> Treatment:
+def treatment(request: TreatedIn, lattice: Lattice) -> Treatment:
     """What is made of the set before it is summed.
 
     Raises
@@ -45,18 +48,18 @@ def samples(request: ProductIn, lattice: Lattice) -> Sampling:
         Pointing to the place in the body.
     """
     if isinstance(request, ProfileIn):
-        return _line(request, lattice)
+        return line(request, lattice, request.coordinates)
     if isinstance(request, SliceIn):
-        return _plane(request, lattice)
+        return plane(request, lattice, request.coordinates)
     if isinstance(request, GridIn):
-        return _volume(request, lattice)
+        return volume(request, lattice, request.coordinates)
     if isinstance(request, PointsIn):
         with located():
             return sampling.points(lattice, request.positions, coordinates=request.coordinates)
     raise TypeError(f"no sampling for {type(request).__name__}")
 
 
-def _average(request: ProductIn, lattice: Lattice) -> Average | None:
+def _average(request: TreatedIn, lattice: Lattice) -> Average | None:
     average = request.average
     if average is None:
         return None
@@ -78,17 +81,23 @@ def _average(request: ProductIn, lattice: Lattice) -> Average | None:
         return averages.lateral(lattice, normal)
 
 
-def _own_normal(request: ProductIn, lattice: Lattice) -> Sequence[int]:
-    if isinstance(request, ProfileIn) and request.normal_to is not None:
-        return request.normal_to
-    if isinstance(request, SliceIn) and request.plane is not None:
-        return request.plane
+def _own_normal(request: TreatedIn, lattice: Lattice) -> Sequence[int]:
+    normal: Sequence[int] | None = getattr(request, "normal_to", None) or getattr(request, "plane", None)
+    if normal is not None:
+        return normal
     if lattice.dimension == 1:
         return [1]
     raise at(("average", "normal"), "is absent", "give the indices of the planes averaged over")
 
 
-def _line(request: ProfileIn, lattice: Lattice) -> Sampling:
+def line(request: LineIn, lattice: Lattice, coordinates: Coordinates) -> AffineGrid:
+    """Samples along a line.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the request.
+    """
     form = _one_of(request, {"from": ("start", "end"), "along": ("along",), "normal_to": ("normal_to",)})
     if form == "from":
         _only(request, ("start", "end"), ("origin", "length"))
@@ -99,7 +108,7 @@ def _line(request: ProfileIn, lattice: Lattice) -> Sampling:
                 request.end or [],
                 request.samples,
                 include_end=request.include_end,
-                coordinates=request.coordinates,
+                coordinates=coordinates,
             )
     if form == "along":
         _only(request, ("along",), ("length",))
@@ -110,7 +119,7 @@ def _line(request: ProfileIn, lattice: Lattice) -> Sampling:
                 request.samples,
                 origin=request.origin,
                 include_end=request.include_end,
-                coordinates=request.coordinates,
+                coordinates=coordinates,
             )
     with located():
         return sampling.normal_line(
@@ -120,11 +129,12 @@ def _line(request: ProfileIn, lattice: Lattice) -> Sampling:
             length=request.length,
             origin=request.origin,
             include_end=request.include_end,
-            coordinates=request.coordinates,
+            coordinates=coordinates,
         )
 
 
-def _plane(request: SliceIn, lattice: Lattice) -> Sampling:
+def plane(request: PlaneIn, lattice: Lattice, coordinates: Coordinates) -> AffineGrid:
+    """Samples on a plane; raises as `line`."""
     edges = ("origin", "edge_1", "edge_2", "shape")
     if _one_of(request, {"edge_1": edges, "plane": ("plane", "width", "height", "spacing")}) == "edge_1":
         _only(request, edges, ("offset", "centre", "width", "height", "spacing"))
@@ -136,7 +146,7 @@ def _plane(request: SliceIn, lattice: Lattice) -> Sampling:
                 request.edge_2 or [],
                 _pair(request.shape or []),
                 include_end=request.include_end,
-                coordinates=request.coordinates,
+                coordinates=coordinates,
             )
     _only(request, (), ("origin", "shape", "include_end"))
     with located():
@@ -148,11 +158,12 @@ def _plane(request: SliceIn, lattice: Lattice) -> Sampling:
             height=request.height or 0.0,
             spacing=request.spacing or 0.0,
             centre=request.centre,
-            coordinates=request.coordinates,
+            coordinates=coordinates,
         )
 
 
-def _volume(request: GridIn, lattice: Lattice) -> Sampling:
+def volume(request: VolumeIn, lattice: Lattice, coordinates: Coordinates) -> AffineGrid:
+    """Samples in a cell or box; raises as `line`."""
     if request.edges is not None:
         _only(request, ("origin", "edges", "shape"), ("spacing",))
         renamed: dict[str, tuple[str | int, ...]] = {f"edge_{j + 1}": ("edges", j) for j in range(3)}
@@ -163,7 +174,7 @@ def _volume(request: GridIn, lattice: Lattice) -> Sampling:
                 request.edges,
                 request.shape or [],
                 include_end=request.include_end,
-                coordinates=request.coordinates,
+                coordinates=coordinates,
             )
     _only(request, (), ("origin", "include_end"))
     with located():
@@ -178,7 +189,7 @@ def _pair(shape: Sequence[int]) -> tuple[int, int]:
     return shape[0], shape[1]
 
 
-def _one_of(request: ProductIn, forms: dict[str, tuple[str, ...]]) -> str:
+def _one_of(request: Strict, forms: dict[str, tuple[str, ...]]) -> str:
     """Which form a request uses, by the field that leads it; all fields of the form must be there."""
     leads = {form: names[0] if form != "edge_1" else "edge_1" for form, names in forms.items()}
     used = [form for form, lead in leads.items() if getattr(request, lead) is not None]
@@ -195,7 +206,7 @@ def _one_of(request: ProductIn, forms: dict[str, tuple[str, ...]]) -> str:
     return used[0]
 
 
-def _only(request: ProductIn, needed: Sequence[str], barred: Sequence[str]) -> None:
+def _only(request: Strict, needed: Sequence[str], barred: Sequence[str]) -> None:
     for name in needed:
         if getattr(request, name) is None:
             raise at((_alias(name),), "is absent", f"it belongs to the others: {', '.join(map(_alias, needed))}")

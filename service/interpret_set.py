@@ -16,12 +16,12 @@ from engine.symmetry import Group, expand
 from service.interpret_file import prepared, symmetry_group
 from service.problems import at, located
 from service.schemas.coefficient_set import COLUMN_NAMES, INDEX_NAMES, Cell, CoefficientSetIn
-from service.schemas.products import ProductIn
+from service.schemas.treatment import SetRequestIn
 
 CELL_PARAMETERS = ("a", "b", "c", "alpha", "beta", "gamma")
 
 
-def coefficient_set(request: ProductIn, *, max_coefficients: int) -> CoefficientSet:
+def coefficient_set(request: SetRequestIn, *, max_coefficients: int) -> CoefficientSet:
     """The set of a request, expanded by its symmetry and cut to its resolution limits.
 
     Raises
@@ -60,7 +60,7 @@ def lattice_of(cell: Cell) -> Lattice:
     )
 
 
-def _of_file(request: ProductIn, max_coefficients: int) -> CoefficientSet:
+def _of_file(request: SetRequestIn, max_coefficients: int) -> CoefficientSet:
     given = request.set
     for name in COLUMN_NAMES:
         if getattr(given, name) is not None:
@@ -84,7 +84,7 @@ def _of_file(request: ProductIn, max_coefficients: int) -> CoefficientSet:
     return replace(coefficients, tally=replace(coefficients.tally, rows=made.given.count))
 
 
-def _of_columns(request: ProductIn, max_coefficients: int) -> CoefficientSet:
+def _of_columns(request: SetRequestIn, max_coefficients: int) -> CoefficientSet:
     given = request.set
     if given.preparation is not None:
         raise at(("set", "preparation"), "is of a file, and none was sent", "leave it out, or send a file")

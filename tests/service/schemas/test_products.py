@@ -8,7 +8,8 @@ from pydantic import ValidationError
 from engine.fields import FieldKind
 from engine.synthesis.estimate import DEFAULT_TOLERANCE, Precision
 from engine.windows import WindowKind
-from service.schemas.products import PRODUCTS, AverageIn, ProductIn, ProfileIn, WindowIn
+from service.schemas.products import PRODUCTS, ProductIn, ProfileIn
+from service.schemas.treatment import AverageIn, WindowIn
 from tests.service import bodies
 
 

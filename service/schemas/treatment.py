@@ -1,0 +1,73 @@
+"""A set and what is made of it before it is summed: common to products and analyses."""
+
+from __future__ import annotations
+
+from typing import Any, Literal
+
+from pydantic import Field, model_validator
+
+from service.schemas.base import Coordinates, IndexVector, Length, Strict, Vector
+from service.schemas.coefficient_set import CoefficientSetIn
+
+
+class WindowIn(Strict):
+    """Termination window w(|G|/G_max)."""
+
+    kind: Literal["none", "lanczos", "raised_cosine", "gaussian"] = "none"
+    b: float | None = Field(None, gt=0, description="B of exp(−B s²), s = |G|/4π, Å²; gaussian only")
+
+
+class ResolutionIn(Strict):
+    """Only coefficients with d_min ≤ d ≤ d_max are summed."""
+
+    d_min: float | None = Field(None, gt=0, description="Å")
+    d_max: float | None = Field(None, gt=0, description="Å")
+
+
+class AverageIn(Strict):
+    """A region that each sample is averaged over, in closed form.
+
+    lateral: all directions perpendicular to the normal. slab: `thickness` (Å) along the normal of
+    the planes `normal`. box: a parallelepiped with the given fractional `edges`. ball: `radius` (Å).
+    ``"lateral"`` alone is short for ``{"kind": "lateral"}``."""
+
+    kind: Literal["lateral", "slab", "box", "ball"]
+    normal: IndexVector | None = Field(
+        None, description="indices of the planes; by default those of normal_to (profile) or plane (slice)"
+    )
+    thickness: Length | None = Field(None, description="Å")
+    edges: list[Vector] | None = Field(None, min_length=1, max_length=3, description="fractional")
+    radius: Length | None = Field(None, description="Å")
+
+    @model_validator(mode="before")
+    @classmethod
+    def _short_form(cls, data: Any) -> Any:  # noqa: ANN401
+        return {"kind": "lateral"} if data == "lateral" else data
+
+
+class SetRequestIn(Strict):
+    """What all requests about a coefficient set have in common."""
+
+    remark: str | None = Field(None, max_length=2000, description="for people; the service does not read it")
+    set: CoefficientSetIn
+    resolution: ResolutionIn = ResolutionIn()
+    missing_phase: Literal["omit", "refuse"] = Field(
+        "omit", description="coefficients without phase: leave out and count, or refuse the request"
+    )
+
+
+class TreatedIn(SetRequestIn):
+    """A set with its treatment."""
+
+    coordinates: Coordinates = Field(
+        "fractional", description="of every position and vector but indices; Cartesian in Å"
+    )
+    field: Literal["density", "gradient", "gradient_magnitude", "laplacian", "autocorrelation", "response"] = "density"
+    window: WindowIn = WindowIn()
+    sharpen: float = Field(0.0, description="B of a factor exp(+B s²), Å²; negative smooths")
+    average: AverageIn | None = None
+    apply_merit: bool = Field(False, description="multiply each coefficient by its figure of merit")
+    self_term: float = Field(
+        0.0,
+        description="autocorrelation only: subtracted from every squared amplitude, in the square of its unit",
+    )
