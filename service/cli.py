@@ -22,13 +22,17 @@ from engine.evaluate import Work
 from engine.synthesis import Progress
 from service import intake, pipeline
 from service.encoders.negotiation import ROW_FORMATS, formats_of
+from service.encoders.report import report_csv, report_json
 from service.parts import Part
 from service.problems import Problem, at
 from service.schemas.coefficient_set import CoefficientSetIn, ReflectionSetIn
+from service.schemas.products import ProductIn
 from service.schemas.requests import INSPECT, InspectIn
-from service.settings import load_settings
+from service.schemas.treatment import SetRequestIn
+from service.settings import Settings, load_settings
 from service.spool import Spool
 from service.terminal import render
+from service.terminal_report import render_report
 from service.terminal_summary import render_summary
 
 SILENT_SECONDS = 1.5
@@ -147,6 +151,8 @@ def _run(options: argparse.Namespace) -> int:
     if isinstance(request, InspectIn):
         raise ValueError(f"{options.request.name} asks for an inspection: use densityloom inspect")
     form = _form(product, options.out)
+    if not isinstance(request, ProductIn):
+        return _analyse(product, request, form, options, settings)
     partial = options.out and options.out.with_name(f".{options.out.name}.partial")
     with Spool.at(partial) if partial else Spool.unnamed() as spool:
         try:
@@ -159,6 +165,28 @@ def _run(options: argparse.Namespace) -> int:
         partial.replace(options.out)
     print(render(done.coefficients, done.field))
     print(f"  {done.seconds:.3g} s" + (f", written to {options.out}" if options.out else ""))
+    return 0
+
+
+def _analyse(
+    product: str, request: SetRequestIn, form: str | None, options: argparse.Namespace, settings: Settings
+) -> int:
+    with tqdm(
+        total=1.0, desc=product, delay=SILENT_SECONDS, leave=False, bar_format="{desc} {percentage:3.0f}%"
+    ) as bar:
+
+        def progress(done: int, total: int) -> None:
+            bar.update(done / total - bar.n)
+
+        report = pipeline.analyse(product, request, settings, threads=options.threads, progress=progress)
+    if options.out is not None:
+        content = report_json(report) if form == "json" else report_csv(report)
+        partial = options.out.with_name(f".{options.out.name}.partial")
+        partial.write_bytes(content)
+        partial.replace(options.out)
+    print(render_report(report))
+    if options.out is not None:
+        print(f"  written to {options.out}")
     return 0
 
 

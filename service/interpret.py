@@ -34,7 +34,8 @@ def treatment(request: TreatedIn, lattice: Lattice) -> Treatment:
         window=window,
         sharpen=request.sharpen,
         average=_average(request, lattice),
-        apply_merit=request.apply_merit,
+        # In a combination figures of merit belong to the sets that are combined, and are used up there.
+        apply_merit=request.apply_merit and request.combination is None,
         self_term=request.self_term / scale,
     )
 
@@ -48,7 +49,7 @@ def samples(request: ProductIn, lattice: Lattice) -> Sampling:
         Pointing to the place in the body.
     """
     if isinstance(request, ProfileIn):
-        return line(request, lattice, request.coordinates)
+        return line(request, lattice, request.coordinates, request.samples)
     if isinstance(request, SliceIn):
         return plane(request, lattice, request.coordinates)
     if isinstance(request, GridIn):
@@ -90,7 +91,7 @@ def _own_normal(request: TreatedIn, lattice: Lattice) -> Sequence[int]:
     raise at(("average", "normal"), "is absent", "give the indices of the planes averaged over")
 
 
-def line(request: LineIn, lattice: Lattice, coordinates: Coordinates) -> AffineGrid:
+def line(request: LineIn, lattice: Lattice, coordinates: Coordinates, samples: int) -> AffineGrid:
     """Samples along a line.
 
     Raises
@@ -106,7 +107,7 @@ def line(request: LineIn, lattice: Lattice, coordinates: Coordinates) -> AffineG
                 lattice,
                 request.start or [],
                 request.end or [],
-                request.samples,
+                samples,
                 include_end=request.include_end,
                 coordinates=coordinates,
             )
@@ -116,7 +117,7 @@ def line(request: LineIn, lattice: Lattice, coordinates: Coordinates) -> AffineG
             return sampling.lattice_line(
                 lattice,
                 request.along or [],
-                request.samples,
+                samples,
                 origin=request.origin,
                 include_end=request.include_end,
                 coordinates=coordinates,
@@ -125,7 +126,7 @@ def line(request: LineIn, lattice: Lattice, coordinates: Coordinates) -> AffineG
         return sampling.normal_line(
             lattice,
             request.normal_to or [],
-            request.samples,
+            samples,
             length=request.length,
             origin=request.origin,
             include_end=request.include_end,

@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from engine.assembly import INDEX_COLUMNS, Columns, assemble
+from engine.assembly import INDEX_COLUMNS, Columns, MissingPhase, assemble
 from engine.coefficients import CoefficientSet
 from engine.errors import InputError
 from engine.lattice import Lattice
@@ -21,16 +21,17 @@ from service.schemas.treatment import SetRequestIn
 CELL_PARAMETERS = ("a", "b", "c", "alpha", "beta", "gamma")
 
 
-def coefficient_set(request: SetRequestIn, *, max_coefficients: int) -> CoefficientSet:
-    """The set of a request, expanded by its symmetry and cut to its resolution limits.
+def one_set(request: SetRequestIn, given: CoefficientSetIn, *, max_coefficients: int) -> CoefficientSet:
+    """A set of a request, expanded by its symmetry and cut to the resolution limits of the request.
 
     Raises
     ------
     Problem
-        Pointing to the place in the body.
+        Pointing to the place in the body, as if the set were the member ``set``.
     """
-    given = request.set
-    made = _of_columns(request, max_coefficients) if given.reflections is None else _of_file(request, max_coefficients)
+    missing = request.missing_phase
+    read = _of_columns if given.reflections is None else _of_file
+    made = read(given, missing, max_coefficients)
     with located("resolution"):
         return made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
 
@@ -60,8 +61,7 @@ def lattice_of(cell: Cell) -> Lattice:
     )
 
 
-def _of_file(request: SetRequestIn, max_coefficients: int) -> CoefficientSet:
-    given = request.set
+def _of_file(given: CoefficientSetIn, missing_phase: MissingPhase, max_coefficients: int) -> CoefficientSet:
     for name in COLUMN_NAMES:
         if getattr(given, name) is not None:
             raise at(("set", name), "is given beside a file of reflections", "leave it out, or send no file")
@@ -75,7 +75,7 @@ def _of_file(request: SetRequestIn, max_coefficients: int) -> CoefficientSet:
     _, made = prepared(given, lattice, max_rows=max_coefficients)
     with located("set"):
         coefficients = made.coefficients(unit=given.unit)
-    if request.missing_phase == "refuse" and coefficients.unphased:
+    if missing_phase == "refuse" and coefficients.unphased:
         raise at(
             ("missing_phase",),
             f"refuses, and {coefficients.unphased} coefficients have no phase",
@@ -84,8 +84,7 @@ def _of_file(request: SetRequestIn, max_coefficients: int) -> CoefficientSet:
     return replace(coefficients, tally=replace(coefficients.tally, rows=made.given.count))
 
 
-def _of_columns(request: SetRequestIn, max_coefficients: int) -> CoefficientSet:
-    given = request.set
+def _of_columns(given: CoefficientSetIn, missing_phase: MissingPhase, max_coefficients: int) -> CoefficientSet:
     if given.preparation is not None:
         raise at(("set", "preparation"), "is of a file, and none was sent", "leave it out, or send a file")
     if given.cell is None:
@@ -125,7 +124,7 @@ def _of_columns(request: SetRequestIn, max_coefficients: int) -> CoefficientSet:
             values=given.values,
             density=given.density,
             mean=_mean(given),
-            missing_phase=request.missing_phase,
+            missing_phase=missing_phase,
             unit=given.unit,
         )
     if given.symmetry is None:

@@ -15,6 +15,7 @@ from service.parts import Part
 from service.problems import MEDIA_TYPE as PROBLEM
 from service.problems import TITLES
 from service.schemas.answers import Answer, ProblemDocument
+from service.schemas.reports import REPORTS
 from service.schemas.requests import INSPECT, REQUESTS
 from service.schemas.summary import SummaryAnswer
 
@@ -25,6 +26,12 @@ SUMMARIES = {
     "slice": "Values on a plane",
     "grid": "Values in the whole cell or a box",
     "points": "Values at free points",
+    "extrema": "Maxima, minima and saddle points, distances and angles between them",
+    "integrals": "Integrals over slabs, lines, boxes and balls",
+    "layers": "Layers of a profile: position, height, width, area",
+    "statistics": "Moments and histogram of a field",
+    "windows": "What termination windows do to a point and to a step",
+    "compare": "Agreement of two densities on one cell",
     INSPECT: "Summary of a file of reflections",
 }
 
@@ -56,6 +63,19 @@ _CRYSTAL = {
     "amplitude": [41.3, 22.8, 15.2],
     "phase_deg": [180, 0, 35],
 }
+_MEASURED_FILM = {**_FILM, "sigma": [0.2, 0.4, 0.3, 0.5]}
+_MEASURED_CRYSTAL = {
+    "cell": {"a": 5.1, "b": 6.2, "c": 7.3, "alpha": 82, "beta": 97, "gamma": 105},
+    "symmetry": {"space_group": "P-1"},
+    "values": "structure_factor",
+    "h": [1, 0, 0, 1, 0, 1],
+    "k": [0, 1, 0, 1, 1, 0],
+    "l": [0, 0, 1, 0, 1, 1],
+    "amplitude": [31.2, 24.0, 18.3, 9.5, 12.1, 7.7],
+    "phase_deg": [0, 180, 0, 0, 180, 0],
+    "sigma": [0.5, 0.4, 0.4, 0.6, 0.5, 0.5],
+    "unit": "e/Å³",
+}
 _PREPARATION = {
     "set": {
         "cell": {"a": 5.1, "b": 6.2, "c": 7.3, "alpha": 82, "beta": 97, "gamma": 105},
@@ -71,6 +91,18 @@ EXAMPLES: dict[str, dict[str, Any]] = {
     "slice": {"set": _CRYSTAL, "plane": [0, 0, 1], "offset": 4.35, "width": 12, "height": 12, "spacing": 0.1},
     "grid": {"set": _CRYSTAL, "spacing": 0.3},
     "points": {"set": _CRYSTAL, "positions": [[0, 0, 0.25], [0.333, 0.667, 0.25]]},
+    "extrema": {"set": _MEASURED_CRYSTAL, "kinds": ["maximum", "minimum"], "within": 4.0},
+    "integrals": {
+        "set": _MEASURED_FILM,
+        "regions": [
+            {"kind": "slab", "from": 0, "to": 4.2, "label": "gallery"},
+            {"kind": "ball", "centre": [0.5], "radius": 2},
+        ],
+    },
+    "layers": {"set": _MEASURED_FILM, "from": [0], "to": [1]},
+    "statistics": {"set": _CRYSTAL, "bins": 32},
+    "windows": {"set": _FILM},
+    "compare": {"set": _FILM, "with": {**_FILM, "amplitude": [12.4, 40.8, 8.1, 23.3]}},
 }
 
 
@@ -133,7 +165,7 @@ def _answers(product: str) -> dict[str, Any]:
     for name in formats_of(product):
         schema: dict[str, Any] = {"type": "string", "format": "binary"}
         if name == "json":
-            answer = SummaryAnswer if product == INSPECT else Answer
+            answer = SummaryAnswer if product == INSPECT else REPORTS.get(product, Answer)
             schema = {"$ref": _SCHEMAS + answer.__name__}
         elif name == "csv":
             schema = {"type": "string"}
@@ -167,6 +199,7 @@ def install(app: FastAPI) -> None:
                 *((model, "validation") for model in REQUESTS.values()),
                 (Answer, "serialization"),
                 (SummaryAnswer, "serialization"),
+                *((model, "serialization") for model in REPORTS.values()),
                 (ProblemDocument, "serialization"),
             ]
             _, schemas = models_json_schema(models, ref_template=_SCHEMAS + "{model}")

@@ -14,12 +14,16 @@ from engine.coefficients import CoefficientSet
 from engine.evaluate import Field, Work, prepare
 from engine.preparation import summarize_set
 from engine.synthesis import Demand, Progress
-from service import interpret, interpret_file, interpret_set
+from service import interpret, interpret_combination, interpret_file, interpret_set
+from service.analyses.report import Limits, Report
+from service.analyses.run import analyse as analysis
+from service.encoders.report import report_csv, report_json
 from service.encoders.summary import summary_document
 from service.encoders.write import write
 from service.problems import Problem, at, located
 from service.schemas.products import ProductIn
 from service.schemas.requests import InspectIn, Request
+from service.schemas.treatment import SetRequestIn
 from service.settings import Settings
 from service.spool import Spool
 
@@ -64,7 +68,7 @@ def run(
             "the quantity sigma.",
         )
     begin = time.perf_counter()
-    coefficients = interpret_set.coefficient_set(request, max_coefficients=settings.max_coefficients)
+    coefficients = interpret_combination.coefficient_set(request, max_coefficients=settings.max_coefficients)
     sampling = interpret.samples(request, coefficients.lattice)
     wanted = math.prod(sampling.shape)
     if wanted > settings.max_samples:
@@ -125,6 +129,23 @@ def inspect(request: InspectIn, settings: Settings, *, progress: Progress | None
         return summary_document(table, left, summarize_set(made))
 
 
+def analyse(
+    product: str, request: SetRequestIn, settings: Settings, *, threads: int, progress: Progress | None = None
+) -> Report:
+    """Interpret a checked request for an analysis, and carry it out.
+
+    Raises
+    ------
+    Problem
+        The request cannot be carried out, or would exceed a limit.
+    """
+    limits = Limits(
+        max_bytes=settings.max_memory_bytes, max_rows=settings.max_coefficients, threads=threads, progress=progress
+    )
+    coefficients = interpret_combination.coefficient_set(request, max_coefficients=settings.max_coefficients)
+    return analysis(product, request, coefficients, limits)
+
+
 def answer(
     product: str,
     request: Request,
@@ -138,8 +159,11 @@ def answer(
     begin = time.perf_counter()
     if isinstance(request, InspectIn):
         spool.append(orjson.dumps(inspect(request, settings)))
-    else:
+    elif isinstance(request, ProductIn):
         run(product, request, form, spool, settings, threads=threads)
+    else:
+        report = analyse(product, request, settings, threads=threads)
+        spool.append(report_json(report) if form == "json" else report_csv(report))
     return time.perf_counter() - begin
 
 

@@ -135,6 +135,24 @@ def located(*prefix: str | int, renamed: Mapping[str, tuple[str | int, ...]] | N
         raise at((*prefix, *path, *row), fault.reason, fault.cure, kind=kind) from fault
 
 
+@contextmanager
+def moved(*place: str | int) -> Iterator[None]:
+    """Let problems that point into the member ``set`` point to the same place below another member.
+
+    For sets that a request holds beside its first.
+    """
+    try:
+        yield
+    except Problem as problem:
+        old, new = pointer(("set",)), pointer(place)
+
+        def relocated(text: str) -> str:
+            return new + text.removeprefix(old) if text == old or text.startswith((f"{old}/", f"{old}:")) else text
+
+        places = tuple(Place(relocated(one.pointer), one.reason, one.cure) for one in problem.places)
+        raise Problem(problem.kind, relocated(problem.detail), places, problem.headers) from problem
+
+
 def from_validation(error: ValidationError) -> Problem:
     """A schema's complaints as places; the values at fault are never echoed."""
     places = []

@@ -105,4 +105,9 @@ def _figures(coefficients: CoefficientSet, made: Field) -> list[str]:
     ]
     if made.resolution is not None:
         lines.append(f"  resolution {made.resolution[0]:.4g} … {made.resolution[1]:.4g} Å")
+    if made.sigma is not None:
+        sigma = made.sigma
+        lines.append(f"  standard uncertainty {sigma.minimum:.3g} … {sigma.maximum:.3g}{unit}, rms {sigma.rms:.3g}")
+        lines.append(f"  · the uncertainty contains: {'; '.join(sigma.contains)}")
+        lines.append(f"  · and not: {'; '.join(sigma.omits)}")
     return lines + [f"  · {text}" for text in (*made.applied, *made.notes)]

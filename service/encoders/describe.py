@@ -16,6 +16,9 @@ from engine.statistics import Statistics
 
 SIGN_CONVENTION = "n(r) = sum over G of n_G exp(+i G·r); F(hkl) = integral over one cell of rho(r) exp(+2 pi i h·x) dV"
 
+FRACTIONAL_NAMES = {1: ("x_3",), 2: ("x_1", "x_2"), 3: ("x_1", "x_2", "x_3")}
+"""Columns of fractional coordinates, by the dimension of the lattice; a stack's is that of its third axis."""
+
 
 def describe(
     product: str, field: FieldKind, coefficients: CoefficientSet, made: Field, quantity: Quantity = "value"
@@ -71,7 +74,7 @@ def columns(coefficients: CoefficientSet, made: Field, quantity: Quantity = "val
         found: list[tuple[str, AnyArray]] = [(f"{axis.label}_angstrom", axis.coordinates())]
     else:
         positions = made.sampling.positions()
-        names = {1: ("x_3",), 2: ("x_1", "x_2"), 3: ("x_1", "x_2", "x_3")}[coefficients.lattice.dimension]
+        names = FRACTIONAL_NAMES[coefficients.lattice.dimension]
         found = [(name, column) for name, column in zip(names, positions.T, strict=True)]
     parts = [("", made.values)]
     if made.components:

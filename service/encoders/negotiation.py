@@ -5,10 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from service.problems import Problem
+from service.schemas.analyses import ANALYSES
 
 ARRAY_FORMATS = ("json", "npy", "npz")
 ROW_FORMATS = (*ARRAY_FORMATS, "csv")
 """Profiles and points are rows and may be had as CSV too."""
+REPORT_FORMATS = ("json", "csv")
+"""An analysis answers a document, or its main table."""
 
 MEDIA_TYPES = {
     "json": "application/json",
@@ -36,6 +39,8 @@ def formats_of(product: str) -> tuple[str, ...]:
     """Formats a product may be had in."""
     if product == "inspect":
         return ("json",)
+    if product in ANALYSES:
+        return REPORT_FORMATS
     return ROW_FORMATS if product in ("profile", "points") else ARRAY_FORMATS
 
 

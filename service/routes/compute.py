@@ -1,4 +1,4 @@
-"""The computing endpoints: stateless, one for each product, and the inspection of a file."""
+"""The computing endpoints: stateless, one for each product and analysis, and the inspection of a file."""
 
 from __future__ import annotations
 
@@ -12,6 +12,7 @@ from starlette.requests import ClientDisconnect
 from service.encoders.negotiation import MEDIA_TYPES, choose
 from service.openapi import operation
 from service.problems import Problem
+from service.schemas.analyses import ANALYSES
 from service.schemas.products import PRODUCTS
 from service.schemas.requests import INSPECT
 from service.settings import Settings
@@ -25,7 +26,7 @@ GONE = 499
 """Status logged for a client that went away before its answer; nobody reads it."""
 
 
-ADDRESSES = {**{product: f"/{product}" for product in PRODUCTS}, INSPECT: "/sets/inspect"}
+ADDRESSES = {**{product: f"/{product}" for product in (*PRODUCTS, *ANALYSES)}, INSPECT: "/sets/inspect"}
 
 
 def router(pool: Pool, settings: Settings) -> APIRouter:

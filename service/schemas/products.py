@@ -6,7 +6,7 @@ from typing import Literal
 
 from pydantic import Field
 
-from service.schemas.sampling import FreePointsIn, LineIn, PlaneIn, VolumeIn
+from service.schemas.sampling import FreePointsIn, PlaneIn, SampledLineIn, VolumeIn
 from service.schemas.treatment import TreatedIn
 
 
@@ -26,7 +26,7 @@ class ProductIn(TreatedIn):
     )
 
 
-class ProfileIn(LineIn, ProductIn):
+class ProfileIn(SampledLineIn, ProductIn):
     """Values along a line: from … to; or `along` a lattice direction; or along the normal of planes."""
 
 

@@ -6,9 +6,11 @@ from typing import Literal
 
 from pydantic import Field
 
+from service.schemas.analyses import ANALYSES
 from service.schemas.base import Strict
 from service.schemas.coefficient_set import ReflectionSetIn
-from service.schemas.products import PRODUCTS, ProductIn
+from service.schemas.products import PRODUCTS
+from service.schemas.treatment import SetRequestIn
 
 INSPECT = "inspect"
 
@@ -21,5 +23,5 @@ class InspectIn(Strict):
     set: ReflectionSetIn = ReflectionSetIn()
 
 
-Request = ProductIn | InspectIn
-REQUESTS: dict[str, type[ProductIn] | type[InspectIn]] = {**PRODUCTS, INSPECT: InspectIn}
+Request = SetRequestIn | InspectIn
+REQUESTS: dict[str, type[SetRequestIn] | type[InspectIn]] = {**PRODUCTS, **ANALYSES, INSPECT: InspectIn}

@@ -11,7 +11,7 @@ from service.schemas.columns import PositionRows
 
 
 class LineIn(Strict):
-    """Values along a line: from … to; or `along` a lattice direction; or along the normal of planes."""
+    """A line: from … to; or `along` a lattice direction; or along the normal of planes."""
 
     start: Vector | None = Field(None, alias="from", description="first end of the line")
     end: Vector | None = Field(None, alias="to", description="second end of the line")
@@ -19,8 +19,13 @@ class LineIn(Strict):
     normal_to: IndexVector | None = Field(None, description="indices of planes; one repeat along their normal")
     length: Length | None = Field(None, description="Å along the normal, instead of one repeat")
     origin: Vector | None = Field(None, description="first end, for `along` and `normal_to`; default 0")
-    samples: Annotated[int, Field(ge=2, description="samples along the line")]
     include_end: bool = Field(True, description="whether the last sample falls on the far end")
+
+
+class SampledLineIn(LineIn):
+    """Values along a line."""
+
+    samples: Annotated[int, Field(ge=2, description="samples along the line")]
 
 
 class PlaneIn(Strict):

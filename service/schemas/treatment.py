@@ -8,6 +8,7 @@ from pydantic import Field, model_validator
 
 from service.schemas.base import Coordinates, IndexVector, Length, Strict, Vector
 from service.schemas.coefficient_set import CoefficientSetIn
+from service.schemas.combination import CombinationIn
 
 
 class WindowIn(Strict):
@@ -50,6 +51,7 @@ class SetRequestIn(Strict):
 
     remark: str | None = Field(None, max_length=2000, description="for people; the service does not read it")
     set: CoefficientSetIn
+    combination: CombinationIn | None = Field(None, description="combines the set with a second one")
     resolution: ResolutionIn = ResolutionIn()
     missing_phase: Literal["omit", "refuse"] = Field(
         "omit", description="coefficients without phase: leave out and count, or refuse the request"

@@ -1,0 +1,164 @@
+"""Extrema of a density, distances and angles between them."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from engine.coefficients import CoefficientSet
+from engine.features.extrema import Extrema, find_extrema
+from engine.features.geometry import angles, distances
+from engine.features.neighbours import neighbours
+from engine.features.regions import Region, ball_region, box_region
+from engine.lattice import Lattice
+from service import interpret
+from service.analyses.common import heading, rows, table_of, told
+from service.analyses.report import Limits, Report
+from service.encoders.describe import FRACTIONAL_NAMES
+from service.problems import at, located
+from service.schemas.analyses import ExtremaIn, RegionIn
+from service.schemas.base import Coordinates
+
+AXES = ("x", "y", "z")
+
+
+def extrema(request: ExtremaIn, coefficients: CoefficientSet, limits: Limits) -> Report:
+    """Find extrema and what lies between them.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    lattice = coefficients.lattice
+    treatment = interpret.treatment(request, lattice)
+    region = None if request.region is None else _region(request.region, lattice, request.coordinates)
+    with located():
+        made = find_extrema(
+            coefficients,
+            treatment,
+            kinds=tuple(request.kinds),
+            region=region,
+            spacing=request.spacing,
+            most=request.most,
+            least_value=request.least_value,
+            greatest_value=request.greatest_value,
+            least_significance=request.least_significance,
+            max_bytes=limits.max_bytes,
+            progress=limits.progress,
+        )
+    document = heading(
+        "extrema",
+        coefficients,
+        unit=made.unit,
+        contains=made.contains,
+        omits=made.omits,
+        applied=made.applied,
+        notes=made.notes,
+    )
+    document |= {
+        "found": made.found,
+        "extrema": _records(made),
+        "cell": None
+        if made.cell is None
+        else {"negative_curvatures": list(range(lattice.dimension + 1)), "counts": list(made.cell.counts)},
+        "distances": _distances(request, made),
+        "angles": _angles(request, made),
+    }
+    return Report(document=document, table=_table(made), told=told(document))
+
+
+def _region(given: RegionIn, lattice: Lattice, coordinates: Coordinates) -> Region:
+    box = {"origin", "edges"} & given.model_fields_set
+    ball = {"centre", "radius"} & given.model_fields_set
+    if bool(box) == bool(ball):
+        raise at(("region",), "is neither a parallelepiped nor a ball", "give origin and edges, or centre and radius")
+    for name in sorted({"origin", "edges"} - box) if box else sorted({"centre", "radius"} - ball):
+        raise at(("region", name), "is absent", "give origin and edges, or centre and radius")
+    with located("region"):
+        if box:
+            return box_region(lattice, given.origin or [], given.edges or [], coordinates=coordinates)
+        return ball_region(lattice, given.centre or [], given.radius or 0.0, coordinates=coordinates)
+
+
+def _records(made: Extrema) -> list[dict[str, Any]]:
+    return rows(
+        {
+            "number": list(range(1, made.count + 1)),
+            "kind": list(made.kind),
+            "fractional": made.fractional,
+            "cartesian": made.cartesian,
+            "value": made.value,
+            "sigma": made.sigma,
+            "significance": made.significance,
+            "position_sigma": made.position_sigma,
+            "largest_position_sigma": made.largest_position_sigma,
+            "curvatures": made.curvatures,
+            "directions": made.directions,
+            "multiplicity": made.multiplicity,
+            "site_symmetry": [list(operations) for operations in made.site_symmetry],
+        }
+    )
+
+
+def _table(made: Extrema) -> tuple[tuple[str, Any], ...]:
+    d = made.fractional.shape[1]
+    columns: dict[str, Any] = {"number": list(range(1, made.count + 1)), "kind": list(made.kind)}
+    columns |= dict(zip(FRACTIONAL_NAMES[d], made.fractional.T, strict=True))
+    columns |= {f"{AXES[axis]}_angstrom": made.cartesian[:, axis] for axis in range(d)}
+    columns |= {"value": made.value, "sigma": made.sigma, "significance": made.significance}
+    if made.position_sigma is not None:
+        columns |= {f"{AXES[axis]}_sigma": made.position_sigma[:, axis] for axis in range(d)}
+    columns |= {f"curvature_{axis + 1}": made.curvatures[:, axis] for axis in range(d)}
+    return table_of(columns | {"multiplicity": made.multiplicity, "site_order": made.site_order})
+
+
+def _distances(request: ExtremaIn, made: Extrema) -> list[dict[str, Any]]:
+    found: list[dict[str, Any]] = []
+    if request.distances:
+        numbers = _numbers(request.distances, made.count, "distances")
+        with located(renamed={"pairs": ("distances",)}):
+            found += _listed(distances(made, numbers - 1))
+    if request.within is not None:
+        with located(renamed={"within": ("within",)}):
+            found += _listed(neighbours(made, request.within))
+    return found
+
+
+def _listed(made: Any) -> list[dict[str, Any]]:  # noqa: ANN401
+    return rows(
+        {
+            "first": made.first + 1,
+            "second": made.second + 1,
+            "operation": list(made.operation),
+            "distance": made.value,
+            "sigma": made.sigma,
+            "vector": made.vector,
+        }
+    )
+
+
+def _angles(request: ExtremaIn, made: Extrema) -> list[dict[str, Any]]:
+    if not request.angles:
+        return []
+    numbers = _numbers(request.angles, made.count, "angles")
+    with located(renamed={"triples": ("angles",)}):
+        found = angles(made, numbers - 1)
+    return rows(
+        {
+            "first": found.rows[:, 0] + 1,
+            "vertex": found.rows[:, 1] + 1,
+            "last": found.rows[:, 2] + 1,
+            "angle_deg": found.value,
+            "sigma_deg": found.sigma,
+        }
+    )
+
+
+def _numbers(given: list[list[int]], count: int, name: str) -> np.ndarray[tuple[int, int], np.dtype[np.int64]]:
+    numbers = np.array(given, dtype=np.int64)
+    beyond = np.flatnonzero((numbers > count).any(axis=1))
+    if beyond.size:
+        raise at((name, int(beyond[0])), f"names more than the {count} extrema found", "give numbers of the list")
+    return numbers

@@ -1,0 +1,38 @@
+"""Reports of analyses as JSON and CSV."""
+
+from __future__ import annotations
+
+import csv
+import io
+import math
+
+import numpy as np
+import orjson
+
+from service.analyses.report import Report
+
+
+def report_json(report: Report) -> bytes:
+    """The document; what is not a finite number becomes null."""
+    return orjson.dumps(report.document, option=orjson.OPT_SERIALIZE_NUMPY)
+
+
+def report_csv(report: Report) -> bytes:
+    """The table, under comment lines that tell what it holds; an empty place is a value that does not exist."""
+    buffer = io.StringIO()
+    for line in report.told:
+        buffer.write(f"# {' '.join(line.split())}\n")
+    rows = csv.writer(buffer, lineterminator="\n")
+    rows.writerow(name for name, _ in report.table)
+    columns = [values.tolist() if isinstance(values, np.ndarray) else values for _, values in report.table]
+    rows.writerows([_cell(value) for value in row] for row in zip(*columns, strict=True))
+    return buffer.getvalue().encode()
+
+
+def _cell(value: object) -> object:
+    if value is None or (isinstance(value, float) and not math.isfinite(value)):
+        return ""
+    if isinstance(value, str):
+        # A cell must not start a formula where somebody opens the table in a spreadsheet.
+        return f"'{value}" if value[:1] in "=+-@" else " ".join(value.split())
+    return repr(value) if isinstance(value, float) else value
