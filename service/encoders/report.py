@@ -14,7 +14,14 @@ from service.analyses.report import Report
 
 def report_json(report: Report) -> bytes:
     """The document; what is not a finite number becomes null."""
-    return orjson.dumps(report.document, option=orjson.OPT_SERIALIZE_NUMPY)
+    return orjson.dumps(report.document, option=orjson.OPT_SERIALIZE_NUMPY, default=_plain)
+
+
+def _plain(value: object) -> object:
+    """Arrays that do not lie in memory as they are written."""
+    if isinstance(value, np.ndarray):
+        return value.tolist()
+    raise TypeError(f"{type(value).__name__} is not plain data")
 
 
 def report_csv(report: Report) -> bytes:

@@ -4,7 +4,8 @@ import numpy as np
 import pytest
 
 from service.intake import check
-from service.interpret_set import coefficient_set, lattice_of
+from service.interpret_combination import coefficient_set
+from service.interpret_set import lattice_of
 from service.parts import Part
 from service.problems import Problem
 from service.schemas.coefficient_set import Cell
