@@ -163,7 +163,7 @@ def _run(options: argparse.Namespace) -> int:
             raise
     if partial:
         partial.replace(options.out)
-    print(render(done.coefficients, done.field))
+    print(render(done.shown))
     print(f"  {done.seconds:.3g} s" + (f", written to {options.out}" if options.out else ""))
     return 0
 

@@ -11,7 +11,7 @@ from engine.errors import InputError
 from service.interpret_set import one_set
 from service.problems import at, located, moved
 from service.schemas.coefficient_set import CoefficientSetIn
-from service.schemas.combination import CombinationIn, ScaleIn
+from service.schemas.combination import CombinationIn, RelativeScaleIn
 from service.schemas.treatment import SetRequestIn
 
 
@@ -89,7 +89,7 @@ def combined(
         return _told(difference(first, second, scale=scale, phases=phases, missing=asked.missing, apply_merit=merit))
 
 
-def scale_choice(asked: ScaleIn) -> ScaleChoice:
+def scale_choice(asked: RelativeScaleIn) -> ScaleChoice:
     """How a set is brought to the scale of another.
 
     Raises

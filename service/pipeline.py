@@ -13,15 +13,19 @@ import orjson
 from engine.coefficients import CoefficientSet
 from engine.evaluate import Field, Work, prepare
 from engine.preparation import summarize_set
+from engine.resolution.change import ChangeWork, prepare_change
+from engine.resolution.envelope import Envelope
+from engine.scattering import composition
 from engine.synthesis import Demand, Progress
 from service import interpret, interpret_combination, interpret_file, interpret_set
 from service.analyses.report import Limits, Report
 from service.analyses.run import analyse as analysis
+from service.encoders.describe import Shown
 from service.encoders.report import report_csv, report_json
 from service.encoders.summary import summary_document
-from service.encoders.write import write
+from service.encoders.write import Wanted, write
 from service.problems import Problem, at, located
-from service.schemas.products import ProductIn
+from service.schemas.products import ProductIn, UnmeasuredIn
 from service.schemas.requests import InspectIn, Request
 from service.schemas.treatment import SetRequestIn
 from service.settings import Settings
@@ -35,9 +39,16 @@ Watch = Callable[[Work], Progress | None]
 class Done:
     """A finished request: what was computed, and how long it took."""
 
-    coefficients: CoefficientSet
-    field: Field
+    shown: Shown
     seconds: float
+
+    @property
+    def coefficients(self) -> CoefficientSet:
+        return self.shown.coefficients
+
+    @property
+    def field(self) -> Field:
+        return self.shown.field
 
 
 def run(
@@ -61,10 +72,10 @@ def run(
     """
     if request.uncertainty and request.quantity != "value":
         raise at(("uncertainty",), f"is asked for beside the quantity {request.quantity}", "ask for one of the two")
-    if request.uncertainty and form == "npy":
+    if (request.uncertainty or request.unmeasured is not None) and form == "npy":
         raise Problem(
             "not-acceptable",
-            "A .npy holds one array: ask for application/x-npz, which holds values and uncertainties, or for "
+            "A .npy holds one array: ask for application/x-npz, which holds values and what goes beside them, or for "
             "the quantity sigma.",
         )
     begin = time.perf_counter()
@@ -95,7 +106,10 @@ def run(
             uncertainty=request.uncertainty or request.quantity != "value",
             max_bytes=settings.max_memory_bytes,
         )
-    numbers = math.prod(work.shape) * ((2 if work.dtype.kind == "c" else 1) + request.uncertainty)
+    change = None if request.unmeasured is None else _change(request, request.unmeasured, work, settings)
+    numbers = math.prod(work.shape) * (
+        (2 if work.dtype.kind == "c" else 1) + request.uncertainty + (change is not None)
+    )
     if form in ("json", "csv") and numbers > settings.max_json_values:
         raise Problem(
             "too-costly",
@@ -103,14 +117,41 @@ def run(
             f"{form.upper()}. Ask for application/x-npy or application/x-npz.",
         )
     progress = None if watch is None else watch(work)
-    field = write(product, work, form, spool, progress, request.quantity)
-    if not math.isfinite(field.statistics.rms):
+    shown = write(Wanted(product=product, quantity=request.quantity, change=change), work, form, spool, progress)
+    if not math.isfinite(shown.field.statistics.rms):
         raise at(
             ("set",),
             f"gives values whose squares overflow in {request.precision} precision",
             "state the columns in a larger unit, or ask for double precision",
         )
-    return Done(coefficients, field, time.perf_counter() - begin)
+    return Done(shown, time.perf_counter() - begin)
+
+
+def _change(request: ProductIn, asked: UnmeasuredIn, work: Work, settings: Settings) -> ChangeWork:
+    """Cost what unmeasured terms could do, within what the work leaves of the memory.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    if (asked.formula is None) == (asked.amplitude is None):
+        raise at(("unmeasured",), "has neither or both of formula and amplitude", "give one of the two")
+    with located("unmeasured", renamed={"composition": ("formula",), "unmeasured": ()}):
+        if asked.formula is not None:
+            content = composition(asked.formula)
+            envelope = Envelope.from_composition(content, asked.b, units=asked.units)
+        else:
+            envelope = Envelope.from_bound(asked.amplitude or 0.0, asked.b)
+        return prepare_change(
+            work.coefficients,
+            envelope,
+            work.sampling,
+            work.treatment,
+            work.plans[0].demand,
+            d_stop=asked.d_stop,
+            max_bytes=settings.max_memory_bytes - work.bytes,
+        )
 
 
 def inspect(request: InspectIn, settings: Settings, *, progress: Progress | None = None) -> dict[str, Any]:

@@ -7,8 +7,8 @@ import math
 import numpy as np
 
 from engine.arrays import FloatArray
-from engine.coefficients import CoefficientSet
-from engine.evaluate import Field
+from engine.resolution.response import PointResponse
+from service.encoders.describe import Shown
 
 COLUMNS = 64
 ROWS = 14
@@ -18,8 +18,9 @@ SHADES = " ·░▒▓█"
 BINS = 64
 
 
-def render(coefficients: CoefficientSet, made: Field) -> str:
+def render(shown: Shown) -> str:
     """The field as text: a chart of a profile, shades of a plane, a list of points; then the figures."""
+    made = shown.field
     values = np.asarray(np.abs(made.values) if made.values.dtype.kind == "c" else made.values, dtype=np.float64)
     if made.components:
         values = np.sqrt((values**2).sum(axis=-1))
@@ -32,7 +33,7 @@ def render(coefficients: CoefficientSet, made: Field) -> str:
         picture.append(f"  {made.axes[0].label} → to the right, {made.axes[1].label} ↑ upwards")
     else:
         picture = _histogram(values)
-    return "\n".join([*picture, "", *_figures(coefficients, made)])
+    return "\n".join([*picture, "", *_figures(shown)])
 
 
 def _chart(values: FloatArray, along: FloatArray, unit: str) -> list[str]:
@@ -91,7 +92,8 @@ def _histogram(values: FloatArray) -> list[str]:
     return ["  how the values are distributed (logarithmic)", f"  {bar}", f"  {edges[0]:.4g} … {edges[-1]:.4g}"]
 
 
-def _figures(coefficients: CoefficientSet, made: Field) -> list[str]:
+def _figures(shown: Shown) -> list[str]:
+    coefficients, made = shown.coefficients, shown.field
     statistics = made.statistics
     mean = statistics.mean
     mean_text = f"{mean.real:.5g}{mean.imag:+.5g}i" if isinstance(mean, complex) else f"{mean:.5g}"
@@ -104,10 +106,23 @@ def _figures(coefficients: CoefficientSet, made: Field) -> list[str]:
         f"({'+'.join(made.methods)}, error ≤ {made.accuracy:.0e} of the largest value)",
     ]
     if made.resolution is not None:
-        lines.append(f"  resolution {made.resolution[0]:.4g} … {made.resolution[1]:.4g} Å")
+        lines.append(f"  resolution {made.resolution[0]:.4g} … {made.resolution[1]:.4g} Å{_point(shown.response)}")
     if made.sigma is not None:
         sigma = made.sigma
         lines.append(f"  standard uncertainty {sigma.minimum:.3g} … {sigma.maximum:.3g}{unit}, rms {sigma.rms:.3g}")
         lines.append(f"  · the uncertainty contains: {'; '.join(sigma.contains)}")
         lines.append(f"  · and not: {'; '.join(sigma.omits)}")
-    return lines + [f"  · {text}" for text in (*made.applied, *made.notes)]
+    if shown.change is not None:
+        change = shown.change
+        lines.append(
+            f"  terms that were not measured: rms change {change.rms:.3g}{unit}; at most {change.largest_inside:.3g} "
+            f"by those missing down to d_min, {change.largest_beyond:.3g} by those beyond"
+        )
+    return lines + [f"  · {text}" for text in (*made.applied, *made.notes, *shown.advice)]
+
+
+def _point(response: PointResponse | None) -> str:
+    if response is None:
+        return ""
+    widths = " × ".join(f"{width:.3g}" for width in response.widths)
+    return f"; a point is {widths} Å wide at half height, ripples to {100 * response.ripple:.2g} %"

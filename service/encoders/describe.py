@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -11,8 +13,11 @@ from engine.coefficients import CoefficientSet
 from engine.evaluate import Field
 from engine.fields import FieldKind
 from engine.quantities import Quantity, contour_levels
+from engine.resolution.change import Change
+from engine.resolution.response import PointResponse
 from engine.sampling import AffineGrid
 from engine.statistics import Statistics
+from engine.uncertainty.sigma import Sigma
 
 SIGN_CONVENTION = "n(r) = sum over G of n_G exp(+i G·r); F(hkl) = integral over one cell of rho(r) exp(+2 pi i h·x) dV"
 
@@ -20,19 +25,53 @@ FRACTIONAL_NAMES = {1: ("x_3",), 2: ("x_1", "x_2"), 3: ("x_1", "x_2", "x_3")}
 """Columns of fractional coordinates, by the dimension of the lattice; a stack's is that of its third axis."""
 
 
-def describe(
-    product: str, field: FieldKind, coefficients: CoefficientSet, made: Field, quantity: Quantity = "value"
-) -> dict[str, Any]:
-    """Everything but the values and their uncertainties, as plain data."""
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Shown:
+    """What an answer shows.
+
+    Attributes
+    ----------
+    product : str
+    kind : FieldKind
+    quantity : Quantity
+    coefficients : CoefficientSet
+    field : Field
+        With the quantity as its values.
+    change : Change or None
+        By terms that were not measured.
+    response : PointResponse or None
+        Of the coefficients summed; None where there is none or the answer does not tell it.
+    advice : tuple of str
+        Where request and data do not fit each other.
+    """
+
+    product: str
+    kind: FieldKind
+    quantity: Quantity
+    coefficients: CoefficientSet
+    field: Field
+    change: Change | None = None
+    response: PointResponse | None = None
+    advice: tuple[str, ...] = ()
+
+    @property
+    def sigma(self) -> Sigma | None:
+        """The uncertainty that goes beside the values."""
+        return self.field.sigma if self.quantity == "value" else None
+
+
+def describe(shown: Shown) -> dict[str, Any]:
+    """Everything but the arrays, as plain data."""
+    coefficients, field = shown.coefficients, shown.field
     tally = coefficients.tally
-    resolution = made.resolution
+    resolution = field.resolution
     return {
-        "product": product,
-        "field": field,
-        "quantity": quantity,
-        "unit": made.unit,
-        "shape": list(made.values.shape),
-        "components": list(made.components),
+        "product": shown.product,
+        "field": shown.kind,
+        "quantity": shown.quantity,
+        "unit": field.unit,
+        "shape": list(field.values.shape),
+        "components": list(field.components),
         "axes": [
             {
                 "label": axis.label,
@@ -42,33 +81,58 @@ def describe(
                 "count": axis.count,
                 "direction": axis.direction.tolist(),
             }
-            for axis in made.axes
+            for axis in field.axes
         ],
-        "origin": _origin(coefficients, made),
+        "origin": _origin(coefficients, field),
         "summary": {
-            **_numbers(made.statistics),
+            **_numbers(field.statistics),
             "coefficients": {
                 "rows": tally.rows,
-                "summed": made.summed,
-                "without_phase": made.unphased,
+                "summed": field.summed,
+                "without_phase": field.unphased,
                 "beyond_resolution": tally.beyond_resolution,
                 "friedel_pairs_averaged": tally.mates_joined,
                 "repeats_joined": tally.repeats_joined,
                 "zero_term": tally.zero_term,
             },
-            "resolution": None if resolution is None else {"d_min": resolution[0], "d_max": resolution[1], "unit": "Å"},
-            "uncertainty": _uncertainty(made, quantity),
-            "method": "+".join(made.methods),
-            "accuracy": made.accuracy,
+            "resolution": None if resolution is None else _resolution(resolution, shown.response),
+            "uncertainty": _uncertainty(field, shown.quantity),
+            "unmeasured": None if shown.change is None else _change(shown.change),
+            "method": "+".join(field.methods),
+            "accuracy": field.accuracy,
             "sign_convention": SIGN_CONVENTION,
         },
-        "applied": list(made.applied),
-        "notes": list(made.notes),
+        "applied": list(field.applied),
+        "notes": [*field.notes, *shown.advice],
     }
 
 
-def columns(coefficients: CoefficientSet, made: Field, quantity: Quantity = "value") -> list[tuple[str, AnyArray]]:
+def _resolution(limits: tuple[float, float], response: PointResponse | None) -> dict[str, Any]:
+    """Spacings summed, and what the series makes of a point."""
+    told: dict[str, Any] = {"d_min": limits[0], "d_max": limits[1], "unit": "Å", "point": None}
+    if response is not None:
+        told["point"] = {
+            "directions": response.directions.tolist(),
+            "widths": [width if math.isfinite(width) else None for width in response.widths.tolist()],
+            "ripple": response.ripple,
+            "ripple_at": response.ripple_at,
+            "searched": response.searched,
+        }
+    return told
+
+
+def _change(change: Change) -> dict[str, Any]:
+    return {
+        "rms": change.rms,
+        "largest_inside": change.largest_inside,
+        "largest_beyond": change.largest_beyond,
+        "assumed": list(change.words),
+    }
+
+
+def columns(shown: Shown) -> list[tuple[str, AnyArray]]:
     """Profiles and points as named columns: coordinates, then values, each with its uncertainty."""
+    coefficients, made = shown.coefficients, shown.field
     if made.axes:
         axis = made.axes[0]
         found: list[tuple[str, AnyArray]] = [(f"{axis.label}_angstrom", axis.coordinates())]
@@ -84,9 +148,11 @@ def columns(coefficients: CoefficientSet, made: Field, quantity: Quantity = "val
             found += [(f"value{suffix}_real", values.real), (f"value{suffix}_imag", values.imag)]
         else:
             found.append((f"value{suffix}", values))
-        if made.sigma is not None and quantity == "value":
-            sigma = made.sigma.values
+        if shown.sigma is not None:
+            sigma = shown.sigma.values
             found.append((f"uncertainty{suffix}", sigma[..., place] if made.components else sigma))
+    if shown.change is not None:
+        found.append(("unmeasured", shown.change.values))
     return found
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import io
 import zipfile
-from collections.abc import Callable
+from dataclasses import dataclass, replace
 from typing import Any, BinaryIO, cast
 
 import numpy as np
@@ -12,40 +12,84 @@ import orjson
 from numpy.lib import format as npy
 
 from engine.arrays import AnyArray
+from engine.errors import InputError
 from engine.evaluate import Field, Work, perform
+from engine.fields import summands
 from engine.quantities import Quantity, shown
+from engine.resolution.advice import advice
+from engine.resolution.change import ChangeWork, perform_change
+from engine.resolution.coverage import coverage
+from engine.resolution.response import point_response
 from engine.synthesis import Progress
-from service.encoders.describe import columns, describe
+from service.encoders.describe import SIGN_CONVENTION, Shown, columns, describe
 from service.spool import Spool
 
-Describe = Callable[[Field], dict[str, Any]]
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Wanted:
+    """What an answer shall hold beside the values of the work.
+
+    Attributes
+    ----------
+    product : str
+    quantity : Quantity
+        What its values are.
+    change : ChangeWork or None
+        What unmeasured terms could do.
+    """
+
+    product: str
+    quantity: Quantity = "value"
+    change: ChangeWork | None = None
 
 
-def write(
-    product: str, work: Work, form: str | None, spool: Spool, progress: Progress | None, quantity: Quantity = "value"
-) -> Field:
+def write(wanted: Wanted, work: Work, form: str | None, spool: Spool, progress: Progress | None = None) -> Shown:
     """Compute, and write the answer in the given form (None: in none) to the spool; returns what was written.
 
     The values of a .npy are computed where they will be read from; the other forms copy them once.
     """
-    if form == "npy" and quantity == "value":
+    if form == "npy" and wanted.quantity == "value":
         spool.append(_npy_header(work.shape, work.dtype))
-        return perform(work, out=spool.array(work.shape, work.dtype), progress=progress)
-    made = shown(perform(work, progress=progress), quantity)
-    if form is None:
-        return made
-    metadata = describe(product, work.treatment.field, work.coefficients, made, quantity)
-    beside = None if made.sigma is None or quantity != "value" else made.sigma.values
-    if form == "json":
-        spool.append(_json(made, beside, metadata))
-    elif form == "npz":
-        _npz(made, beside, metadata, spool)
-    elif form == "npy":
+        return _shown(wanted, work, perform(work, out=spool.array(work.shape, work.dtype), progress=progress))
+    made = shown(perform(work, progress=progress), wanted.quantity)
+    if form == "npy":
         spool.append(_npy_header(made.values.shape, made.values.dtype))
         spool.append(_bytes(made.values))
-    else:
-        spool.append(_csv(work, made, metadata, quantity))
-    return made
+        return _shown(wanted, work, made)
+    told = _explained(_shown(wanted, work, made), wanted, work)
+    if form == "json":
+        spool.append(_json(told))
+    elif form == "npz":
+        _npz(told, spool)
+    elif form == "csv":
+        spool.append(_csv(told))
+    return told
+
+
+def _shown(wanted: Wanted, work: Work, made: Field) -> Shown:
+    return Shown(
+        product=wanted.product,
+        kind=work.treatment.field,
+        quantity=wanted.quantity,
+        coefficients=work.coefficients,
+        field=made,
+    )
+
+
+def _explained(told: Shown, wanted: Wanted, work: Work) -> Shown:
+    """With what an array alone has no place for: unmeasured terms, resolution, advice."""
+    change = None if wanted.change is None else perform_change(wanted.change)
+    given, treatment = work.coefficients, work.treatment
+    if treatment.field == "autocorrelation":
+        return replace(told, change=change)
+    plain = replace(treatment, field="response", apply_merit=False, self_term=0.0)
+    try:
+        response = point_response(summands(given, plain).series[0])
+    except InputError:
+        # A window or an average that leaves nothing of a point; the values are told all the same.
+        response = None
+    words = advice(response, work.sampling, given.lattice, average=treatment.average, coverage=coverage(given))
+    return replace(told, change=change, response=response, advice=words)
 
 
 def _bytes(array: AnyArray) -> memoryview:
@@ -59,24 +103,32 @@ def _npy_header(shape: tuple[int, ...], dtype: np.dtype[np.generic]) -> bytes:
     return buffer.getvalue()
 
 
-def _json(made: Field, sigma: AnyArray | None, metadata: dict[str, Any]) -> bytes:
-    """The array goes into the text whole, in compiled code; no Python object per value."""
-    values = made.values
+def _json(told: Shown) -> bytes:
+    """Arrays go into the text whole, in compiled code; no Python object per value."""
+    values = told.field.values
     held: Any = values
     if values.dtype.kind == "c":
         held = {"real": np.ascontiguousarray(values.real), "imag": np.ascontiguousarray(values.imag)}
-    return orjson.dumps({"values": held, "uncertainty": sigma, **metadata}, option=orjson.OPT_SERIALIZE_NUMPY)
+    arrays = {
+        "values": held,
+        "uncertainty": None if told.sigma is None else told.sigma.values,
+        "unmeasured": None if told.change is None else told.change.values,
+    }
+    return orjson.dumps({**arrays, **describe(told)}, option=orjson.OPT_SERIALIZE_NUMPY)
 
 
-def _npz(made: Field, sigma: AnyArray | None, metadata: dict[str, Any], spool: Spool) -> None:
+def _npz(told: Shown, spool: Spool) -> None:
+    made = told.field
     arrays: dict[str, AnyArray | np.ndarray[Any, Any]] = {"values": made.values}
-    if sigma is not None:
-        arrays["uncertainty"] = sigma
+    if told.sigma is not None:
+        arrays["uncertainty"] = told.sigma.values
+    if told.change is not None:
+        arrays["unmeasured"] = told.change.values
     if made.axes:
         arrays |= {f"axis_{number}": axis.coordinates() for number, axis in enumerate(made.axes, start=1)}
     else:
         arrays["positions"] = made.sampling.positions()
-    arrays["metadata"] = np.array(orjson.dumps(metadata).decode())
+    arrays["metadata"] = np.array(orjson.dumps(describe(told)).decode())
     with zipfile.ZipFile(cast("BinaryIO", _Appending(spool)), "w", zipfile.ZIP_STORED) as archive:
         for name, array in arrays.items():
             with archive.open(f"{name}.npy", "w", force_zip64=True) as member:
@@ -104,19 +156,21 @@ class _Appending(io.RawIOBase):
         return False
 
 
-def _csv(work: Work, made: Field, metadata: dict[str, Any], quantity: Quantity) -> bytes:
-    found = columns(work.coefficients, made, quantity)
-    sigma = made.sigma
-    told = [
-        f"field: {metadata['field']}; quantity: {quantity}; unit: {metadata['unit']}",
-        f"method: {metadata['summary']['method']}; coefficients summed: {made.summed}",
-        f"sign convention: {metadata['summary']['sign_convention']}",
+def _csv(told: Shown) -> bytes:
+    found = columns(told)
+    made, sigma, change = told.field, told.sigma, told.change
+    lines = [
+        f"field: {told.kind}; quantity: {told.quantity}; unit: {made.unit}",
+        f"method: {'+'.join(made.methods)}; coefficients summed: {made.summed}",
+        f"sign convention: {SIGN_CONVENTION}",
         *([] if sigma is None else [f"uncertainty contains: {'; '.join(sigma.contains)}"]),
         *([] if sigma is None else [f"uncertainty omits: {'; '.join(sigma.omits)}"]),
-        *metadata["applied"],
-        *metadata["notes"],
+        *([] if change is None else [f"unmeasured terms, rms change: {'; '.join(change.words)}"]),
+        *made.applied,
+        *made.notes,
+        *told.advice,
     ]
-    head = "".join(f"# {' '.join(line.split())}\n" for line in told) + ",".join(name for name, _ in found) + "\n"
+    head = "".join(f"# {' '.join(line.split())}\n" for line in lines) + ",".join(name for name, _ in found) + "\n"
     table = np.ascontiguousarray(np.stack([column for _, column in found], axis=1), dtype=np.float64)
     # The shortest digits that read back as the same number, written by compiled code.
     rows = orjson.dumps(table, option=orjson.OPT_SERIALIZE_NUMPY)[2:-2].replace(b"],[", b"\n")

@@ -37,12 +37,37 @@ class CoefficientsOut(BaseModel):
     zero_term: str = Field(description="measured, given or absent")
 
 
-class ResolutionOut(BaseModel):
-    """Spacings of the coefficients summed."""
+class LimitsOut(BaseModel):
+    """Smallest and largest spacing of the coefficients."""
 
     d_min: float
     d_max: float
     unit: str
+
+
+class PointOut(BaseModel):
+    """What the series makes of a point of height 1, by exactly the coefficients summed, window and average included."""
+
+    directions: list[list[float]] = Field(description="principal directions, Cartesian unit vectors, sharpest first")
+    widths: list[float | None] = Field(description="full width at half maximum along each, Å; null: endless")
+    ripple: float = Field(description="most negative value found")
+    ripple_at: float | None = Field(description="its distance from the point, Å")
+    searched: str = Field(description="where the ripple was looked for")
+
+
+class ResolutionOut(LimitsOut):
+    """Spacings of the coefficients summed, and what they make of a point."""
+
+    point: PointOut | None
+
+
+class UnmeasuredOut(BaseModel):
+    """What terms that were not measured could do; no part of the uncertainty."""
+
+    rms: float = Field(description="root mean square change over all samples and phases")
+    largest_inside: float = Field(description="change were all phases aligned: terms missing down to d_min")
+    largest_beyond: float = Field(description="the same of the terms beyond")
+    assumed: list[str]
 
 
 class ContourLevel(BaseModel):
@@ -74,6 +99,7 @@ class SummaryOut(BaseModel):
     coefficients: CoefficientsOut
     resolution: ResolutionOut | None
     uncertainty: UncertaintyOut | None
+    unmeasured: UnmeasuredOut | None
     method: str
     accuracy: float = Field(description="largest error of the summation, relative to the largest |value|")
     sign_convention: str
@@ -84,6 +110,7 @@ class Answer(BaseModel):
 
     values: Any = Field(description="nested arrays in the order of the axes; complex values as real and imag")
     uncertainty: Any = Field(description="standard uncertainty of each value where asked for, else null")
+    unmeasured: Any = Field(description="rms change by terms that were not measured where asked for, else null")
     product: str
     field: str
     quantity: str = Field(description="what the values are: value, sigma or significance")

@@ -10,7 +10,7 @@ from service.schemas.base import Strict
 from service.schemas.coefficient_set import CoefficientSetIn
 
 
-class ScaleIn(Strict):
+class RelativeScaleIn(Strict):
     """How the second set is brought to the scale of the first.
 
     as_given: it is on it. given: multiplied by ``k exp(−b s²)``, s = |G|/4π. fitted: k, and with `displacement` b
@@ -31,7 +31,9 @@ class CombinationIn(Strict):
 
     kind: Literal["difference", "average"]
     other: CoefficientSetIn = Field(alias="with", description="the second set")
-    scale: ScaleIn = Field(description="never guessed: say as_given where the second is on the scale of the first")
+    scale: RelativeScaleIn = Field(
+        description="never guessed: say as_given where the second is on the scale of the first"
+    )
     phases: Literal["own", "first", "second", "third"] = Field(
         "own",
         description="own: complex coefficients are combined; else amplitudes, all with the phases of one set",

@@ -6,8 +6,22 @@ from typing import Literal
 
 from pydantic import Field
 
+from service.schemas.base import Strict
 from service.schemas.sampling import FreePointsIn, PlaneIn, SampledLineIn, VolumeIn
 from service.schemas.treatment import TreatedIn
+
+
+class UnmeasuredIn(Strict):
+    """How strong terms are expected to be that were not measured.
+
+    By a composition: `formula`, `units` in the cell and overall `b`; or by a bound: `amplitude`·exp(−b s²) of
+    |n_G|."""
+
+    formula: str | None = Field(None, max_length=1000, description="composition of a formula unit, such as SiO2")
+    units: float = Field(1.0, gt=0, description="formula units in the cell")
+    amplitude: float | None = Field(None, gt=0, description="of the bound at s = 0, in the density's unit")
+    b: float = Field(gt=0, description="B of exp(−B s²), s = |G|/4π, Å²")
+    d_stop: float | None = Field(None, gt=0, description="spacing down to which terms are listed, Å; the rest is added")
 
 
 class ProductIn(TreatedIn):
@@ -19,6 +33,9 @@ class ProductIn(TreatedIn):
     uncertainty: bool = Field(False, description="also the standard uncertainty of every value, by those of the set")
     quantity: Literal["value", "sigma", "significance"] = Field(
         "value", description="what the values of the answer are: the field, its standard uncertainty, or their ratio"
+    )
+    unmeasured: UnmeasuredIn | None = Field(
+        None, description="also how far terms that were not measured could change each value of a density"
     )
     precision: Literal["double", "single"] = "double"
     tolerance: float = Field(

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from pydantic import BaseModel, Field
 
-from service.schemas.answers import ResolutionOut
+from service.schemas.answers import LimitsOut
 
 
 class ErrorsOut(BaseModel):
@@ -19,7 +19,7 @@ class ReportOut(BaseModel):
 
     product: str
     unit: str = Field(description="of the density")
-    resolution: ResolutionOut | None
+    resolution: LimitsOut | None
     uncertainty: ErrorsOut | None = Field(description="null where the set has no uncertainties")
     applied: list[str] = Field(description="every treatment, in words")
     notes: list[str] = Field(description="what to know before trusting the numbers")

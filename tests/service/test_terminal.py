@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from engine import Demand, Treatment, evaluate, sampling
+from service.encoders.describe import Shown
 from service.terminal import COLUMNS, LISTED, ROWS, render
 from tests.service import bodies
 
@@ -14,7 +15,8 @@ ABSORBING = bodies.coefficients(bodies.ABSORBING)
 
 def shown(coefficients, where, treatment=None):
     field = evaluate(coefficients, where, treatment, Demand())
-    return field, render(coefficients, field).splitlines()
+    whole = Shown(product="", kind="density", quantity="value", coefficients=coefficients, field=field)
+    return field, render(whole).splitlines()
 
 
 def test_profile_is_a_chart():

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from engine import Treatment, evaluate, sampling
-from service.encoders.describe import SIGN_CONVENTION, columns, describe
+from service.encoders.describe import SIGN_CONVENTION, Shown, columns, describe
 from service.schemas.answers import Answer
 from tests.service import bodies
 
@@ -16,17 +16,21 @@ CRYSTAL = bodies.coefficients(bodies.CRYSTAL)
 ABSORBING = bodies.coefficients(bodies.ABSORBING)
 
 
+def shown(coefficients, made, product="grid", field="density"):
+    return Shown(product=product, kind=field, quantity="value", coefficients=coefficients, field=made)
+
+
 def described(coefficients, where, product="grid", field="density"):
     made = evaluate(coefficients, where, Treatment(field=field))
-    return made, describe(product, field, coefficients, made)
+    return made, describe(shown(coefficients, made, product, field))
 
 
 def test_everything_is_plain_data_and_as_described_to_clients():
     where = sampling.box(CRYSTAL.lattice, [0.1, 0, 0], np.eye(3) / 2, (2, 3, 4))
     made, told = described(CRYSTAL, where)
     assert json.loads(json.dumps(told)) == told
-    Answer.model_validate({"values": None, "uncertainty": None, **told}, strict=True)
-    assert set(Answer.model_fields) == {"values", "uncertainty", *told}
+    Answer.model_validate({"values": None, "uncertainty": None, "unmeasured": None, **told}, strict=True)
+    assert set(Answer.model_fields) == {"values", "uncertainty", "unmeasured", *told}
     assert told["shape"] == [2, 3, 4]
     assert [axis["label"] for axis in told["axes"]] == ["edge_1", "edge_2", "edge_3"]
     assert told["axes"][0]["step"] == pytest.approx(5.1 / 2 / 2)
@@ -73,6 +77,6 @@ def test_components_are_named():
 )
 def test_columns(coefficients, where, field, names):
     made = evaluate(coefficients, where, Treatment(field=field))
-    found = columns(coefficients, made)
+    found = columns(shown(coefficients, made))
     assert [name for name, _ in found] == names
     assert {column.shape for _, column in found} == {where.shape}

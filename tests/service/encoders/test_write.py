@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from engine import Demand, Treatment, evaluate, prepare, sampling
-from service.encoders.write import write
+from service.encoders.write import Wanted, write
 from service.spool import Spool
 from tests.service import bodies
 
@@ -21,7 +21,7 @@ CELL = sampling.full_cell(CRYSTAL.lattice, (4, 5, 6))
 def written(form, coefficients=CRYSTAL, where=CELL, treatment=None, demand=None, product="grid"):
     work = prepare(coefficients, where, treatment, demand)
     with Spool.unnamed() as spool:
-        made = write(product, work, form, spool, None)
+        made = write(Wanted(product=product), work, form, spool).field
         return made, bytes(spool.view())
 
 
@@ -89,5 +89,5 @@ def test_unit_cannot_break_out_of_the_comments():
 def test_progress_is_passed_on():
     told = []
     with Spool.unnamed() as spool:
-        write("grid", prepare(CRYSTAL, CELL), "json", spool, lambda done, total: told.append((done, total)))
+        write(Wanted(product="grid"), prepare(CRYSTAL, CELL), "json", spool, lambda done, total: told.append((done, total)))
     assert told[-1] == (4, 4)
