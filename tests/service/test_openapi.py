@@ -12,7 +12,9 @@ from service.encoders.negotiation import MEDIA_TYPES, formats_of
 from service.intake import FILE_TYPES
 from service.openapi import EXAMPLES
 from service.problems import TITLES
+from service.schemas.analyses import ANALYSES
 from service.schemas.products import PRODUCTS
+from service.schemas.reports import REPORTS
 from service.settings import Settings
 from tests.service import bodies
 from tests.service.problem_shape import assert_problem
@@ -75,7 +77,7 @@ def test_frame():
     assert "phases" in DOCUMENT["info"]["description"]
     assert set(DOCUMENT) <= {"openapi", "info", "paths", "components", "tags", "servers"}
     assert {path for _, path in OPERATIONS} == {
-        *(f"/v1/{name}" for name in PRODUCTS),
+        *(f"/v1/{name}" for name in (*PRODUCTS, *ANALYSES)),
         "/v1/sets/inspect",
         "/health/live",
         "/health/ready",
@@ -156,7 +158,7 @@ def test_forms_of_answer_are_described_and_given(client, product):
         assert answer.headers["content-type"].split(";")[0] in described
 
 
-@pytest.mark.parametrize("product", PRODUCTS)
+@pytest.mark.parametrize("product", [*PRODUCTS, *ANALYSES])
 def test_every_example_is_answered(client, product):
     body = OPERATIONS["post", f"/v1/{product}"]["requestBody"]
     assert body["required"] is True
@@ -167,11 +169,11 @@ def test_every_example_is_answered(client, product):
         assert example["summary"]
         answer = client.post(f"/v1/{product}", json=example["value"])
         assert answer.status_code == 200, answer.text
-        check_shape(answer.json(), "Answer")
+        check_shape(answer.json(), REPORTS[product].__name__ if product in REPORTS else "Answer")
 
 
-def test_examples_are_of_every_product():
-    assert set(EXAMPLES) == set(PRODUCTS)
+def test_examples_are_of_every_product_and_analysis():
+    assert set(EXAMPLES) == {*PRODUCTS, *ANALYSES}
 
 
 INSPECTION = OPERATIONS["post", "/v1/sets/inspect"]
@@ -263,7 +265,9 @@ def conforms(value, schema, place):
                 continue
         raise AssertionError(f"{place}: {value!r} is none of {schema['anyOf']}")
     kinds = {"object": dict, "array": list, "string": str, "number": (int, float), "integer": int, "null": type(None)}
-    if "type" in schema:
+    if schema.get("type") == "boolean":
+        assert isinstance(value, bool), place
+    elif "type" in schema:
         assert isinstance(value, kinds[schema["type"]]), place
         assert not isinstance(value, bool), place
     if "const" in schema:
