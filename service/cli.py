@@ -21,18 +21,22 @@ from engine.errors import EngineError
 from engine.evaluate import Work
 from engine.synthesis import Progress
 from service import intake, pipeline
-from service.encoders.negotiation import ROW_FORMATS, formats_of
+from service.encoders.negotiation import PICTURE_FORMATS, ROW_FORMATS, formats_of
 from service.encoders.report import report_csv, report_json
+from service.encoders.stack import write_stack
 from service.parts import Part
 from service.problems import Problem, at
 from service.schemas.coefficient_set import CoefficientSetIn, ReflectionSetIn
 from service.schemas.products import ProductIn
 from service.schemas.requests import INSPECT, InspectIn
+from service.schemas.series import SeriesIn
 from service.schemas.treatment import SetRequestIn
 from service.settings import Settings, load_settings
 from service.spool import Spool
+from service.stacks import stack
 from service.terminal import render
 from service.terminal_report import render_report
+from service.terminal_stack import render_stack
 from service.terminal_summary import render_summary
 
 SILENT_SECONDS = 1.5
@@ -78,8 +82,12 @@ def _parser() -> argparse.ArgumentParser:
     run.add_argument("--columns", type=Path, help="CSV or .npz file with the columns of the set")
     run.add_argument("--reflections", type=Path, help="CIF, delimited text or .npz with reflections to prepare")
     run.add_argument("--reference", type=Path, help="a second such file, whose scale the first is brought to")
+    run.add_argument("--with-columns", type=Path, help="the same of the second set of a combination or comparison")
+    run.add_argument("--with-reflections", type=Path, help="a file of reflections for the second set")
     run.add_argument(
-        "--out", type=Path, help=f"file to write, by its ending: {', '.join(ROW_FORMATS)}; without it, show the field"
+        "--out",
+        type=Path,
+        help=f"file to write, by its ending ({', '.join((*ROW_FORMATS, *PICTURE_FORMATS))}); else show the result",
     )
     run.add_argument("--threads", type=int, default=_cores(), help="default: all cores")
     run.set_defaults(action=_run)
@@ -134,23 +142,13 @@ def _run(options: argparse.Namespace) -> int:
     if options.threads < 1:
         raise ValueError("--threads: give at least 1")
     document = intake.decode(options.request.read_bytes())
-    table = None
-    if options.columns is not None:
-        media_type = TABLE_TYPES.get(options.columns.suffix)
-        if media_type is None:
-            raise ValueError(f"--columns: {options.columns.name} does not end in {' or '.join(TABLE_TYPES)}")
-        table = Part(media_type, options.columns.read_bytes())
-    product, request = intake.check(
-        None,
-        document,
-        table,
-        _file(options.reflections),
-        _file(options.reference),
-        max_body_bytes=settings.max_body_bytes,
-    )
+    files = {name: part for name in intake.FILES if (part := _file(options, name)) is not None}
+    product, request = intake.check(None, document, files, max_body_bytes=settings.max_body_bytes)
     if isinstance(request, InspectIn):
         raise ValueError(f"{options.request.name} asks for an inspection: use densityloom inspect")
     form = _form(product, options.out)
+    if isinstance(request, SeriesIn):
+        return _series(request, form, options, settings)
     if not isinstance(request, ProductIn):
         return _analyse(product, request, form, options, settings)
     partial = options.out and options.out.with_name(f".{options.out.name}.partial")
@@ -179,19 +177,46 @@ def _analyse(
             bar.update(done / total - bar.n)
 
         report = pipeline.analyse(product, request, settings, threads=options.threads, progress=progress)
-    if options.out is not None:
-        content = report_json(report) if form == "json" else report_csv(report)
-        partial = options.out.with_name(f".{options.out.name}.partial")
-        partial.write_bytes(content)
-        partial.replace(options.out)
     print(render_report(report))
     if options.out is not None:
-        print(f"  written to {options.out}")
+        _written(options.out, report_json(report) if form == "json" else report_csv(report))
     return 0
 
 
-def _file(path: Path | None) -> Part | None:
-    return None if path is None else Part("", path.read_bytes(), path.name)
+def _series(request: SeriesIn, form: str | None, options: argparse.Namespace, settings: Settings) -> int:
+    with tqdm(total=len(request.members), desc="series", delay=SILENT_SECONDS, leave=False) as bar:
+
+        def progress(done: int, total: int) -> None:
+            bar.total = total
+            bar.update(done - bar.n)
+
+        made = stack(request, settings, threads=options.threads, progress=progress)
+    print(render_stack(made))
+    if options.out is not None and form is not None:
+        _written(options.out, write_stack(made, form, request, settings))
+    return 0
+
+
+def _written(out: Path, content: bytes) -> None:
+    """Write a file whole or not at all."""
+    partial = out.with_name(f".{out.name}.partial")
+    partial.write_bytes(content)
+    partial.replace(out)
+    print(f"  written to {out}")
+
+
+def _file(options: argparse.Namespace, name: str) -> Part | None:
+    """The file of an option; that of a table is told apart by its ending."""
+    path: Path | None = getattr(options, name, None)
+    if path is None:
+        return None
+    media_type = ""
+    if name.endswith("columns"):
+        media_type = TABLE_TYPES.get(path.suffix, "")
+        if not media_type:
+            option = name.replace("_", "-")
+            raise ValueError(f"--{option}: {path.name} does not end in {' or '.join(TABLE_TYPES)}")
+    return Part(media_type, path.read_bytes(), path.name)
 
 
 def _inspect(options: argparse.Namespace) -> int:
@@ -206,9 +231,7 @@ def _inspect(options: argparse.Namespace) -> int:
     _, request = intake.check(
         INSPECT,
         {"set": taken},
-        None,
-        _file(options.reflections),
-        _file(options.reference),
+        {name: part for name in ("reflections", "reference") if (part := _file(options, name)) is not None},
         max_body_bytes=settings.max_body_bytes,
     )
     if not isinstance(request, InspectIn):

@@ -52,6 +52,12 @@ class Result:
         Coordinates along each axis, Å; empty for points.
     positions : float64 array, shape (M, d), or None
         Fractional positions of free points.
+    uncertainty : array or None
+        Standard uncertainty of each value, where it was asked for.
+    unmeasured : array or None
+        Rms change by terms that were not measured, where it was asked for.
+    variable : float64 array, shape (S,), or None
+        Of each member of a series.
     metadata : dict
         Unit, summary, treatments applied and notes: the JSON answer without its values.
     """
@@ -60,6 +66,9 @@ class Result:
     axes: tuple[NDArray[np.float64], ...]
     positions: NDArray[np.float64] | None
     metadata: dict[str, Any]
+    uncertainty: NDArray[Any] | None = None
+    unmeasured: NDArray[Any] | None = None
+    variable: NDArray[np.float64] | None = None
 
 
 class Client:
@@ -84,7 +93,7 @@ class Client:
 
         Parameters
         ----------
-        product : {"profile", "slice", "grid", "points"}
+        product : {"profile", "slice", "grid", "points", "series"}
         request : mapping
             As in the API; the set's columns may be here, as lists, or in `columns`.
         columns : mapping of str to array, optional
@@ -98,8 +107,36 @@ class Client:
         httpx.HTTPError
             It did not answer.
         """
+        return _result(self._answer(product, request, columns, NPZ).content)
+
+    def report(
+        self, analysis: str, request: Mapping[str, Any], columns: Mapping[str, ArrayLike] | None = None
+    ) -> dict[str, Any]:
+        """Have one analysis made; parameters and errors as of `compute`.
+
+        Parameters
+        ----------
+        analysis : {"extrema", "integrals", "layers", "statistics", "windows", "compare"}
+        """
+        made: dict[str, Any] = self._answer(analysis, request, columns, "application/json").json()
+        return made
+
+    def picture(
+        self,
+        product: str,
+        request: Mapping[str, Any],
+        columns: Mapping[str, ArrayLike] | None = None,
+        *,
+        media_type: str = "image/png",
+    ) -> bytes:
+        """Have a profile, slice or grid drawn, as image/png or image/svg+xml; else as `compute`."""
+        return self._answer(product, request, columns, media_type).content
+
+    def _answer(
+        self, product: str, request: Mapping[str, Any], columns: Mapping[str, ArrayLike] | None, accept: str
+    ) -> httpx.Response:
         body = orjson.dumps(dict(request), option=orjson.OPT_SERIALIZE_NUMPY)
-        headers = {"Accept": NPZ}
+        headers = {"Accept": accept}
         if columns is None:
             headers["Content-Type"] = "application/json"
             answer = self._http.post(f"/v1/{product}", content=body, headers=headers)
@@ -114,7 +151,7 @@ class Client:
             answer = self._http.post(f"/v1/{product}", files=files, headers=headers)
         if answer.is_error:
             raise _error(answer)
-        return _result(answer.content)
+        return answer
 
     def close(self) -> None:
         """Close the connection."""
@@ -148,4 +185,5 @@ def _result(content: bytes) -> Result:
             tuple(archive[name] for name in names),
             archive["positions"] if "positions" in archive.files else None,
             orjson.loads(str(archive["metadata"])),
+            *(archive[name] if name in archive.files else None for name in ("uncertainty", "unmeasured", "variable")),
         )

@@ -9,7 +9,8 @@ multipart/form-data
     ``columns`` with the columns as ``text/csv`` or ``application/x-npz``, or a part ``reflections``
     with a laboratory's file, which is prepared as ``set.preparation`` says.
 
-An inspection takes a file of reflections as the whole body too.
+The second set of a combination or a comparison comes in the same way, as ``with_columns`` or
+``with_reflections``. An inspection takes a file of reflections as the whole body too.
 """
 
 from __future__ import annotations
@@ -36,6 +37,8 @@ CSV = "text/csv"
 NPZ = "application/x-npz"
 FILE_TYPES = ("chemical/x-cif", CSV, "text/tab-separated-values", "text/plain", NPZ, "application/octet-stream")
 """Media types of a file of reflections; its content decides what it is."""
+FILES = ("columns", "reflections", "reference", "with_columns", "with_reflections", "with_reference")
+"""Parts of a form that hold files."""
 UNPACKED_RATIO = 8
 """An archive may unpack to this many times the longest body; columns hardly compress further."""
 
@@ -55,12 +58,13 @@ def read(product: str | None, content_type: str, body: bytes, *, max_body_bytes:
     """
     media_type = content_type.split(";")[0].strip().lower()
     if media_type == JSON:
-        return check(product, decode(body), None, max_body_bytes=max_body_bytes)
+        return check(product, decode(body), {}, max_body_bytes=max_body_bytes)
     if media_type == MULTIPART:
-        request, table, files = _parts(content_type, body, product)
-        return check(product, request, table, **files, max_body_bytes=max_body_bytes)
+        request, files = _parts(content_type, body, product)
+        return check(product, request, files, max_body_bytes=max_body_bytes)
     if product == INSPECT and media_type in FILE_TYPES:
-        return check(product, {"set": {}}, None, Part(media_type, body), max_body_bytes=max_body_bytes)
+        files = {"reflections": Part(media_type, body)}
+        return check(product, {"set": {}}, files, max_body_bytes=max_body_bytes)
     send = f"{JSON}, or {MULTIPART} with the parts request ({JSON}) and columns ({CSV} or {NPZ})"
     if product == INSPECT:
         send = f"the file as {', '.join(FILE_TYPES)}, or as the part reflections of {MULTIPART}"
@@ -91,33 +95,52 @@ def decode(body: bytes) -> dict[str, Any]:
 def check(
     product: str | None,
     document: dict[str, Any],
-    table: Part | None,
-    reflections: Part | None = None,
-    reference: Part | None = None,
+    files: Mapping[str, Part],
     *,
     max_body_bytes: int,
 ) -> tuple[str, Request]:
-    """Check a request against the schema of its product, joined with what was sent beside it."""
+    """Check a request against the schema of its product, joined with what was sent beside it.
+
+    Parameters
+    ----------
+    files : mapping
+        By the names of `FILES`.
+
+    Raises
+    ------
+    Problem
+        As `read`.
+    """
     named = document.get("product")
     if product is None:
         if not isinstance(named, str) or named not in REQUESTS:
             raise at(("product",), "names no product", f"give one of {', '.join(REQUESTS)}")
         product = named
     elif named is not None and named != product:
-        raise at(("product",), f"differs from the address, which asks for a {product}", "make the two agree")
-    if table is not None:
-        document = _joined(document, columns(table, max_body_bytes=max_body_bytes))
-    files = {"reflections": reflections, "reference": reference}
-    sent = {name: part for name, part in files.items() if part is not None}
-    if sent:
-        document = _joined(document, sent)
+        raise at(("product",), f"differs from the address, which asks for {product}", "make the two agree")
+    for prefix in ("", "with_"):
+        found: dict[str, NDArray[np.float64] | Part] = {
+            name: files[prefix + name] for name in ("reflections", "reference") if prefix + name in files
+        }
+        table = files.get(f"{prefix}columns")
+        if table is not None:
+            found |= columns(table, max_body_bytes=max_body_bytes, part=f"{prefix}columns")
+        if found:
+            document = _joined(document, found, _place(prefix, document))
     try:
         return product, REQUESTS[product].model_validate(document)
     except ValidationError as fault:
         raise from_validation(fault) from fault
 
 
-def columns(table: Part, *, max_body_bytes: int) -> dict[str, NDArray[np.float64]]:
+def _place(prefix: str, document: dict[str, Any]) -> tuple[str, ...]:
+    """Where the set stands that files with this prefix belong to."""
+    if not prefix:
+        return ("set",)
+    return ("combination", "with") if "combination" in document else ("with",)
+
+
+def columns(table: Part, *, max_body_bytes: int, part: str = "columns") -> dict[str, NDArray[np.float64]]:
     """Columns of a table.
 
     Raises
@@ -132,34 +155,43 @@ def columns(table: Part, *, max_body_bytes: int) -> dict[str, NDArray[np.float64
             return read_npz(table.data, COLUMN_NAMES, max_bytes=UNPACKED_RATIO * max_body_bytes)
     except InputError as fault:
         kind = "too-costly" if isinstance(fault, TooLargeError) else "invalid-request"
-        raise at(("set",), f"the part columns: {fault.reason}", fault.cure, kind=kind) from fault
-    raise Problem("unsupported-media-type", f"The part columns is {table.media_type[:60]!r}; send {CSV} or {NPZ}.")
+        raise at(("set",), f"the part {part}: {fault.reason}", fault.cure, kind=kind) from fault
+    raise Problem("unsupported-media-type", f"The part {part} is {table.media_type[:60]!r}; send {CSV} or {NPZ}.")
 
 
-def _joined(document: dict[str, Any], found: Mapping[str, NDArray[np.float64] | Part]) -> dict[str, Any]:
-    given = document.get("set")
+def _joined(
+    document: dict[str, Any], found: Mapping[str, NDArray[np.float64] | Part], place: tuple[str, ...]
+) -> dict[str, Any]:
+    """The document with columns or files in the set at a place."""
+    given: Any = document
+    for name in place:
+        given = given.get(name) if isinstance(given, dict) else None
     if not isinstance(given, dict):
-        raise at(("set",), "is absent or not an object", "give the cell and the meaning of the columns there")
+        raise at(place, "is absent or not an object", "give the cell and the meaning of the columns there")
     twice = sorted(set(given) & set(found))
     if twice:
-        raise at(("set", twice[0]), "is given in the request and again in a part of the form", "give it once")
-    return {**document, "set": {**given, **found}}
+        raise at((*place, twice[0]), "is given in the request and again in a part of the form", "give it once")
+    whole: Any = {**given, **found}
+    for depth in range(len(place) - 1, -1, -1):
+        outer: Any = document
+        for name in place[:depth]:
+            outer = outer[name]
+        whole = {**outer, place[depth]: whole}
+    return dict(whole)
 
 
-def _parts(
-    content_type: str, body: bytes, product: str | None
-) -> tuple[dict[str, Any], Part | None, dict[str, Part | None]]:
-    """The request, the columns, and the files of reflections of a form."""
+def _parts(content_type: str, body: bytes, product: str | None) -> tuple[dict[str, Any], dict[str, Part]]:
+    """The request and the files of a form."""
     parts = split(content_type, body)
-    unknown = sorted(set(parts) - {"request", "columns", "reflections", "reference"})
+    unknown = sorted(set(parts) - {"request", *FILES})
     if unknown:
         raise Problem(
             "malformed-body",
             f"The form has the part {unknown[0][:40]!r}; send the part request, and columns or reflections.",
         )
-    files = {name: parts.get(name) for name in ("reflections", "reference")}
+    files = {name: part for name, part in parts.items() if name != "request"}
     if "request" not in parts:
         if product != INSPECT:
             raise Problem("malformed-body", "The form has no part request; send it as JSON.")
-        return {"set": {}}, parts.get("columns"), files
-    return decode(parts["request"].data), parts.get("columns"), files
+        return {"set": {}}, files
+    return decode(parts["request"].data), files

@@ -10,13 +10,13 @@ from pydantic import BaseModel
 from pydantic.json_schema import models_json_schema
 
 from service.encoders.negotiation import MEDIA_TYPES, formats_of
-from service.intake import CSV, FILE_TYPES, JSON, MULTIPART, NPZ
+from service.intake import CSV, FILE_TYPES, FILES, JSON, MULTIPART, NPZ
 from service.parts import Part
 from service.problems import MEDIA_TYPE as PROBLEM
 from service.problems import TITLES
-from service.schemas.answers import Answer, ProblemDocument
+from service.schemas.answers import Answer, ProblemDocument, StackAnswer
 from service.schemas.reports import REPORTS
-from service.schemas.requests import INSPECT, REQUESTS
+from service.schemas.requests import INSPECT, REQUESTS, SERIES
 from service.schemas.summary import SummaryAnswer
 
 _SCHEMAS = "#/components/schemas/"
@@ -26,6 +26,7 @@ SUMMARIES = {
     "slice": "Values on a plane",
     "grid": "Values in the whole cell or a box",
     "points": "Values at free points",
+    "series": "A stack of profiles or slices along a variable of the run",
     "extrema": "Maxima, minima and saddle points, distances and angles between them",
     "integrals": "Integrals over slabs, lines, boxes and balls",
     "layers": "Layers of a profile: position, height, width, area",
@@ -91,6 +92,18 @@ EXAMPLES: dict[str, dict[str, Any]] = {
     "slice": {"set": _CRYSTAL, "plane": [0, 0, 1], "offset": 4.35, "width": 12, "height": 12, "spacing": 0.1},
     "grid": {"set": _CRYSTAL, "spacing": 0.3},
     "points": {"set": _CRYSTAL, "positions": [[0, 0, 0.25], [0.333, 0.667, 0.25]]},
+    "series": {
+        "set": _MEASURED_FILM,
+        "variable": "humidity",
+        "variable_unit": "%",
+        "members": [
+            {"value": 10, "set": {}},
+            {"value": 40, "set": {"amplitude": [12.9, 40.2, 9.1, 21.7]}},
+            {"value": 80, "set": {"amplitude": [14.6, 38.8, 9.9, 19.2]}},
+        ],
+        "profile": {"from": [0], "to": [1], "samples": 64},
+        "scale": {"kind": "as_given"},
+    },
     "extrema": {"set": _MEASURED_CRYSTAL, "kinds": ["maximum", "minimum"], "within": 4.0},
     "integrals": {
         "set": _MEASURED_FILM,
@@ -133,11 +146,13 @@ def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
     """The request body in each media type."""
     binary = {"type": "string", "format": "binary"}
     request = {"type": "object", "description": "the request without columns in its set"}
-    properties: dict[str, Any] = {"request": request, "reflections": binary, "reference": binary}
+    named = (
+        ("reflections", "reference") if product == INSPECT else [one for one in FILES if not one.endswith("columns")]
+    )
+    properties: dict[str, Any] = {"request": request, **dict.fromkeys(named, binary)}
     encoding: dict[str, Any] = {
         "request": {"contentType": JSON},
-        "reflections": {"contentType": ", ".join(FILE_TYPES)},
-        "reference": {"contentType": ", ".join(FILE_TYPES)},
+        **{name: {"contentType": ", ".join(FILE_TYPES)} for name in named},
     }
     if product == INSPECT:
         form = {"type": "object", "required": ["reflections"], "properties": {**properties, "request": schema}}
@@ -148,8 +163,9 @@ def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
         whole = {media_type: {"schema": binary} for media_type in FILE_TYPES}
         examples = {"small": {"summary": "A table and how to prepare it", "value": example}}
         return {MULTIPART: {"schema": form, "encoding": encoding, "examples": examples}, **whole}
-    properties["columns"] = binary
-    encoding["columns"] = {"contentType": f"{CSV}, {NPZ}"}
+    for name in ("columns", "with_columns"):
+        properties[name] = binary
+        encoding[name] = {"contentType": f"{CSV}, {NPZ}"}
     example = {"summary": f"A small {product}", "value": EXAMPLES[product]}
     return {
         JSON: {"schema": schema, "examples": {"small": example}},
@@ -165,9 +181,15 @@ def _answers(product: str) -> dict[str, Any]:
     for name in formats_of(product):
         schema: dict[str, Any] = {"type": "string", "format": "binary"}
         if name == "json":
-            answer = SummaryAnswer if product == INSPECT else REPORTS.get(product, Answer)
+            answer = (
+                SummaryAnswer
+                if product == INSPECT
+                else StackAnswer
+                if product == SERIES
+                else REPORTS.get(product, Answer)
+            )
             schema = {"$ref": _SCHEMAS + answer.__name__}
-        elif name == "csv":
+        elif name in ("csv", "svg"):
             schema = {"type": "string"}
         content[MEDIA_TYPES[name].split(";")[0]] = {"schema": schema}
     return content
@@ -177,7 +199,7 @@ def _problems() -> dict[int | str, dict[str, Any]]:
     content = {PROBLEM: {"schema": {"$ref": _SCHEMAS + ProblemDocument.__name__}}}
     kinds = ("malformed-body", "not-acceptable", "body-too-large", "unsupported-media-type", "invalid-request")
     found: dict[int | str, dict[str, Any]] = {}
-    for kind in (*kinds, "internal", "busy", "timeout"):
+    for kind in (*kinds, "internal", "busy", "timeout", "not-installed"):
         status, title = TITLES[kind]
         found[status] = {"description": title, "content": content}
     return found
@@ -198,6 +220,7 @@ def install(app: FastAPI) -> None:
             models: list[tuple[type[BaseModel], Literal["validation", "serialization"]]] = [
                 *((model, "validation") for model in REQUESTS.values()),
                 (Answer, "serialization"),
+                (StackAnswer, "serialization"),
                 (SummaryAnswer, "serialization"),
                 *((model, "serialization") for model in REPORTS.values()),
                 (ProblemDocument, "serialization"),

@@ -17,16 +17,20 @@ from engine.resolution.change import ChangeWork, prepare_change
 from engine.resolution.envelope import Envelope
 from engine.scattering import composition
 from engine.synthesis import Demand, Progress
-from service import interpret, interpret_combination, interpret_file, interpret_set
+from service import interpret, interpret_combination, interpret_file, interpret_picture, interpret_set, stacks
 from service.analyses.report import Limits, Report
 from service.analyses.run import analyse as analysis
 from service.encoders.describe import Shown
+from service.encoders.negotiation import PICTURE_FORMATS
+from service.encoders.picture import require_drawing
 from service.encoders.report import report_csv, report_json
+from service.encoders.stack import write_stack
 from service.encoders.summary import summary_document
 from service.encoders.write import Wanted, write
 from service.problems import Problem, at, located
-from service.schemas.products import ProductIn, UnmeasuredIn
+from service.schemas.products import DrawnIn, ProductIn, UnmeasuredIn
 from service.schemas.requests import InspectIn, Request
+from service.schemas.series import SeriesIn
 from service.schemas.treatment import SetRequestIn
 from service.settings import Settings
 from service.spool import Spool
@@ -78,18 +82,24 @@ def run(
             "A .npy holds one array: ask for application/x-npz, which holds values and what goes beside them, or for "
             "the quantity sigma.",
         )
+    drawn = None
+    if form in PICTURE_FORMATS:
+        require_drawing()
+        drawn = interpret_picture.options(request, request.picture if isinstance(request, DrawnIn) else None)
     begin = time.perf_counter()
     coefficients = interpret_combination.coefficient_set(request, max_coefficients=settings.max_coefficients)
     sampling = interpret.samples(request, coefficients.lattice)
-    wanted = math.prod(sampling.shape)
-    if wanted > settings.max_samples:
+    samples = math.prod(sampling.shape)
+    if samples > settings.max_samples:
         raise at(
             (_place_of_size(request),),
-            f"asks for {wanted:,} samples, more than the limit of {settings.max_samples:,}",
+            f"asks for {samples:,} samples, more than the limit of {settings.max_samples:,}",
             "ask for fewer, or have the limit raised",
             kind="too-costly",
         )
     treatment = interpret.treatment(request, coefficients.lattice)
+    if drawn is not None and isinstance(request, DrawnIn) and request.picture and request.picture.mark_layers:
+        drawn = interpret_picture.with_layers(drawn, coefficients, sampling, treatment)
     demand = Demand(precision=request.precision, tolerance=request.tolerance, threads=threads)
     renamed: dict[str, tuple[str | int, ...]] = {
         "phase_deg": ("set", "phase_deg"),
@@ -117,7 +127,8 @@ def run(
             f"{form.upper()}. Ask for application/x-npy or application/x-npz.",
         )
     progress = None if watch is None else watch(work)
-    shown = write(Wanted(product=product, quantity=request.quantity, change=change), work, form, spool, progress)
+    wanted = Wanted(product=product, quantity=request.quantity, change=change, picture=drawn)
+    shown = write(wanted, work, form, spool, progress)
     if not math.isfinite(shown.field.statistics.rms):
         raise at(
             ("set",),
@@ -202,6 +213,8 @@ def answer(
         spool.append(orjson.dumps(inspect(request, settings)))
     elif isinstance(request, ProductIn):
         run(product, request, form, spool, settings, threads=threads)
+    elif isinstance(request, SeriesIn):
+        spool.append(write_stack(stacks.stack(request, settings, threads=threads), form, request, settings))
     else:
         report = analyse(product, request, settings, threads=threads)
         spool.append(report_json(report) if form == "json" else report_csv(report))

@@ -25,6 +25,7 @@ TITLES = {
     "body-too-large": (413, "The body exceeds the limit"),
     "unsupported-media-type": (415, "The body's media type is not understood"),
     "not-acceptable": (406, "No acceptable form of answer"),
+    "not-installed": (501, "This needs an optional package that is not installed"),
     "not-found": (404, "There is nothing at this address"),
     "method-not-allowed": (405, "This address does not answer that method"),
     "busy": (503, "All workers are busy"),

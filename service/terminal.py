@@ -68,6 +68,14 @@ def _shades(values: FloatArray, steps: list[float]) -> list[str]:
     return [f"  {line}" for line in lines] + [f"  '{SHADES[0]}' {low:.4g} … '{SHADES[-1]}' {high:.4g}"]
 
 
+def shade_rows(values: FloatArray) -> list[str]:
+    """One line of shades for each row of (n, samples), on a common scale."""
+    picked = _means(np.asarray(values, dtype=np.float64), min(COLUMNS, values.shape[1]), axis=1)
+    low, high = float(picked.min()), float(picked.max())
+    levels = np.rint((picked - low) / ((high - low) or 1.0) * (len(SHADES) - 1)).astype(int)
+    return ["".join(SHADES[level] for level in row) for row in levels]
+
+
 def _means(values: FloatArray, count: int, axis: int) -> FloatArray:
     """Means over `count` stretches of one axis, as equal as whole samples allow all along it."""
     edges = np.arange(count + 1) * values.shape[axis] // count

@@ -15,7 +15,7 @@ from engine.fields import FieldKind
 from engine.quantities import Quantity, contour_levels
 from engine.resolution.change import Change
 from engine.resolution.response import PointResponse
-from engine.sampling import AffineGrid
+from engine.sampling import AffineGrid, Axis
 from engine.statistics import Statistics
 from engine.uncertainty.sigma import Sigma
 
@@ -72,17 +72,7 @@ def describe(shown: Shown) -> dict[str, Any]:
         "unit": field.unit,
         "shape": list(field.values.shape),
         "components": list(field.components),
-        "axes": [
-            {
-                "label": axis.label,
-                "unit": "Å",
-                "start": axis.start,
-                "step": axis.step,
-                "count": axis.count,
-                "direction": axis.direction.tolist(),
-            }
-            for axis in field.axes
-        ],
+        "axes": [described_axis(axis) for axis in field.axes],
         "origin": _origin(coefficients, field),
         "summary": {
             **_numbers(field.statistics),
@@ -127,6 +117,18 @@ def _change(change: Change) -> dict[str, Any]:
         "largest_inside": change.largest_inside,
         "largest_beyond": change.largest_beyond,
         "assumed": list(change.words),
+    }
+
+
+def described_axis(axis: Axis) -> dict[str, Any]:
+    """One axis as plain data."""
+    return {
+        "label": axis.label,
+        "unit": "Å",
+        "start": axis.start,
+        "step": axis.step,
+        "count": axis.count,
+        "direction": axis.direction.tolist(),
     }
 
 

@@ -10,6 +10,8 @@ from service.schemas.analyses import ANALYSES
 ARRAY_FORMATS = ("json", "npy", "npz")
 ROW_FORMATS = (*ARRAY_FORMATS, "csv")
 """Profiles and points are rows and may be had as CSV too."""
+PICTURE_FORMATS = ("png", "svg")
+"""Profiles, slices and grids may be had as pictures."""
 REPORT_FORMATS = ("json", "csv")
 """An analysis answers a document, or its main table."""
 
@@ -18,6 +20,8 @@ MEDIA_TYPES = {
     "npy": "application/x-npy",
     "npz": "application/x-npz",
     "csv": "text/csv; charset=utf-8",
+    "png": "image/png",
+    "svg": "image/svg+xml",
 }
 
 
@@ -41,7 +45,10 @@ def formats_of(product: str) -> tuple[str, ...]:
         return ("json",)
     if product in ANALYSES:
         return REPORT_FORMATS
-    return ROW_FORMATS if product in ("profile", "points") else ARRAY_FORMATS
+    if product == "series":
+        return ROW_FORMATS
+    rows = ROW_FORMATS if product in ("profile", "points") else ARRAY_FORMATS
+    return rows if product == "points" else (*rows, *PICTURE_FORMATS)
 
 
 def choose(product: str, accept: str | None, wanted: str | None) -> str:

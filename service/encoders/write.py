@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import io
 import zipfile
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from typing import Any, BinaryIO, cast
+from typing import Any, BinaryIO, Literal, cast
 
 import numpy as np
 import orjson
@@ -22,6 +23,9 @@ from engine.resolution.coverage import coverage
 from engine.resolution.response import point_response
 from engine.synthesis import Progress
 from service.encoders.describe import SIGN_CONVENTION, Shown, columns, describe
+from service.encoders.negotiation import PICTURE_FORMATS
+from service.encoders.picture import picture
+from service.pictures.options import PictureOptions
 from service.spool import Spool
 
 
@@ -36,11 +40,14 @@ class Wanted:
         What its values are.
     change : ChangeWork or None
         What unmeasured terms could do.
+    picture : PictureOptions or None
+        How it is drawn, where a picture is wanted.
     """
 
     product: str
     quantity: Quantity = "value"
     change: ChangeWork | None = None
+    picture: PictureOptions | None = None
 
 
 def write(wanted: Wanted, work: Work, form: str | None, spool: Spool, progress: Progress | None = None) -> Shown:
@@ -63,6 +70,8 @@ def write(wanted: Wanted, work: Work, form: str | None, spool: Spool, progress: 
         _npz(told, spool)
     elif form == "csv":
         spool.append(_csv(told))
+    elif form in PICTURE_FORMATS:
+        spool.append(picture(told, cast("Literal['png', 'svg']", form), wanted.picture))
     return told
 
 
@@ -170,8 +179,13 @@ def _csv(told: Shown) -> bytes:
         *made.notes,
         *told.advice,
     ]
-    head = "".join(f"# {' '.join(line.split())}\n" for line in lines) + ",".join(name for name, _ in found) + "\n"
-    table = np.ascontiguousarray(np.stack([column for _, column in found], axis=1), dtype=np.float64)
+    return csv_bytes(lines, found)
+
+
+def csv_bytes(lines: Sequence[str], columns: Sequence[tuple[str, AnyArray]]) -> bytes:
+    """Named columns of numbers under comment lines."""
+    head = "".join(f"# {' '.join(line.split())}\n" for line in lines) + ",".join(name for name, _ in columns) + "\n"
+    table = np.ascontiguousarray(np.stack([column for _, column in columns], axis=1), dtype=np.float64)
     # The shortest digits that read back as the same number, written by compiled code.
     rows = orjson.dumps(table, option=orjson.OPT_SERIALIZE_NUMPY)[2:-2].replace(b"],[", b"\n")
     return head.encode() + rows + b"\n"

@@ -14,7 +14,7 @@ from service.openapi import operation
 from service.problems import Problem
 from service.schemas.analyses import ANALYSES
 from service.schemas.products import PRODUCTS
-from service.schemas.requests import INSPECT
+from service.schemas.requests import INSPECT, SERIES
 from service.settings import Settings
 from service.spool import Spool
 from service.wall.pool import Answer, Job, Pool
@@ -26,7 +26,7 @@ GONE = 499
 """Status logged for a client that went away before its answer; nobody reads it."""
 
 
-ADDRESSES = {**{product: f"/{product}" for product in (*PRODUCTS, *ANALYSES)}, INSPECT: "/sets/inspect"}
+ADDRESSES = {**{product: f"/{product}" for product in (*PRODUCTS, SERIES, *ANALYSES)}, INSPECT: "/sets/inspect"}
 
 
 def router(pool: Pool, settings: Settings) -> APIRouter:

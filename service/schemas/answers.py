@@ -124,6 +124,47 @@ class Answer(BaseModel):
     notes: list[str] = Field(description="what to know before trusting the values")
 
 
+class VariableOut(BaseModel):
+    """What a series runs along."""
+
+    name: str
+    unit: str
+    values: list[float] = Field(description="of each member")
+
+
+class ErrorsOut(BaseModel):
+    """Which errors the standard uncertainties contain, and which they do not."""
+
+    contains: list[str]
+    omits: list[str]
+
+
+class MemberOut(BaseModel):
+    """What was done to one member, and what to know of it."""
+
+    value: float
+    applied: list[str]
+    notes: list[str]
+    uncertainty: ErrorsOut | None
+
+
+class StackAnswer(BaseModel):
+    """Fields of a series on the same samples."""
+
+    values: Any = Field(description="nested arrays, the members first")
+    uncertainty: Any = Field(description="of each value where asked for, else null")
+    product: str
+    field: str
+    unit: str
+    shape: list[int]
+    components: list[str]
+    variable: VariableOut
+    reference: int = Field(description="number of the member that others were brought to")
+    difference: bool
+    axes: list[AxisOut]
+    members: list[MemberOut]
+
+
 class ProblemPlace(BaseModel):
     """One place at fault."""
 

@@ -7,6 +7,7 @@ from typing import Literal
 from pydantic import Field
 
 from service.schemas.base import Strict
+from service.schemas.picture import PictureIn
 from service.schemas.sampling import FreePointsIn, PlaneIn, SampledLineIn, VolumeIn
 from service.schemas.treatment import TreatedIn
 
@@ -43,15 +44,21 @@ class ProductIn(TreatedIn):
     )
 
 
-class ProfileIn(SampledLineIn, ProductIn):
+class DrawnIn(ProductIn):
+    """A product that can be had as a picture."""
+
+    picture: PictureIn | None = Field(None, description="how it is drawn, as image/png or image/svg+xml")
+
+
+class ProfileIn(SampledLineIn, DrawnIn):
     """Values along a line: from … to; or `along` a lattice direction; or along the normal of planes."""
 
 
-class SliceIn(PlaneIn, ProductIn):
+class SliceIn(PlaneIn, DrawnIn):
     """Values on a plane: by origin and edges; or parallel to a lattice plane."""
 
 
-class GridIn(VolumeIn, ProductIn):
+class GridIn(VolumeIn, DrawnIn):
     """Values in the whole cell by `shape` or `spacing`; or in a box by origin, edges and shape."""
 
 

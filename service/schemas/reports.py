@@ -4,14 +4,7 @@ from __future__ import annotations
 
 from pydantic import BaseModel, Field
 
-from service.schemas.answers import LimitsOut
-
-
-class ErrorsOut(BaseModel):
-    """Which errors the standard uncertainties contain, and which they do not."""
-
-    contains: list[str]
-    omits: list[str]
+from service.schemas.answers import ErrorsOut, LimitsOut
 
 
 class ReportOut(BaseModel):

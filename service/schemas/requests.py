@@ -10,6 +10,7 @@ from service.schemas.analyses import ANALYSES
 from service.schemas.base import Strict
 from service.schemas.coefficient_set import ReflectionSetIn
 from service.schemas.products import PRODUCTS
+from service.schemas.series import SeriesIn
 from service.schemas.treatment import SetRequestIn
 
 INSPECT = "inspect"
@@ -23,5 +24,11 @@ class InspectIn(Strict):
     set: ReflectionSetIn = ReflectionSetIn()
 
 
+SERIES = "series"
 Request = SetRequestIn | InspectIn
-REQUESTS: dict[str, type[SetRequestIn] | type[InspectIn]] = {**PRODUCTS, **ANALYSES, INSPECT: InspectIn}
+REQUESTS: dict[str, type[SetRequestIn] | type[InspectIn]] = {
+    **PRODUCTS,
+    SERIES: SeriesIn,
+    **ANALYSES,
+    INSPECT: InspectIn,
+}

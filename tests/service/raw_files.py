@@ -76,4 +76,4 @@ def asked(file: str | bytes, product: str = "inspect", name: str = "", **members
     """The checked model of a request with a file."""
     request = {"set": members} if product == "inspect" else with_set(GRID, **members)
     data = file.encode() if isinstance(file, str) else file
-    return check(product, request, None, Part("", data, name), max_body_bytes=2**20)[1]
+    return check(product, request, {"reflections": Part("", data, name)}, max_body_bytes=2**20)[1]

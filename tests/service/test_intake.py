@@ -84,15 +84,15 @@ def test_boundary_may_be_in_the_data():
 
 
 def test_product_named_by_the_file():
-    product, request = check(None, {**bodies.GRID, "product": "grid"}, None, max_body_bytes=LIMIT)
+    product, request = check(None, {**bodies.GRID, "product": "grid"}, {}, max_body_bytes=LIMIT)
     assert product == "grid"
     assert isinstance(request, GridIn)
-    assert check("grid", {**bodies.GRID, "product": "grid"}, None, max_body_bytes=LIMIT)[0] == "grid"
+    assert check("grid", {**bodies.GRID, "product": "grid"}, {}, max_body_bytes=LIMIT)[0] == "grid"
 
 
 @pytest.mark.parametrize("named", [None, "cube", "", 3, ["grid"], {"grid": 1}, True])
 def test_file_must_name_a_product(named):
-    problem = refusal(check, None, {**bodies.GRID, "product": named}, None, max_body_bytes=LIMIT)
+    problem = refusal(check, None, {**bodies.GRID, "product": named}, {}, max_body_bytes=LIMIT)
     assert places(problem) == ["/product"]
     assert "profile, slice, grid, points" in problem.detail
 

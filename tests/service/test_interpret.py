@@ -15,7 +15,7 @@ FILM_LATTICE = Lattice.from_period(bodies.PERIOD)
 
 
 def request(product, body):
-    return check(product, body, None, max_body_bytes=2**20)[1]
+    return check(product, body, {}, max_body_bytes=2**20)[1]
 
 
 def samples(product, body, lattice=LATTICE):

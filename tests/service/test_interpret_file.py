@@ -13,7 +13,7 @@ from tests.service import bodies
 
 
 def made(given, file, name="", limit=100_000):
-    request = check("inspect", {"set": given}, None, Part("", file, name), max_body_bytes=2**22)[1]
+    request = check("inspect", {"set": given}, {"reflections": Part("", file, name)}, max_body_bytes=2**22)[1]
     lattice = None if request.set.cell is None else lattice_of(request.set.cell)
     return prepared(request.set, lattice, max_rows=limit)
 

@@ -16,8 +16,8 @@ LATTICE = bodies.coefficients(bodies.CRYSTAL).lattice
 
 
 def coefficients(body, product="profile", limit=100, file=None):
-    part = None if file is None else Part("text/csv", file, "rows.csv")
-    request = check(product, body, None, part, max_body_bytes=2**20)[1]
+    files = {} if file is None else {"reflections": Part("text/csv", file, "rows.csv")}
+    request = check(product, body, files, max_body_bytes=2**20)[1]
     return coefficient_set(request, max_coefficients=limit)
 
 

@@ -13,7 +13,7 @@ from tests.service import bodies
 
 
 def ran(product, body, form="npy", watch=None, threads=1, **limits):
-    _, request = intake.check(product, body, None, max_body_bytes=2**20)
+    _, request = intake.check(product, body, {}, max_body_bytes=2**20)
     with Spool.unnamed() as spool:
         done = pipeline.run(product, request, form, spool, Settings(**limits), threads=threads, watch=watch)
         return done, bytes(spool.view())

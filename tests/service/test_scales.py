@@ -25,7 +25,8 @@ def computed(scale, *, corrections=None, reference=None):
         request["set"]["preparation"]["corrections"] = corrections
     del request["along"], request["samples"]
     request |= {"product": "points", "positions": [[0], [0.25], [0.37]]}
-    product, checked = intake.check(None, request, None, SCAN, reference, max_body_bytes=10**6)
+    files = {"reflections": SCAN} if reference is None else {"reflections": SCAN, "reference": reference}
+    product, checked = intake.check(None, request, files, max_body_bytes=10**6)
     with Spool.unnamed() as spool:
         return pipeline.run(product, checked, "npy", spool, Settings(), threads=1)
 

@@ -13,7 +13,7 @@ from tests.service import bodies
 
 
 def summary(given, file, name):
-    request = check("inspect", {"set": given}, None, Part("", file, name), max_body_bytes=2**22)[1]
+    request = check("inspect", {"set": given}, {"reflections": Part("", file, name)}, max_body_bytes=2**22)[1]
     return pipeline.inspect(request, Settings())
 
 

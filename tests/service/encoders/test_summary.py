@@ -16,7 +16,7 @@ from tests.service import bodies
 
 
 def document(given, file, name):
-    request = check("inspect", {"set": given}, None, Part("", file, name), max_body_bytes=2**22)[1]
+    request = check("inspect", {"set": given}, {"reflections": Part("", file, name)}, max_body_bytes=2**22)[1]
     lattice = None if request.set.cell is None else lattice_of(request.set.cell)
     (table, left), made = prepared(request.set, lattice, max_rows=100_000)
     return made, summary_document(table, left, summarize_set(made))
