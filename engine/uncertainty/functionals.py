@@ -62,7 +62,7 @@ class PointDerivatives:
         for row, axes in enumerate(self.orders):
             for axis in axes:
                 multipliers[row] *= wavevectors[:, axis]
-        return np.asarray((waves[:, None, :] * multipliers[None]).reshape(self.count, -1))
+        return np.asarray((waves[:, None, :] * multipliers[None]).reshape(self.count, indices.shape[0]))
 
 
 def numbers(series: Series, functional: Functional) -> FloatArray:
@@ -98,7 +98,9 @@ def covariance(
     """
     count = functional.count
     size = block or count
-    blocks = count // size if size else 0
+    if not count:
+        return np.zeros((0, size, size) if block else (0, 0))
+    blocks = count // size
     total: FloatArray = np.zeros((blocks, size, size))
     scaled = np.zeros(count)
     weight = np.where(errors.indices.any(axis=1), 2.0, 1.0)
@@ -121,9 +123,7 @@ def covariance(
             fixed = (functional.factors(errors.lattice, zero)[:, 0] * errors.fixed).real
         common = (errors.scale * (scaled - fixed)).reshape(blocks, size)
         total += common[:, :, None] * common[:, None, :]
-    if block:
-        return total
-    return np.asarray(total[0]) if blocks else np.zeros((0, 0))
+    return total if block else np.asarray(total[0])
 
 
 def _runs(errors: Errors, step: int) -> Iterator[tuple[slice, IntArray]]:
