@@ -43,6 +43,64 @@ class Tally:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class PlaneErrors:
+    """Errors of coefficients as covariances in the complex plane.
+
+    What a combination of sets needs: the errors of a difference lie neither along its phasor nor across it.
+
+    Attributes
+    ----------
+    phasor : complex128, shape (N,)
+        Unit phasors, the first axis of each covariance. Those of coefficients that symmetry relates are
+        related as the coefficients are; so they stay where a coefficient itself vanishes.
+    along, across : float64, shape (N,)
+        Standard deviations along the phasor and at a right angle to it, in the density's unit.
+    mixed : float64, shape (N,)
+        Covariance of the two, in the unit's square; the right angle is counted anticlockwise.
+    contains, omits : tuple of str
+        Which errors are in them, and which are not.
+    """
+
+    phasor: ComplexArray
+    along: FloatArray
+    across: FloatArray
+    mixed: FloatArray
+    contains: tuple[str, ...] = ()
+    omits: tuple[str, ...] = ()
+
+    def select(self, kept: BoolArray | IntArray) -> PlaneErrors:
+        """The chosen rows."""
+        return replace(
+            self,
+            phasor=self.phasor[kept],
+            along=self.along[kept],
+            across=self.across[kept],
+            mixed=self.mixed[kept],
+        )
+
+    def scaled(self, factors: FloatArray) -> PlaneErrors:
+        """Those of the coefficients multiplied by real factors, shape (N,)."""
+        size = np.abs(factors)
+        return replace(self, along=size * self.along, across=size * self.across, mixed=np.asarray(size**2 * self.mixed))
+
+    def towards(self, phasor: ComplexArray) -> PlaneErrors:
+        """The same covariances in the axes of other unit phasors, shape (N,)."""
+        turn = self.phasor * phasor.conj()
+        c, s = turn.real, turn.imag
+        square_along, square_across = self.along**2, self.across**2
+        along = (c**2 * square_along - 2 * c * s * self.mixed) + s**2 * square_across
+        across = (s**2 * square_along + 2 * c * s * self.mixed) + c**2 * square_across
+        return replace(
+            self,
+            phasor=phasor,
+            # A covariance of rank 1 may leave less than zero at a right angle by rounding.
+            along=np.sqrt(np.maximum(along, 0.0)),
+            across=np.sqrt(np.maximum(across, 0.0)),
+            mixed=np.asarray(c * s * (square_along - square_across) + (c**2 - s**2) * self.mixed),
+        )
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class CoefficientSet:
     """Fourier coefficients of a density on a lattice.
 
@@ -75,6 +133,10 @@ class CoefficientSet:
         measurement of its own.
     scale_sigma : float
         Relative standard uncertainty of the scale common to all coefficients.
+    plane_errors : PlaneErrors or None
+        Covariances in the complex plane, where they are known better than ``sigma`` and
+        ``phase_sigma`` can tell: those of a combination of sets. ``sigma``, ``phase_sigma`` and ``merit``
+        then describe, and uncertainties are made from these.
     """
 
     lattice: Lattice
@@ -90,6 +152,7 @@ class CoefficientSet:
     history: tuple[str, ...] = ()
     group: Group | None = None
     scale_sigma: float = 0.0
+    plane_errors: PlaneErrors | None = None
 
     @property
     def count(self) -> int:
@@ -119,6 +182,7 @@ class CoefficientSet:
             sigma=part(self.sigma),
             phase_sigma=part(self.phase_sigma),
             merit=part(self.merit),
+            plane_errors=None if self.plane_errors is None else self.plane_errors.select(kept),
         )
 
     def within(self, *, d_min: float | None = None, d_max: float | None = None) -> CoefficientSet:

@@ -290,7 +290,14 @@ def relative_scale(
 def _matching(reference: Reflections, other: Reflections) -> tuple[IntArray, IntArray]:
     """Places of the common reflections in the one set and in the other."""
     both = np.concatenate([reference.indices, other.indices])
-    codes = np.unique(both, axis=0, return_inverse=True)[1].reshape(-1)
+    base = 2 * int(np.abs(both).max(initial=0)) + 1
+    dimension = both.shape[1]
+    if base**dimension <= np.iinfo(np.int64).max:
+        # One whole number a row, in lexical order: rows themselves take twenty times as long to sort.
+        keys = both @ np.array([base**power for power in range(dimension - 1, -1, -1)], dtype=np.int64)
+        codes = np.unique(keys, return_inverse=True)[1]
+    else:
+        codes = np.unique(both, axis=0, return_inverse=True)[1].reshape(-1)
     first, second = codes[: reference.count], codes[reference.count :]
     for name, part, rows in (("reference", first, reference.row), ("other", second, other.row)):
         repeated = np.bincount(part, minlength=1)[part] > 1
