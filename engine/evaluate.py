@@ -251,7 +251,7 @@ def iterate(work: Work) -> Iterator[AnyArray]:
     InputError
         The field is a vector or its length; sum one component at a time.
     """
-    if len(work.plans) != 1:
+    if work.parts.components or work.parts.magnitude:
         raise InputError("field", "has several components", "iterate over a scalar field")
     one = work.plans[0]
     yield from stream(one.prepare(), work.dtype, work.sampling.shape[1:], one.demand.threads)

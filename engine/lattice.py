@@ -147,7 +147,8 @@ class Lattice:
 
     def wavevectors(self, indices: IntArray) -> FloatArray:
         """Cartesian G = Σ m_i g_i, Å⁻¹; indices (N, d) -> (N, d)."""
-        return np.asarray(indices @ self.reciprocal)
+        # Whole numbers times floating ones would be multiplied without the linear-algebra library.
+        return np.asarray(indices.astype(np.float64) @ self.reciprocal)
 
     def magnitudes(self, indices: IntArray) -> FloatArray:
         """|G| = q in Å⁻¹; indices (N, d) -> (N,)."""

@@ -242,7 +242,8 @@ def symmetry_group(symmetry: SymmetryIn, dimension: int) -> Group:
     Problem
         None or several are named, it is of another dimension, or it is unknown.
     """
-    named = [name for name in type(symmetry).model_fields if getattr(symmetry, name) is not None]
+    forms = set(type(symmetry).model_fields) - {"columns"}
+    named = [name for name in type(symmetry).model_fields if name in forms and getattr(symmetry, name) is not None]
     if len(named) != 1:
         raise at(("set", "symmetry"), f"names {len(named)} groups", f"give one of {', '.join(DIMENSIONS)}, operations")
     form = named[0]
@@ -270,6 +271,8 @@ def _named(form: str, value: int | str | list[str], dimension: int) -> Group:
 def _group(asked: SymmetryIn | None, found: Symmetry, dimension: int) -> Group:
     """The symmetry asked for, else the file's, else none but the lattice's translations."""
     if asked is not None:
+        if asked.columns != "asymmetric":
+            raise at(("set", "symmetry", "columns"), "is of columns, and a file was sent", "leave it out")
         return symmetry_group(asked, dimension)
     with located("set", "reflections"):
         name = found.hermann_mauguin or found.hall or ""

@@ -13,6 +13,7 @@ from engine.lattice import Lattice
 from engine.phases import coefficient_set as coefficients_of
 from engine.reflections import Reflections
 from engine.symmetry import Group, expand
+from engine.symmetry.invariance import related
 from service.interpret_file import prepared, symmetry_group
 from service.problems import at, located
 from service.schemas.coefficient_set import COLUMN_NAMES, INDEX_NAMES, Cell, CoefficientSetIn
@@ -130,6 +131,9 @@ def _of_columns(given: CoefficientSetIn, missing_phase: MissingPhase, max_coeffi
     if given.symmetry is None:
         return replace(made, scale_sigma=given.scale_sigma)
     group = symmetry_group(given.symmetry, lattice.dimension)
+    if given.symmetry.columns == "full":
+        with located("set"):
+            return replace(related(made, group), scale_sigma=given.scale_sigma)
     return _expanded(made, given, lattice, group)
 
 

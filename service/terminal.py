@@ -117,7 +117,8 @@ def _figures(shown: Shown) -> list[str]:
         lines.append(f"  resolution {made.resolution[0]:.4g} … {made.resolution[1]:.4g} Å{_point(shown.response)}")
     if made.sigma is not None:
         sigma = made.sigma
-        lines.append(f"  standard uncertainty {sigma.minimum:.3g} … {sigma.maximum:.3g}{unit}, rms {sigma.rms:.3g}")
+        of_sigma = "" if shown.quantity == "significance" else unit
+        lines.append(f"  standard uncertainty {sigma.minimum:.3g} … {sigma.maximum:.3g}{of_sigma}, rms {sigma.rms:.3g}")
         lines.append(f"  · the uncertainty contains: {'; '.join(sigma.contains)}")
         lines.append(f"  · and not: {'; '.join(sigma.omits)}")
     if shown.change is not None:

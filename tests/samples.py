@@ -20,7 +20,7 @@ from scipy import special
 
 from engine.lattice import Lattice
 from engine.series import faces_backward
-from tests import samples_raw
+from tests import samples_raw, samples_trust
 from tests.external.silicon import deformation_set
 
 FOLDER = Path(__file__).parent.parent / "sample_requests"
@@ -37,8 +37,22 @@ def build() -> dict[str, dict[str, Any]]:
     triclinic = crystal_set(TRICLINIC, TRICLINIC_ATOMS, d_min=1.1, unit="e/Å³")
     silicon = deformation_set(forbidden_adds=True)
     film = film_set()
+    silicon_set = {
+        "cell": dict(zip(("a", "b", "c", "alpha", "beta", "gamma"), silicon.cell, strict=True)),
+        "values": "structure_factor",
+        "h": silicon.h,
+        "k": silicon.k,
+        "l": silicon.l,
+        "amplitude": [round(value, 5) for value in silicon.amplitude],
+        "phase_deg": [round(value, 4) for value in silicon.phase_deg],
+        "sigma": [round(value, 5) for value in silicon.sigma],
+        "symmetry": {"space_group": "Fd-3m:1", "columns": "full"},
+        "mean": 0,
+        "unit": "e/Å³",
+    }
     return {
         **samples_raw.requests(INVENTED),
+        **samples_trust.requests(film, triclinic, silicon_set, INVENTED),
         "film_profile.json": {
             "product": "profile",
             "remark": INVENTED + "Lamellar film FG-7: twelve orders of a mirror-symmetric stack, e/Å³.",
@@ -106,17 +120,7 @@ def build() -> dict[str, dict[str, Any]]:
         "silicon_bond.json": {
             "product": "slice",
             "remark": "Measured. Static deformation density of silicon in the plane (1 -1 0) through a chain of bonds.",
-            "set": {
-                "cell": dict(zip(("a", "b", "c", "alpha", "beta", "gamma"), silicon.cell, strict=True)),
-                "values": "structure_factor",
-                "h": silicon.h,
-                "k": silicon.k,
-                "l": silicon.l,
-                "amplitude": [round(value, 5) for value in silicon.amplitude],
-                "phase_deg": [round(value, 4) for value in silicon.phase_deg],
-                "mean": 0,
-                "unit": "e/Å³",
-            },
+            "set": {name: value for name, value in silicon_set.items() if name not in ("sigma", "symmetry")},
             "plane": [1, -1, 0],
             "width": 8.0,
             "height": 6.0,

@@ -120,7 +120,8 @@ def covariance(
         fixed = np.zeros(count)
         if errors.fixed:
             zero = np.zeros((1, errors.lattice.dimension), dtype=np.int64)
-            fixed = (functional.factors(errors.lattice, zero)[:, 0] * errors.fixed).real
+            factor = 1.0 if factors is None else float(factors[~errors.indices.any(axis=1)].sum())
+            fixed = factor * (functional.factors(errors.lattice, zero)[:, 0] * errors.fixed).real
         common = (errors.scale * (scaled - fixed)).reshape(blocks, size)
         total += common[:, :, None] * common[:, None, :]
     return total if block else np.asarray(total[0])

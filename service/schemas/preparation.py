@@ -46,6 +46,11 @@ class SymmetryIn(Strict):
     operations: list[Annotated[str, Field(max_length=100)]] | None = Field(
         None, min_length=1, max_length=192, description='generators or all operations, such as "-x+1/2,y,-z"'
     )
+    columns: Literal["asymmetric", "full"] = Field(
+        "asymmetric",
+        description="asymmetric: one of each set of equivalents, to be expanded; full: all are there, and symmetry "
+        "only relates their errors and the sites of extrema",
+    )
 
 
 class CorrectionIn(Strict):

@@ -33,7 +33,8 @@ _MEASURED = Path(__file__).parent / "data" / "silicon_room_temperature.csv"
 class SiliconSet:
     """Structure factors F(hkl) = ∫ Δρ exp(+2πi h·x) dV of the deformation density, in electrons.
 
-    One row for each of the reflections of a family, both of each Friedel pair among them.
+    One row for each of the reflections of a family, both of each Friedel pair among them; ``sigma`` is the
+    standard uncertainty of the measured factors, the free atom and B taken as exact.
     ``cell`` holds a, b, c (Å), α, β, γ (degrees).
     """
 
@@ -43,6 +44,7 @@ class SiliconSet:
     l: list[int]
     amplitude: list[float]
     phase_deg: list[float]
+    sigma: list[float]
 
 
 def deformation_set(*, forbidden_adds: bool) -> SiliconSet:
@@ -55,16 +57,21 @@ def deformation_set(*, forbidden_adds: bool) -> SiliconSet:
     """
     rows: list[tuple[int, int, int]] = []
     factors: list[complex] = []
-    for family, measured in _measured():
+    sigmas: list[float] = []
+    for family, measured, sigma in _measured():
         s_squared = sum(index**2 for index in family) / (2 * EDGE) ** 2
-        static = measured / np.exp(-DEBYE_WALLER * s_squared)
+        damping = np.exp(-DEBYE_WALLER * s_squared)
+        static = measured / damping
         for member in _members(family):
             if family == FORBIDDEN:
                 sign = 1 if forbidden_adds else -1
-                factor = sign * 8 * static * np.exp(2j * np.pi * np.dot(member, BOND_MIDPOINT))
+                geometry = 8 * np.exp(2j * np.pi * np.dot(member, BOND_MIDPOINT))
+                factor = sign * static * geometry
             else:
                 deformation = static - free_atom(float(np.sqrt(s_squared)))
-                factor = deformation * np.exp(2j * np.pi * ATOMS @ member).sum()
+                geometry = np.exp(2j * np.pi * ATOMS @ member).sum()
+                factor = deformation * geometry
+            sigmas.append(float(abs(geometry) * sigma / damping))
             rows.append(member)
             factors.append(complex(factor))
     h, k, l = (list(column) for column in zip(*rows, strict=True))
@@ -75,6 +82,7 @@ def deformation_set(*, forbidden_adds: bool) -> SiliconSet:
         l,
         np.abs(factors).tolist(),
         np.degrees(np.angle(factors)).tolist(),
+        sigmas,
     )
 
 
@@ -83,10 +91,10 @@ def free_atom(s: float) -> float:
     return float(periodictable.Si.xray.f0(4 * np.pi * s))
 
 
-def _measured() -> list[tuple[tuple[int, int, int], float]]:
-    """Families (hkl) and their factor per atom, electrons."""
+def _measured() -> list[tuple[tuple[int, int, int], float, float]]:
+    """Families (hkl), their factor per atom and its standard uncertainty, electrons."""
     table = np.loadtxt(_MEASURED, delimiter=",", comments="#", skiprows=3)
-    return [((int(h), int(k), int(l)), float(f)) for h, k, l, f, _ in table]
+    return [((int(h), int(k), int(l)), float(f), float(sigma)) for h, k, l, f, sigma in table]
 
 
 def _members(family: tuple[int, int, int]) -> list[tuple[int, int, int]]:

@@ -10,6 +10,7 @@ from scipy import optimize, special
 
 from engine import Columns, Lattice, Treatment, Window, assemble, evaluate, sampling
 from engine.coefficients import CoefficientSet
+from engine.resolution import compare_windows
 
 PERIOD = 100.0
 """Period of the layer stack of check 9, Å."""
@@ -127,3 +128,18 @@ def test_a_point_is_as_wide_as_its_complete_set_makes_it(dimension, direction):
     assert crossing(radii, values, 0.0) == pytest.approx(zero, abs=LATTICE_BOUND)
     assert 2 * crossing(radii, values, 0.5) == pytest.approx(2 * half, abs=LATTICE_BOUND)
     assert field.resolution[0] == pytest.approx(D_MIN, rel=1e-3)
+
+
+@pytest.mark.parametrize("terms", [500, 4000])
+@pytest.mark.parametrize(("window", "expected"), [("none", 0.08949), ("lanczos", 0.01187)])
+def test_the_overshoot_reported_for_a_window_is_that_of_the_step_summed(terms, window, expected):
+    """Check 9 through the comparison of windows, which knows the terms but no density."""
+    orders = np.arange(1, 2 * terms + 1)
+    columns = Columns(indices=[orders], real=1 / orders, imag=np.zeros(orders.size))
+    given = assemble(Lattice.from_period(PERIOD), columns, values="density_coefficient", mean=0.5)
+    (found,) = compare_windows(given, windows=[Window(window)])
+    assert found.overshoot == pytest.approx(expected, abs=0.5e-5)
+    # The square wave of odd orders alone, summed on samples: the same terms make the same ripple.
+    values = near_the_step(step_profile(terms), terms, window)
+    assert found.overshoot == pytest.approx(values.max() - 1, abs=2e-6)
+    assert found.step_orders == 2 * terms
