@@ -6,7 +6,6 @@ from typing import Any
 
 import numpy as np
 
-
 HUMIDITY = (5.0, 35.0, 65.0, 95.0)
 """Per cent; of an invented run."""
 

@@ -12,6 +12,7 @@ import httpx
 import numpy as np
 import pytest
 
+from service.schemas.products import PRODUCTS
 from tests.samples import FOLDER, build, texts
 from tests.serving import serving
 
@@ -39,7 +40,16 @@ PARTS = {
     "inspect_crystal.json": ("reflections", "crystal_OR4.cif", "chemical/x-cif"),
 }
 """Files that go with a request: the part's name, the file, its media type."""
-DENSITIES = [name for name in FILES if not name.startswith("inspect")]
+REQUESTS = {name: json.loads((FOLDER / name).read_text()) for name in FILES}
+DENSITIES = [name for name in FILES if REQUESTS[name]["product"] in PRODUCTS]
+REPORTED = [name for name in FILES if name not in DENSITIES and not name.startswith("inspect")]
+FIGURES = {
+    match["name"]: (match["pointer"], float(match["value"]))
+    for match in re.finditer(
+        r"^\| `(?P<name>\w+\.json)` \| `(?P<pointer>/[\w/]+)` \| (?P<value>[-\d.]+) \|", README, re.M
+    )
+}
+"""Of each report one figure: its place in the JSON answer, and its value."""
 
 
 def answered(served, name):
@@ -59,6 +69,7 @@ def answered(served, name):
 
 def test_every_file_is_documented():
     assert sorted(EXPECTED) == DENSITIES
+    assert sorted(FIGURES) == REPORTED
     for name in FILES:
         assert any(f"@sample_requests/{name}" in line for line in CURL_LINES), name
 
@@ -96,6 +107,15 @@ def test_answers_are_those_of_the_readme(served, name):
     assert np.shape(answer["values"]) == tuple(answer["shape"])
 
 
+@pytest.mark.parametrize("name", REPORTED)
+def test_reports_are_those_of_the_readme(served, name):
+    pointer, value = FIGURES[name]
+    found = answered(served, name)
+    for part in pointer[1:].split("/"):
+        found = found[int(part)] if isinstance(found, list) else found[part]
+    assert found == pytest.approx(value, rel=6e-4)
+
+
 @pytest.mark.skipif(shutil.which("curl") is None, reason="curl is not installed")
 @pytest.mark.parametrize(
     "line", CURL_LINES, ids=lambda line: re.findall(r"@sample_requests/(\w+)|v1/(\w+)", line)[0][0]
@@ -109,11 +129,15 @@ def test_curl_lines_work(served, line, tmp_path):
     done = subprocess.run([*words, "--silent", "--fail"], cwd=FOLDER.parent, capture_output=True, check=True)
     written = list(tmp_path.iterdir())
     if written:
+        kind, content = written[0].suffix, written[0].read_bytes()
+        if kind in (".png", ".svg"):
+            assert content.startswith(b"\x89PNG" if kind == ".png" else b"<?xml")
+            return
         loaded = np.load(written[0])
-        values = loaded if written[0].suffix == ".npy" else loaded["values"]
+        values = loaded if kind == ".npy" else loaded["values"]
         assert np.isfinite(values).all()
     else:
-        assert done.stdout.startswith(b"{") or b"value" in done.stdout
+        assert done.stdout.startswith((b"{", b"# "))
 
 
 def test_inspection_tells_what_the_file_is_worth(served):
@@ -150,3 +174,19 @@ def test_stacking_shows_the_layers(served):
     heights = axis["start"] + axis["step"] * np.arange(axis["count"])
     inner = (values[1:-1] > values[:-2]) & (values[1:-1] > values[2:]) & (values[1:-1] > 2)
     assert heights[1:-1][inner] / 17.4 == pytest.approx([0.159, 0.25, 0.341, 0.659, 0.75, 0.841], abs=0.003)
+
+
+def test_silicon_bond_is_many_sigma(served):
+    """Check 11 with its uncertainty: the bond stands out of the errors of the measured factors by far.
+
+    Source of factors and σ's: Aldred & Hart, Proc. R. Soc. A 332 (1973) 223, and later Pendellösung work, memory.
+    """
+    request = REQUESTS["silicon_uncertainty.json"]
+    asked = {"set": request["set"], "positions": [[0.125, 0.125, 0.125], [0.3, 0.1, 0.45]], "uncertainty": True}
+    answer = httpx.post(f"{served.address}/v1/points", json=asked).json()
+    value, sigma = answer["values"][0], answer["uncertainty"][0]
+    assert value == pytest.approx(0.22, abs=0.005)
+    assert 0.0005 < sigma < 0.01
+    assert value / sigma > 40
+    # On the threefold axis with its mirrors and inversion the related errors add up.
+    assert sigma > 1.5 * answer["uncertainty"][1]
