@@ -181,6 +181,11 @@ def distribution(
         if keep:
             kept.append(block)
     low, high = (moments.low, moments.high) if ends is None else (float(ends[0]), float(ends[1]))
+    if ends is None:
+        # Of a field that is flat but for rounding, intervals must still be told apart.
+        finest = 4 * parts * float(np.spacing(max(abs(low), abs(high))))
+        if high - low < finest:
+            low, high = low - finest, high + finest
     edges = np.histogram_bin_edges(np.array([low, high]), parts, (low, high))
     counts, below, above = _counted(kept if keep else iterate(work), edges)
     variance = moments.second / moments.count

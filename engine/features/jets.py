@@ -7,6 +7,7 @@ derivatives with the first axis not behind the second: 1 + d + d(d+1)/2 numbers.
 from __future__ import annotations
 
 import itertools
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 
@@ -61,21 +62,14 @@ class JetField:
         The series of each number of a jet; all hold the same indices.
     sums : tuple of float
         Σ |G|^k |n_G| over all G for k = 0, 1, 2: no value, slope or curvature exceeds them.
-    third : float
-        Root mean square over the cell of the third derivative along a direction, averaged over directions.
-    g_max, g_rms : float
-        Largest |G|, and the root of its mean square weighted by |n_G|², Å⁻¹.
-    mean : float
-        Zero term.
+    g_max : float
+        Largest |G|, Å⁻¹.
     """
 
     series: Series
     components: tuple[Series, ...]
     sums: tuple[float, float, float]
-    third: float
     g_max: float
-    g_rms: float
-    mean: float
     _table: ComplexArray = field(repr=False)
 
     @classmethod
@@ -88,22 +82,9 @@ class JetField:
         lengths = np.linalg.norm(waves, axis=1)
         doubled = np.abs(series.doubled())
         sums = (float(doubled.sum()), float(lengths @ doubled), float(lengths**2 @ doubled))
-        # ⟨(û·Ĝ)⁶⟩ over directions û is 1, 5/16, 1/7 in one, two, three dimensions.
-        share = {1: 1.0, 2: 5 / 16, 3: 1 / 7}[d]
-        third = float(np.sqrt(share * (lengths**6 @ (doubled**2 / 2))))
         components = tuple(Series(lattice, series.indices, column, real=True) for column in table.T.copy())
         weights = np.where(series.indices.any(axis=1), 2.0, 1.0)
-        power = np.where(lengths > 0, doubled**2, 0.0)
-        return cls(
-            series,
-            components,
-            sums,
-            third,
-            float(lengths.max()),
-            float(np.sqrt(lengths**2 @ power / power.sum())),
-            series.zero_term.real,
-            weights[:, None] * table,
-        )
+        return cls(series, components, sums, float(lengths.max()), weights[:, None] * table)
 
     @property
     def dimension(self) -> int:
@@ -143,12 +124,35 @@ class JetField:
         return made
 
     def plans(self, grid: AffineGrid) -> tuple[Plan, ...]:
-        """The sums of all components on a grid of the whole cell, costed."""
-        return tuple(plan(part, grid, Demand(), method="cascade") for part in self.components)
+        """The sums of jets and third derivatives on a grid of the whole cell, costed."""
+        waves = 1j * self.series.lattice.wavevectors(self.series.indices)
+        thirds = (
+            Series(self.series.lattice, self.series.indices, values, real=True)
+            for values in (
+                math.sqrt(_arrangements(axes)) * self.series.values * np.prod(waves[:, list(axes)], axis=1)
+                for axes in thirds_of(self.dimension)
+            )
+        )
+        return tuple(plan(part, grid, Demand(), method="cascade") for part in (*self.components, *thirds))
 
 
-def blocks(plans: tuple[Plan, ...], grid: AffineGrid) -> Iterator[tuple[int, int, FloatArray]]:
-    """Jets on a grid, a block of planes at a time: first plane, behind the last, rows (samples, jet)."""
+@dataclass(frozen=True, slots=True)
+class Block:
+    """Planes start … stop − 1 of a grid: jets at their samples, and the norms of the third derivatives, (samples,).
+
+    The norm is (Σ_ijk (∂³n/∂x_i∂x_j∂x_k)²)^½, which no third derivative along a direction exceeds.
+    """
+
+    start: int
+    stop: int
+    jets: Jets
+    third: FloatArray
+
+
+def blocks(plans: tuple[Plan, ...], grid: AffineGrid) -> Iterator[Block]:
+    """Jets and third derivatives on a grid, a block of planes at a time."""
+    d = len(grid.shape)
+    first = len(orders_of(d))
     sources = [one.prepare() for one in plans]
     planes, step = sources[0].planes, sources[0].block
     for start in range(0, planes, step):
@@ -156,4 +160,14 @@ def blocks(plans: tuple[Plan, ...], grid: AffineGrid) -> Iterator[tuple[int, int
         made = np.empty((len(sources), stop - start, *grid.shape[1:]))
         for source, part in zip(sources, made, strict=True):
             source.compute(start, stop, part)
-        yield start, stop, made.reshape(len(sources), -1).T
+        rows = made.reshape(len(sources), -1)
+        yield Block(start, stop, Jets.of(rows[:first].T, d), np.linalg.norm(rows[first:], axis=0))
+
+
+def thirds_of(dimension: int) -> tuple[tuple[int, ...], ...]:
+    """The third derivatives, as the axes that are derived along."""
+    return tuple(itertools.combinations_with_replacement(range(dimension), 3))
+
+
+def _arrangements(axes: tuple[int, ...]) -> int:
+    return len(set(itertools.permutations(axes)))

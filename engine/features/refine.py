@@ -3,6 +3,8 @@
 The step −H⁻¹g is shortened to a trust radius, and halved where it does not make |g| smaller: a
 direction in which |g|² falls exists wherever H is regular (Dennis & Schnabel, Numerical Methods for
 Unconstrained Optimization and Nonlinear Equations, 1983, §6.5). So minima, maxima and saddles are found alike.
+Uphill, every curvature is taken for negative and halving ends where the value rises: that leads to a maximum
+from all its basin, which between two saddles Newton's step hardly meets; downhill likewise.
 """
 
 from __future__ import annotations
@@ -51,17 +53,19 @@ class Refined:
     unsettled: int
 
 
-def newton_steps(gradient: FloatArray, hessian: FloatArray, radius: float) -> tuple[FloatArray, FloatArray, IntArray]:
+def newton_steps(
+    gradient: FloatArray, hessian: FloatArray, radius: float, seek: int = 0
+) -> tuple[FloatArray, FloatArray, IntArray]:
     """Steps no longer than `radius` (Cartesian, Å), their full lengths, and the Hessians' negative curvatures.
 
-    gradient (M, d), hessian (M, d, d) -> (M, d), (M,), (M,).
+    gradient (M, d), hessian (M, d, d) -> (M, d), (M,), (M,). With `seek` = 1 uphill, −1 downhill.
     """
     curvature, axes = np.linalg.eigh(hessian)
     size = np.abs(curvature)
     slope = np.linalg.norm(gradient, axis=1, keepdims=True)
     # Where the field is flat altogether the step stays a number.
     least = np.maximum(SINGULAR * np.maximum(size.max(axis=1, keepdims=True), slope / radius), TINY)
-    safe = np.copysign(np.maximum(size, least), curvature)
+    safe = np.copysign(np.maximum(size, least), np.full_like(curvature, -seek) if seek else curvature)
     along = -np.einsum("mij,mi->mj", axes, gradient) / safe
     length = np.linalg.norm(along, axis=1)
     along *= np.minimum(1.0, radius / np.maximum(length, TINY))[:, None]
@@ -78,6 +82,7 @@ def refine(
     tolerance: float = EXACT,
     most: int = MOST_STEPS,
     thin: float | None = None,
+    seek: int = 0,
 ) -> Refined:
     """Follow Newton's steps from fractional starts (M, d).
 
@@ -95,13 +100,18 @@ def refine(
         Steps after which a start is given up.
     thin : float, optional
         Å. Positions that come closer after the first steps, with as many negative curvatures, go on as one.
+    seek : {0, 1, -1}
+        1 looks uphill for maxima alone, −1 downhill for minima.
     """
     lattice = field.series.lattice
     count, d = starts.shape
     zero = tolerance * field.sums[1]
+    # What a step may lose by rounding and still count as one that gains nothing.
+    loss = tolerance * field.sums[0] if seek else 0.0
+    sought = {1: d, -1: 0}.get(seek)
     place, moved = starts.copy(), np.zeros((count, d))
     base, base_moved = starts.copy(), np.zeros((count, d))
-    offered, slope = np.zeros((count, d)), np.full(count, np.inf)
+    offered, best = np.zeros((count, d)), np.full(count, np.inf)
     halvings = np.zeros(count, dtype=np.int64)
     index = np.zeros(count, dtype=np.int64)
     done: BoolArray = np.zeros(count, dtype=np.bool_)
@@ -113,13 +123,18 @@ def refine(
             break
         jets = field.at(place[active], tolerance)
         size = np.linalg.norm(jets.gradient, axis=1)
-        better = (size < slope[active]) | (size <= zero)
+        merit = -seek * jets.value - loss if seek else size
+        better = (merit < best[active]) | (size <= zero)
         won, lost = active[better], active[~better]
-        steps, length, negative = newton_steps(jets.gradient[better], jets.hessian[better], radius)
-        base[won], base_moved[won], slope[won], offered[won] = place[won], moved[won], size[better], steps
+        steps, length, negative = newton_steps(jets.gradient[better], jets.hessian[better], radius, seek)
+        base[won], base_moved[won], best[won], offered[won] = place[won], moved[won], merit[better] + loss, steps
         index[won], halvings[won] = negative, 0
         ended = (length < step) | (size[better] <= zero)
         done[won[ended]] = True
+        if sought is not None:
+            # On a saddle, exactly, there is no uphill.
+            stuck = won[ended & (negative != sought)]
+            done[stuck], halvings[stuck] = False, HALVINGS
         # The last step is short, and still an improvement where the gradient is more than rounding.
         steps[ended & (length >= step)] = 0.0
         offered[won] = steps

@@ -14,9 +14,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from engine.arrays import FloatArray, IntArray
+from engine.arrays import BoolArray, FloatArray, IntArray
 from engine.errors import TooLargeError
-from engine.features.jets import JetField, Jets, blocks
+from engine.features.jets import JetField, blocks
 from engine.features.refine import newton_steps, refine, thinned
 from engine.features.regions import Region, images_inside
 from engine.features.sites import Domain
@@ -28,11 +28,13 @@ DIVISIONS = 6.0
 """Samples to the smallest spacing d."""
 COARSEST = 3.0
 """Fewest that a caller may choose: with fewer, neighbouring extrema share a sample."""
-MARGIN = 1.25
+MARGIN = 1.1
 """The Hessian changes within r: radius for |λ_i|, relative to r."""
-THIRD_LOCAL, THIRD_MEAN = 0.15, 0.25
-"""Believed third derivatives: the Hessian's norm times G_max, and the mean over the cell, or what the strength of the
-field there suggests, times these. With half of them a few stacks in a thousand lost a pair of extrema."""
+THIRD = {1: 1.0, 2: 0.7, 3: 0.3}
+"""Share of the norm of all third derivatives that those along one direction may have, by dimension. With two
+thirds of it no pair of extrema was lost in some thousand random sets, with half of it every fifth stack lost one."""
+FOURTH = 0.1
+"""Fourth derivatives to reckon with, relative to the Hessian's norm times G_max²."""
 REACH = 3.0
 """Steps of the grid that a candidate may wander."""
 ROUGH = 1e-3
@@ -57,7 +59,7 @@ class Tally:
     spacing : float
         Longest step of the grid, Å.
     candidates : int
-        Samples from which Newton's method was started.
+        Starts of Newton's method and of the ways uphill and downhill.
     wandered : int
         Of these, those that led farther away than three steps of the grid; what they led to has candidates of
         its own.
@@ -125,7 +127,7 @@ def prepare_search(field: JetField, spacing: float, max_bytes: int | None = None
     steps = lattice.to_cartesian(grid.steps)
     corners = np.stack(np.meshgrid(*[(-0.5, 0.5)] * d, indexing="ij"), axis=-1).reshape(-1, d)
     radius = float(np.linalg.norm(corners @ steps, axis=1).max())
-    numbers = 1 + d + d * (d + 1) // 2
+    numbers = len(plans)
     rest = grid.samples // grid.shape[0]
     # A block of planes is what a plan makes of its second-level cache: at most an eighth of the planes or few MiB.
     block = min(grid.samples, max(rest, grid.samples // 8 + 1, 1 << 18))
@@ -155,26 +157,28 @@ def run(search: Search, wanted: Wanted, progress: Progress | None = None) -> tup
     lattice = field.series.lattice
     tally = Tally(shape=search.grid.shape, spacing=step)
     places, kinds = [np.zeros((0, field.dimension))], [np.zeros(0, dtype=np.int64)]
-    for starts in _batches(_candidates(search, wanted, progress)):
-        rough = refine(
-            field,
-            starts,
-            radius=step,
-            reach=REACH * step,
-            step=ROUGH * step,
-            tolerance=ROUGH_TOLERANCE,
-            most=ROUGH_STEPS,
-            thin=THIN * step,
-        )
-        kept = thinned(lattice, rough.positions, rough.index, ROUGH * step)
-        places.append(rough.positions[kept])
-        kinds.append(rough.index[kept])
-        tally = replace(
-            tally,
-            candidates=tally.candidates + len(starts),
-            wandered=tally.wandered + rough.wandered,
-            unsettled=tally.unsettled + rough.unsettled,
-        )
+    for starts, may in _batches(_candidates(search, wanted, progress)):
+        for seek, rows in _searches(wanted.indices, may):
+            rough = refine(
+                field,
+                starts[rows],
+                radius=step,
+                reach=REACH * step,
+                step=ROUGH * step,
+                tolerance=ROUGH_TOLERANCE,
+                most=ROUGH_STEPS,
+                thin=THIN * step,
+                seek=seek,
+            )
+            kept = thinned(lattice, rough.positions, rough.index, ROUGH * step)
+            places.append(rough.positions[kept])
+            kinds.append(rough.index[kept])
+            tally = replace(
+                tally,
+                candidates=tally.candidates + len(rows),
+                wandered=tally.wandered + rough.wandered,
+                unsettled=tally.unsettled + rough.unsettled,
+            )
     rough_places, index = np.concatenate(places), np.concatenate(kinds)
     kept = thinned(lattice, rough_places, index, ROUGH * step)
     fine = refine(field, rough_places[kept], radius=step, reach=REACH * step)
@@ -182,23 +186,35 @@ def run(search: Search, wanted: Wanted, progress: Progress | None = None) -> tup
     return fine.positions, tally
 
 
-def _candidates(search: Search, wanted: Wanted, progress: Progress | None) -> Iterator[FloatArray]:
-    """Starts from each block: candidates displaced by their first step, fractional."""
+def _searches(indices: tuple[int, ...], may: BoolArray) -> Iterator[tuple[int, IntArray]]:
+    """Uphill for maxima, downhill for minima, and towards all that is wanted where saddles are."""
+    d = may.shape[1] - 1
+    ends = {d: 1, 0: -1}
+    for index in indices:
+        if index in ends:
+            yield ends[index], np.flatnonzero(may[:, index])
+    if any(index not in ends for index in indices):
+        yield 0, np.flatnonzero(may[:, list(indices)].any(axis=1))
+
+
+def _candidates(search: Search, wanted: Wanted, progress: Progress | None) -> Iterator[tuple[FloatArray, BoolArray]]:
+    """Starts from each block, displaced by their first step, fractional; and the indices that each may lead to."""
     field, grid, radius = search.field, search.grid, search.radius
     lattice = field.series.lattice
     planes = grid.shape[0]
     rest = grid.samples // planes
-    for start, stop, rows in blocks(search.plans, grid):
-        jets = Jets.of(rows, field.dimension)
+    for block in blocks(search.plans, grid):
+        jets = block.jets
         norm = np.linalg.norm(jets.hessian, axis=(1, 2))
         slope = np.linalg.norm(jets.gradient, axis=1)
-        slack = 0.5 * radius**2 * _third(field, jets, slope, norm)
+        slack = THIRD[field.dimension] * radius**2 / 2 * block.third
+        slack += FOURTH * radius**3 / 6 * field.g_max**2 * norm
         # How far a value can lie from that of a sample within r.
         change = slope * radius + norm * radius**2 + slack * radius
         near = (slope <= MARGIN * norm * radius + slack) & (jets.value + change >= wanted.least)
         near &= jets.value - change <= wanted.greatest
         chosen = np.flatnonzero(near)
-        counters = np.stack(np.unravel_index(chosen + start * rest, grid.shape), axis=-1)
+        counters = np.stack(np.unravel_index(chosen + block.start * rest, grid.shape), axis=-1)
         positions = counters / np.array(grid.shape)
         if wanted.region is not None:
             inside = np.unique(images_inside(wanted.region, lattice, positions, REACH * search.step)[0])
@@ -207,36 +223,25 @@ def _candidates(search: Search, wanted: Wanted, progress: Progress | None) -> It
             held = wanted.domain.holds(lattice, positions, 2 * radius)
             chosen, positions = chosen[held], positions[held]
         gradient, hessian = jets.gradient[chosen], jets.hessian[chosen]
-        kept = _may_hold(gradient, hessian, slack[chosen], radius, wanted.indices)
+        may = _may_hold(gradient, hessian, slack[chosen], radius)
+        kept = np.flatnonzero(may[:, list(wanted.indices)].any(axis=1))
         start_steps, of = _first_steps(gradient[kept], hessian[kept], slack[chosen][kept], radius)
-        yield positions[kept][of] + lattice.to_fractional(start_steps)
+        yield positions[kept][of] + lattice.to_fractional(start_steps), may[kept][of]
         if progress is not None:
-            progress(stop, planes)
+            progress(block.stop, planes)
 
 
-def _third(field: JetField, jets: Jets, slope: FloatArray, norm: FloatArray) -> FloatArray:
-    """Third derivatives to reckon with around each sample."""
-    wave = field.g_rms
-    # Where a density is empty its third derivatives are far below their mean.
-    strength = np.sqrt((jets.value - field.mean) ** 2 + (slope / wave) ** 2 + (norm / wave**2) ** 2)
-    return THIRD_LOCAL * field.g_max * norm + THIRD_MEAN * np.minimum(field.third, wave**3 * strength)
-
-
-def _may_hold(
-    gradient: FloatArray, hessian: FloatArray, slack: FloatArray, radius: float, indices: tuple[int, ...]
-) -> IntArray:
-    """Rows near which the gradient may vanish with as many negative curvatures as wanted."""
+def _may_hold(gradient: FloatArray, hessian: FloatArray, slack: FloatArray, radius: float) -> BoolArray:
+    """Whether the gradient may vanish near each sample with 0, 1, … d negative curvatures; (M, d + 1)."""
     curvature, axes = np.linalg.eigh(hessian)
     along = np.abs(np.einsum("mij,mi->mj", axes, gradient))
     lacking = np.linalg.norm(np.maximum(along - MARGIN * radius * np.abs(curvature), 0.0), axis=1)
     # Third derivatives change a curvature within r by twice what they change the slope by, over r.
     change = (2 * slack / radius)[:, None]
-    surely_negative = np.count_nonzero(curvature < -change, axis=1)
-    perhaps_negative = np.count_nonzero(curvature < change, axis=1)
-    of_kind = np.zeros(len(gradient), dtype=np.bool_)
-    for number in indices:
-        of_kind |= (surely_negative <= number) & (number <= perhaps_negative)
-    return np.flatnonzero((lacking <= slack) & of_kind).astype(np.int64)
+    surely = np.count_nonzero(curvature < -change, axis=1)[:, None]
+    perhaps = np.count_nonzero(curvature < change, axis=1)[:, None]
+    number = np.arange(curvature.shape[1] + 1)
+    return np.asarray((lacking <= slack)[:, None] & (surely <= number) & (number <= perhaps))
 
 
 def _first_steps(
@@ -256,12 +261,12 @@ def _first_steps(
     return np.concatenate([steps, aside, -aside]), np.concatenate([rows, flat, flat]).astype(np.int64)
 
 
-def _batches(parts: Iterator[FloatArray]) -> Iterator[FloatArray]:
-    waiting: list[FloatArray] = []
+def _batches(parts: Iterator[tuple[FloatArray, BoolArray]]) -> Iterator[tuple[FloatArray, BoolArray]]:
+    waiting: list[tuple[FloatArray, BoolArray]] = []
     for part in parts:
         waiting.append(part)
-        if sum(map(len, waiting)) >= BATCH:
-            yield np.concatenate(waiting)
+        if sum(len(starts) for starts, _ in waiting) >= BATCH:
+            yield np.concatenate([one for one, _ in waiting]), np.concatenate([one for _, one in waiting])
             waiting = []
     if waiting:
-        yield np.concatenate(waiting)
+        yield np.concatenate([one for one, _ in waiting]), np.concatenate([one for _, one in waiting])

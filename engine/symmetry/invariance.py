@@ -26,7 +26,8 @@ def related(coefficients: CoefficientSet, group: Group, *, tolerance: float = TO
     ------
     InputError
         A cell without the group's symmetry; coefficients whose equivalents are absent, or differ from
-        them by more than `tolerance` of the largest, or that must vanish.
+        them by more than `tolerance` of the largest, or that must vanish; of a real density phases
+        that centric coefficients cannot have.
     """
     as_positive(tolerance, "tolerance", "of the largest coefficient")
     check_metric(coefficients.lattice, group)
@@ -62,4 +63,17 @@ def related(coefficients: CoefficientSet, group: Group, *, tolerance: float = TO
             f"{apart.max() / largest:.2g} of the largest",
             "check group and origin, or leave the symmetry out",
         )
+    if coefficients.real:
+        # A centric coefficient is its own mate's equivalent: of F exp(−iφ), φ the phase allowed, nothing is imaginary.
+        centric = kinds.centric & ~kinds.absent & coefficients.phase_known
+        turned = coefficients.values * np.exp(-1j * np.where(centric, kinds.restricted_phase, 0.0))
+        aside = np.where(centric, np.abs(turned.imag), 0.0)
+        if (aside > tolerance * largest).any():
+            row = coefficients.indices[int(aside.argmax())].tolist()
+            raise InputError(
+                "symmetry",
+                f"{group.name} leaves ({' '.join(map(str, row))}) two phases, from which it differs by "
+                f"{aside.max() / largest:.2g} of the largest coefficient",
+                "check group, origin and the sign convention of the phases",
+            )
     return replace(coefficients, group=group)

@@ -1,0 +1,410 @@
+"""A film from its scan to what is reported: each step by its own module, chained here.
+
+Spacing, amplitudes, phases, scale, profile with σ, layers, integrals, unmeasured orders, line widths. What is not
+asked for is not done; every step adds its words.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from engine.amplitudes.corrections import Correction
+from engine.amplitudes.negatives import NegativeRule
+from engine.arrays import FloatArray, IntArray, as_count
+from engine.coefficients import CoefficientSet
+from engine.errors import InputError
+from engine.evaluate import Field, evaluate
+from engine.features.integrals import IntegralRegion, Integrals, integrals, slab
+from engine.features.layer_distances import LayerDistances, layer_spacings
+from engine.features.layers import BaselineKind, Layers, layers
+from engine.fields import Treatment, summands
+from engine.films.amplitudes import AmplitudeRule, OrderTable, order_table
+from engine.films.assignment import Assignment, assign, check_orders
+from engine.films.facts import Fact, mean_of_composition
+from engine.films.line_widths import LineWidths, Rule
+from engine.films.orders import FilmOrders
+from engine.films.scale import FilmScale, scale_by_facts
+from engine.films.scaled_signs import rank_scaled
+from engine.films.scans import Scan
+from engine.films.signs import Criteria, RankedSigns, rank_signs
+from engine.films.spacing import Spacing, fit_spacing
+from engine.films.widths import WidthComparison, compare_widths
+from engine.resolution.change import Change, perform_change, prepare_change
+from engine.resolution.envelope import Envelope
+from engine.resolution.response import PointResponse, point_response
+from engine.sampling import lattice_line
+from engine.scattering import Composition
+from engine.synthesis import Progress
+from engine.windows import NO_WINDOW, Window
+
+LEAST_WIDTHS = 3
+"""Lines with widths from which thickness and disorder are told."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Region:
+    """A named part of the period, Å from the origin."""
+
+    name: str
+    start: float
+    end: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Content:
+    """What one repeat unit of the stack holds; with the period found it gives the mean density.
+
+    Attributes
+    ----------
+    content : Composition
+        Of a formula unit.
+    area, area_sigma : float
+        Å² of the plane per repeat unit.
+    units : float
+        Formula units in a repeat unit.
+    """
+
+    content: Composition
+    area: float
+    area_sigma: float = 0.0
+    units: float = 1.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FilmTask:
+    """What is to be made of a scan.
+
+    Attributes
+    ----------
+    scan : Scan
+    period_range : (float, float) or None
+        Where the period is looked for, Å; lines that carry orders need none.
+    zero_shift, displacement : bool
+        Fitted along with the period.
+    radius : float or None
+        Of the goniometer, mm.
+    critical_q, refraction_density : float or None
+        For refraction: q_c, or the mean density it follows from.
+    corrections : tuple of Correction
+    rule, negative : str
+        See `engine.films.amplitudes.order_table`.
+    keep_saturated : bool
+    phases_deg : mapping of int to float, or None
+        Given phases by order.
+    criteria : Criteria or None
+        By which signs are ranked, where phases are not given.
+    fixed : mapping of int to ±1
+        Signs known beforehand.
+    rank : int
+        Which sign set is used, 0 the first.
+    decisive : float
+    facts : tuple of Fact
+        That make the scale absolute.
+    content : Content or None
+        A further fact: the mean density by composition.
+    unit : str
+        Of the density.
+    samples : int
+        Of the profile, over one period, its end included.
+    window : Window
+    baseline : str or float
+    least_significance : float
+        Of a layer, σ of its prominence.
+    regions : tuple of Region
+        To be integrated.
+    area : float or None
+        Å² of the plane per repeat unit: integrals are then told per unit too.
+    envelope : Envelope or None
+        Of unmeasured orders.
+    instrument_width : float or None
+        FWHM of the instrument, unit of the scan's positions; widths are analysed where the scan has any.
+    instrument_rule : {"gaussian", "lorentzian"}
+    """
+
+    scan: Scan
+    period_range: tuple[float, float] | None = None
+    zero_shift: bool = False
+    displacement: bool = False
+    radius: float | None = None
+    critical_q: float | None = None
+    refraction_density: float | None = None
+    corrections: tuple[Correction, ...] = ()
+    rule: AmplitudeRule = "bayesian"
+    negative: NegativeRule = "exclude"
+    keep_saturated: bool = False
+    phases_deg: Mapping[int, float] | None = None
+    criteria: Criteria | None = None
+    fixed: Mapping[int, int] = field(default_factory=dict)
+    rank: int = 0
+    decisive: float = 9.0
+    facts: tuple[Fact, ...] = ()
+    content: Content | None = None
+    unit: str = "arbitrary"
+    samples: int = 513
+    window: Window = NO_WINDOW
+    baseline: BaselineKind | float = "minima"
+    least_significance: float = 3.0
+    regions: tuple[Region, ...] = ()
+    area: float | None = None
+    envelope: Envelope | None = None
+    instrument_width: float | None = None
+    instrument_rule: Rule = "gaussian"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FilmAnalysis:
+    """What a scan says of a film.
+
+    Attributes
+    ----------
+    task : FilmTask
+    assignments : tuple of Assignment
+        Ways to number the lines, the one used first; empty where the scan carries all orders.
+    spacing : Spacing
+    table : OrderTable
+        Every line.
+    orders : FilmOrders
+        Amplitudes, absolute where facts were given.
+    phase_deg : float64, shape (n,)
+    ranked : RankedSigns or None
+    scale : FilmScale or None
+    coefficients : CoefficientSet
+    treatment : Treatment
+    profile : Field
+        One period, with σ where the amplitudes have any.
+    response : PointResponse or None
+    layers : Layers
+    spacings : LayerDistances
+    integrals : Integrals or None
+    change : Change or None
+        By orders that were not measured.
+    widths : WidthComparison or None
+    applied, notes : tuple of str
+    """
+
+    task: FilmTask
+    assignments: tuple[Assignment, ...]
+    spacing: Spacing
+    table: OrderTable
+    orders: FilmOrders
+    phase_deg: FloatArray
+    ranked: RankedSigns | None
+    scale: FilmScale | None
+    coefficients: CoefficientSet
+    treatment: Treatment
+    profile: Field
+    response: PointResponse | None
+    layers: Layers
+    spacings: LayerDistances
+    integrals: Integrals | None
+    change: Change | None
+    widths: WidthComparison | None
+    applied: tuple[str, ...]
+    notes: tuple[str, ...]
+
+
+def number_lines(
+    scan: Scan, period_range: tuple[float, float] | None = None
+) -> tuple[IntArray, tuple[Assignment, ...]]:
+    """Order of each line, 0 for stray ones, and the ways to number them where orders had to be found.
+
+    Raises
+    ------
+    InputError
+        As `engine.films.assignment.assign`.
+    """
+    if scan.order.all():
+        return check_orders(scan, scan.order), ()
+    found = assign(scan, period_range=period_range)
+    return found[0].order, found
+
+
+def analyse_film(
+    task: FilmTask, *, threads: int = 1, max_bytes: int | None = None, progress: Progress | None = None
+) -> FilmAnalysis:
+    """All steps of a task.
+
+    Raises
+    ------
+    InputError
+        What the steps refuse; no phases and no criteria; a rank beyond the sign sets found.
+    TooLargeError
+        More than `max_bytes` would be needed.
+    """
+    scan = task.scan
+    numbers, assignments = number_lines(scan, task.period_range)
+    spacing = fit_spacing(
+        scan,
+        numbers,
+        zero_shift=task.zero_shift,
+        displacement=task.displacement,
+        critical_q=task.critical_q,
+        mean_density=task.refraction_density,
+        radius=task.radius,
+        scale_sigma=True,
+    )
+    table = order_table(
+        scan,
+        numbers,
+        spacing,
+        corrections=task.corrections,
+        rule=task.rule,
+        negative=task.negative,
+        symmetric=task.phases_deg is None,
+        keep_saturated=task.keep_saturated,
+    )
+    raw = table.film()
+    task = _with_mean(task, spacing)
+    phase_deg, orders, scale, ranked = _phased(raw, task, threads, max_bytes, progress)
+    mean = None if scale is None else scale.mean
+    coefficients = orders.coefficients(phase_deg, mean)
+    treatment = Treatment(window=task.window)
+    line = lattice_line(coefficients.lattice, [1], as_count(task.samples, "samples", least=2))
+    uncertain = coefficients.sigma is not None or coefficients.scale_sigma > 0
+    profile = evaluate(coefficients, line, treatment, uncertainty=uncertain)
+    found = layers(
+        coefficients,
+        line,
+        treatment,
+        baseline=task.baseline,
+        least_significance=task.least_significance if uncertain else 0.0,
+    )
+    change = None
+    if task.envelope is not None:
+        change = perform_change(prepare_change(coefficients, task.envelope, line, treatment))
+    response = point_response(summands(coefficients, replace(treatment, field="response")).series[0])
+    return FilmAnalysis(
+        task=task,
+        assignments=assignments,
+        spacing=spacing,
+        table=table,
+        orders=orders,
+        phase_deg=phase_deg,
+        ranked=ranked,
+        scale=scale,
+        coefficients=coefficients,
+        treatment=treatment,
+        profile=profile,
+        response=response,
+        layers=found,
+        spacings=layer_spacings(found),
+        integrals=_integrals(coefficients, task, treatment),
+        change=change,
+        widths=_widths(scan, table, task),
+        applied=(*table.applied, *(() if scale is None else (scale.words, *scale.assumptions))),
+        notes=tuple(dict.fromkeys((*scan.notes, *_told(assignments, spacing, ranked, scale), *profile.notes))),
+    )
+
+
+def _with_mean(task: FilmTask, spacing: Spacing) -> FilmTask:
+    """The task with the mean density by composition among its facts, now that the period is known."""
+    if task.content is None:
+        return task
+    held = task.content
+    mean = mean_of_composition(
+        held.content,
+        area=held.area,
+        period=spacing.period,
+        area_sigma=held.area_sigma,
+        period_sigma=spacing.period_sigma or 0.0,
+        units=held.units,
+        probe=task.scan.radiation,
+    )
+    return replace(task, facts=(*task.facts, mean), content=None)
+
+
+def _phased(
+    raw: FilmOrders, task: FilmTask, threads: int, max_bytes: int | None, progress: Progress | None
+) -> tuple[FloatArray, FilmOrders, FilmScale | None, RankedSigns | None]:
+    """Phases and scale. Signs are judged on the absolute scale, which each sign set has for itself."""
+    if task.phases_deg is not None:
+        phases = np.array([task.phases_deg.get(int(order), np.nan) for order in raw.order])
+        if np.isnan(phases).all():
+            raise InputError("phases_deg", "name none of the orders measured", "give phases by order")
+        scale = scale_by_facts(raw, phases, task.facts, unit=task.unit) if task.facts else None
+        return phases, _scaled(raw, scale, task), scale, None
+    if task.criteria is None:
+        raise InputError("phases_deg", "are not given, and no criteria to find signs by", "give one of the two")
+    ranked = _rank(raw, task, threads, max_bytes, progress)
+    if task.rank >= len(ranked.scores):
+        raise InputError("rank", f"is {task.rank}, and {len(ranked.scores)} sign sets are listed", "name one of them")
+    phases = ranked.phases_deg(task.rank)
+    scale = scale_by_facts(raw, phases, task.facts, unit=task.unit) if task.facts else None
+    return phases, _scaled(raw, scale, task), scale, ranked
+
+
+def _scaled(raw: FilmOrders, scale: FilmScale | None, task: FilmTask) -> FilmOrders:
+    return replace(raw, unit=task.unit) if scale is None else scale.apply(raw)
+
+
+def _rank(
+    raw: FilmOrders, task: FilmTask, threads: int, max_bytes: int | None, progress: Progress | None
+) -> RankedSigns:
+    """Sign sets by all criteria on the scale that the facts give each set, or by those that need no scale."""
+    if task.criteria is None:
+        raise AssertionError("criteria were made sure of")
+    options = {
+        "fixed": task.fixed or None,
+        "decisive": task.decisive,
+        "threads": threads,
+        "max_bytes": max_bytes,
+        "progress": progress,
+    }
+    if not task.facts:
+        return rank_signs(raw, task.criteria, **options)  # type: ignore[arg-type]
+    return rank_scaled(raw, task.criteria, task.facts, task.unit, **options)  # type: ignore[arg-type]
+
+
+def _integrals(coefficients: CoefficientSet, task: FilmTask, treatment: Treatment) -> Integrals | None:
+    if not task.regions:
+        return None
+    made: list[IntegralRegion] = []
+    for number, region in enumerate(task.regions):
+        try:
+            made.append(slab(coefficients.lattice, [1], region.start, region.end))
+        except InputError as fault:
+            raise InputError(("regions", number, *fault.path), fault.reason, fault.cure) from fault
+    return integrals(coefficients, made, treatment)
+
+
+def _widths(scan: Scan, table: OrderTable, task: FilmTask) -> WidthComparison | None:
+    used = np.flatnonzero(table.order > 0)
+    # Two lines are fitted by two numbers; three begin to tell models apart.
+    if scan.width is None or scan.width_sigma is None or used.size < LEAST_WIDTHS:
+        return None
+    instrument = task.instrument_width or 0.0
+    if scan.kind == "q":
+        measured = LineWidths.of(
+            table.order[used],
+            table.q[used],
+            scan.width[used],
+            scan.width_sigma[used],
+            instrument=instrument,
+            rule=task.instrument_rule,
+        )
+    else:
+        measured = LineWidths.from_two_theta(
+            table.order[used],
+            scan.position[used],
+            scan.width[used],
+            scan.width_sigma[used],
+            wavelength=scan.wavelength or 0.0,
+            instrument=instrument,
+            rule=task.instrument_rule,
+        )
+    return compare_widths(measured, table.period)
+
+
+def _told(
+    assignments: tuple[Assignment, ...], spacing: Spacing, ranked: RankedSigns | None, scale: FilmScale | None
+) -> tuple[str, ...]:
+    told = [note for one in assignments[:1] for note in one.notes]
+    told += spacing.notes
+    if ranked is not None:
+        told.append(ranked.verdict)
+    if scale is not None:
+        told += scale.notes
+    return tuple(told)

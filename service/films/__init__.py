@@ -1,0 +1,1 @@
+"""Films: requests about order tables, interpreted, analysed and reported."""

@@ -1,0 +1,185 @@
+"""From a film's request to the engine's task."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from engine.films.analysis import Content, FilmTask, Region
+from engine.films.facts import (
+    Fact,
+    KnownAmplitude,
+    KnownDensity,
+    KnownFactor,
+    KnownMean,
+    KnownTotal,
+)
+from engine.films.scans import Scan
+from engine.films.signs import Criteria, Flat, LeastStructure, NonNegative
+from engine.films.signs import KnownDensity as DensityCriterion
+from engine.films.signs import KnownTotal as TotalCriterion
+from engine.resolution.envelope import Envelope
+from engine.scattering import composition
+from engine.windows import Window
+from service.interpret_file import correction
+from service.problems import at, located
+from service.schemas.films import CriteriaIn, FactIn, FilmTaskIn, ScanIn
+
+NEEDED = {
+    "density": ("start", "end", "value"),
+    "total": ("start", "end", "value"),
+    "mean": ("value",),
+    "composition": ("formula", "area"),
+    "factor": ("value",),
+    "amplitude": ("order", "value"),
+}
+"""Of each kind of fact: what it needs."""
+OPTIONAL = {"composition": ("units", "area_sigma")}
+ALIAS = {"start": "from", "end": "to"}
+
+
+def scan_of(given: ScanIn, place: tuple[str | int, ...] = ("scan",)) -> Scan:
+    """The scan of a request.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    with located(*place, renamed={"position": ("two_theta_deg",)}):
+        return Scan.of(**{name: getattr(given, name) for name in ScanIn.model_fields})
+
+
+def task(request: FilmTaskIn, scan: Scan) -> FilmTask:
+    """What is to be made of a scan.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    spacing, phases = request.spacing, request.phases
+    if (phases.phase_deg is None) == (phases.criteria is None):
+        raise at(("phases",), "have neither or both of phase_deg and criteria", "give one of the two")
+    for name in ("known_signs", "use", "decisive"):
+        if phases.criteria is None and name in phases.model_fields_set:
+            raise at(("phases", name), "belongs to criteria", "leave it out")
+    envelope = None
+    if request.unmeasured is not None:
+        bound = request.unmeasured
+        if bound.amplitude is None or bound.formula is not None:
+            raise at(("unmeasured", "amplitude"), "is absent, or formula is given", "give the bound: amplitude and b")
+        with located("unmeasured"):
+            envelope = Envelope.from_bound(bound.amplitude, bound.b)
+    with located("window"):
+        window = Window(request.window.kind, request.window.b)
+    facts, content = _facts(request.facts)
+    made = FilmTask(
+        scan=scan,
+        period_range=None if spacing.period_range is None else (spacing.period_range[0], spacing.period_range[1]),
+        zero_shift=spacing.zero_shift,
+        displacement=spacing.displacement,
+        radius=spacing.radius_mm,
+        critical_q=spacing.critical_q,
+        refraction_density=spacing.mean_density,
+        corrections=tuple(correction(one, ("corrections", number)) for number, one in enumerate(request.corrections)),
+        rule=request.amplitudes,
+        negative=request.negative,
+        keep_saturated=request.keep_saturated,
+        phases_deg=None if phases.phase_deg is None else _by_order(phases.phase_deg, ("phases", "phase_deg")),
+        criteria=None if phases.criteria is None else _criteria(phases.criteria),
+        fixed={},
+        rank=phases.use - 1,
+        decisive=phases.decisive,
+        facts=facts,
+        content=content,
+        unit=request.unit,
+        samples=request.samples,
+        window=window,
+        baseline=request.baseline,
+        least_significance=request.least_significance,
+        regions=tuple(Region(name=one.name, start=one.start, end=one.end) for one in request.regions),
+        area=request.area,
+        envelope=envelope,
+        instrument_width=request.instrument_width,
+        instrument_rule=request.instrument_rule,
+    )
+    fixed = _by_order({key: float(sign) for key, sign in phases.known_signs.items()}, ("phases", "known_signs"))
+    return replace(made, fixed={order: int(sign) for order, sign in fixed.items()})
+
+
+def _facts(given: list[FactIn]) -> tuple[tuple[Fact, ...], Content | None]:
+    """What is known of the film, and what its repeat unit holds."""
+    found: list[Fact] = []
+    content = None
+    for number, one in enumerate(given):
+        place = ("facts", number)
+        _check_fact(one, place)
+        if one.kind != "composition":
+            found.append(_fact(one))
+            continue
+        if content is not None:
+            raise at(place, "is a second composition", "give one")
+        with located(*place):
+            content = Content(
+                content=composition(one.formula or ""),
+                area=one.area or 0.0,
+                area_sigma=one.area_sigma,
+                units=one.units,
+            )
+    return tuple(found), content
+
+
+def _check_fact(given: FactIn, place: tuple[str | int, ...]) -> None:
+    needed = NEEDED[given.kind]
+    for name in needed:
+        if getattr(given, name) is None:
+            raise at((*place, ALIAS.get(name, name)), "is absent", f"a fact of the kind {given.kind} needs it")
+    allowed = {"kind", *needed, *OPTIONAL.get(given.kind, ("sigma",))}
+    for name in sorted(given.model_fields_set - allowed):
+        raise at((*place, ALIAS.get(name, name)), f"has no meaning for the kind {given.kind}", "leave it out")
+
+
+def _fact(given: FactIn) -> Fact:
+    start, end, value = given.start or 0.0, given.end or 0.0, given.value or 0.0
+    if given.kind == "density":
+        return KnownDensity(start=start, end=end, density=value, sigma=given.sigma)
+    if given.kind == "total":
+        return KnownTotal(start=start, end=end, total=value, sigma=given.sigma)
+    if given.kind == "mean":
+        return KnownMean(mean=value, sigma=given.sigma)
+    if given.kind == "factor":
+        return KnownFactor(factor=value, sigma=given.sigma)
+    return KnownAmplitude(order=given.order or 0, amplitude=value, sigma=given.sigma)
+
+
+def _criteria(given: CriteriaIn) -> Criteria:
+    return Criteria(
+        non_negative=None
+        if given.non_negative is None
+        else NonNegative(floor=given.non_negative.floor, weight=given.non_negative.weight),
+        flat=tuple(Flat(start=one.start, stop=one.end, sigma=one.sigma, weight=one.weight) for one in given.flat),
+        densities=tuple(
+            DensityCriterion(value=one.value, sigma=one.sigma, start=one.start, stop=one.end, weight=one.weight)
+            for one in given.densities
+        ),
+        totals=tuple(
+            TotalCriterion(
+                value=one.value,
+                sigma=one.sigma,
+                start=one.start,
+                stop=one.start if one.end is None else one.end,
+                weight=one.weight,
+            )
+            for one in given.totals
+        ),
+        least_structure=None if given.least_structure is None else LeastStructure(weight=given.least_structure.weight),
+    )
+
+
+def _by_order(given: dict[str, float], place: tuple[str | int, ...]) -> dict[int, float]:
+    made = {}
+    for key, value in given.items():
+        if not (key.isascii() and key.isdecimal() and 0 < int(key) <= 10_000):
+            raise at((*place, key), "is not an order", "name orders by whole numbers above 0")
+        made[int(key)] = value
+    return made

@@ -1,0 +1,199 @@
+"""Reports of films, for the OpenAPI document; they are written without building these objects."""
+
+from __future__ import annotations
+
+from pydantic import BaseModel, Field
+
+from service.schemas.answers import UnmeasuredOut, VariableOut
+from service.schemas.reports import LayerOut, ReportOut, SpacingOut
+
+
+class PeriodOut(BaseModel):
+    """The period and what was fitted with it."""
+
+    period: float
+    period_sigma: float | None
+    unit: str
+    zero_shift_deg: float | None
+    zero_shift_sigma_deg: float | None
+    displacement: float | None
+    displacement_sigma: float | None
+    displacement_unit: str
+    critical_square: float = Field(description="q_c² taken for refraction, Å⁻²")
+    chi_squared: float | None
+    degrees: int
+    probability: float | None
+    sigma_source: str
+
+
+class NumberingOut(BaseModel):
+    """One way to number the lines, the one used first."""
+
+    period: float
+    period_sigma: float | None
+    weight: float = Field(description="share of the evidence of all periods tried")
+    chi_squared: float
+    degrees: int
+    indexed: int
+    stray: int
+    missing: list[int]
+    relation: str
+
+
+class OrderOut(BaseModel):
+    """One line of the scan."""
+
+    order: int = Field(description="0: a stray line")
+    two_theta_deg: float | None
+    q: float
+    d: float
+    residual: float | None
+    residual_in_sigma: float | None
+    intensity: float
+    intensity_sigma: float | None
+    factor: float | None = Field(description="of the corrections")
+    amplitude: float | None = Field(description="|F|, on the absolute scale where there is one")
+    amplitude_sigma: float | None
+    phase_deg: float | None
+    flags: str
+
+
+class FilmScaleOut(BaseModel):
+    """The absolute scale."""
+
+    factor: float
+    factor_sigma: float
+    mean: float | None
+    mean_sigma: float | None
+    unit: str
+    chi_squared: float
+    degrees: int
+    words: str
+    assumptions: list[str]
+
+
+class SignSetOut(BaseModel):
+    """One sign set."""
+
+    rank: int
+    signs: list[int]
+    score: float
+    parts: list[float] = Field(description="of the score, in the order of the criteria")
+    margin: float | None = Field(description="to the next")
+    support: float = Field(description="exp(−score/2) relative to all looked at; no probability of being true")
+    profile: list[float] | None
+
+
+class SignsOut(BaseModel):
+    """Sign sets ranked, and whether the criteria decide."""
+
+    decided: bool
+    verdict: str
+    in_doubt: list[int]
+    used: int
+    exhaustive: bool
+    looked_at: int
+    criteria: list[str]
+    orders: list[int]
+    order_margin: list[float | None]
+    order_support: list[float | None]
+    sets: list[SignSetOut]
+    profile_distance: list[float] = Field(description="of the sets' profiles, Å from the mirror")
+    words: list[str]
+
+
+class FilmProfileOut(BaseModel):
+    """One period."""
+
+    distance_angstrom: list[float]
+    value: list[float]
+    uncertainty: list[float] | None
+    unmeasured: list[float] | None
+
+
+class FilmPointOut(BaseModel):
+    """What the series makes of a plane of no thickness."""
+
+    width: float | None
+    ripple: float
+    unit: str
+
+
+class FilmRegionOut(BaseModel):
+    """The integral over a named region."""
+
+    name: str
+    from_: float = Field(alias="from")
+    to: float
+    integral: float
+    sigma: float | None
+    unit: str
+    mean: float
+    mean_sigma: float | None
+    per_repeat_unit: float | None
+    per_repeat_unit_sigma: float | None
+
+
+class WidthFitOut(BaseModel):
+    """One model fitted to the widths of the lines."""
+
+    model: str
+    thickness: float | None = Field(description="Å")
+    thickness_sigma: float | None
+    thickness_least: float | None
+    layers: float | None
+    layers_sigma: float | None
+    disorder: float | None = Field(description="σ of the spacing over the spacing, or the strain")
+    disorder_sigma: float | None
+    disorder_most: float | None
+    chi_squared: float
+    degrees: int
+    assumptions: list[str]
+    notes: list[str]
+
+
+class WidthsOut(BaseModel):
+    """Models of the widths compared."""
+
+    preferred: str
+    words: str
+    notes: list[str]
+    models: list[WidthFitOut]
+
+
+class FilmReport(ReportOut):
+    """A film from its order table."""
+
+    spacing: PeriodOut
+    numberings: list[NumberingOut]
+    orders: list[OrderOut]
+    scale: FilmScaleOut | None
+    signs: SignsOut | None
+    profile: FilmProfileOut
+    point: FilmPointOut | None
+    area_unit: str
+    length: float
+    periodic: bool
+    merged: int
+    layers: list[LayerOut]
+    spacings: list[SpacingOut]
+    position_covariance: list[list[float]] | None
+    area_covariance: list[list[float]] | None
+    regions: list[FilmRegionOut]
+    unmeasured: UnmeasuredOut | None
+    widths: WidthsOut | None
+    sources: dict[str, str] = Field(description="published methods used")
+
+
+class FilmRunReport(BaseModel):
+    """Films along a run."""
+
+    product: str
+    variable: VariableOut
+    unit: str
+    table: list[dict[str, float | int | bool | None]] = Field(description="one row a film")
+    members: list[FilmReport]
+    notes: list[str]
+
+
+FILM_REPORTS: dict[str, type[BaseModel]] = {"film": FilmReport, "film_run": FilmRunReport}
