@@ -9,8 +9,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from engine.arrays import AnyArray, ComplexArray, FloatArray
-from engine.coefficients import CoefficientSet
-from engine.errors import InputError, TooLargeError
+from engine.coefficients import CoefficientSet, PlaneErrors
+from engine.errors import InputError
 from engine.fields import Treatment, multipliers
 from engine.sampling.grids import Sampling
 from engine.series import Series
@@ -18,6 +18,8 @@ from engine.synthesis import Demand, Plan, Progress, fill, plan, result_dtype
 from engine.uncertainty.errors import Errors, errors_of
 from engine.uncertainty.pairs import estimate, variance_series
 
+BYTES_PER_COEFFICIENT = 88
+"""Of the errors, their indices aside, which are kept while σ is computed."""
 CHUNK = 1 << 18
 """Values treated at a time between syntheses."""
 
@@ -59,6 +61,8 @@ class SigmaWork:
         (xx, xy, xz, yy, …).
     gradient : tuple of Plan
         Of the components themselves, where their direction is needed.
+    nominal : Plan or None
+        Of what a common scale multiplies, where the field's values are not that: an exact self term is in them.
     zero_factor : float
         What the zero term is multiplied by in the field.
     shape : tuple of int
@@ -70,6 +74,7 @@ class SigmaWork:
     errors: Errors
     plans: tuple[Plan, ...]
     gradient: tuple[Plan, ...]
+    nominal: Plan | None
     zero_factor: float
     shape: tuple[int, ...]
     dtype: np.dtype[np.generic]
@@ -83,7 +88,11 @@ class SigmaWork:
     @property
     def seconds(self) -> float:
         """Estimate."""
-        return sum(one.chosen.seconds for one in (*self.plans, *self.gradient))
+        return sum(one.chosen.seconds for one in self._all)
+
+    @property
+    def _all(self) -> tuple[Plan, ...]:
+        return (*self.plans, *self.gradient, *(() if self.nominal is None else (self.nominal,)))
 
 
 def prepare_sigma(
@@ -116,47 +125,46 @@ def prepare_sigma(
     demand = demand or Demand()
     dtype = result_dtype(True, demand.precision)
     samples = math.prod(sampling.shape)
-    shape = sampling.shape if magnitude or count == 1 else (*sampling.shape, count)
+    vector = treatment.field == "gradient"
+    shape = (*sampling.shape, count) if vector else sampling.shape
     pairs = (
         list(itertools.combinations_with_replacement(range(count), 2)) if magnitude else [(j, j) for j in range(count)]
     )
-    cost = estimate(errors)
-    series_bytes = len(pairs) * cost.terms * (8 * errors.lattice.dimension + 16)
     # A vector is summed by way of each component, a length by way of all of them and a covariance.
-    arrays = count + 1 if magnitude else int(count > 1)
+    arrays = count + 1 if magnitude else int(vector)
+    with_nominal = bool(errors.scale and treatment.self_term)
+    arrays += with_nominal
     beside = arrays * samples * dtype.itemsize
-    room = None if max_bytes is None else max_bytes - math.prod(shape) * dtype.itemsize - beside
-    if room is not None and cost.workspace + series_bytes > room:
-        raise TooLargeError(
-            "uncertainty",
-            f"needs {(cost.workspace + series_bytes) / 2**20:,.0f} MiB for the {cost.pairs:,} pairs of related "
-            f"coefficients, more than is left of the limit of {(max_bytes or 0) / 2**20:,.0f} MiB",
-            "leave it out, ask for a coarser resolution, or raise the limit",
-        )
     strengths = [_strengths(errors, one) for one in factors]
-    plans = tuple(
-        plan(variance_series(errors, strengths[i], strengths[j]), sampling, demand, max_bytes=room) for i, j in pairs
+    kinds = len(strengths[0])
+    beside += errors.count * (BYTES_PER_COEFFICIENT + 8 * errors.lattice.dimension + 16 * (kinds + 2) * count)
+    room = None if max_bytes is None else max_bytes - math.prod(shape) * dtype.itemsize - beside
+    made_of: list[Series] = []
+    series_bytes, making = 0, 0
+    for i, j in pairs:
+        left = None if room is None else room - series_bytes
+        made_of.append(variance_series(errors, strengths[i], strengths[j], max_bytes=left))
+        cost = estimate(errors, kinds=kinds, same=i == j)
+        making = max(making, series_bytes + cost.at_peak(made_of[-1].count))
+        series_bytes += made_of[-1].count * (8 * errors.lattice.dimension + 16)
+    if room is not None:
+        # A plan counts the array that it fills, which has been counted already.
+        room += samples * dtype.itemsize - series_bytes
+    plans = tuple(plan(one, sampling, demand, max_bytes=room) for one in made_of)
+    themselves = tuple(
+        plan(Series(errors.lattice, errors.indices, errors.values * one, errors.real), sampling, demand, max_bytes=room)
+        for one in (factors if magnitude or with_nominal else ())
     )
-    gradient: tuple[Plan, ...] = ()
-    if magnitude:
-        gradient = tuple(
-            plan(
-                Series(errors.lattice, errors.indices, errors.values * one, errors.real),
-                sampling,
-                demand,
-                max_bytes=room,
-            )
-            for one in factors
-        )
     at_zero = ~errors.indices.any(axis=1)
     return SigmaWork(
         errors=errors,
         plans=plans,
-        gradient=gradient,
+        gradient=themselves if magnitude else (),
+        nominal=themselves[0] if with_nominal else None,
         zero_factor=float(factors[0][at_zero].real.sum()),
         shape=shape,
         dtype=dtype,
-        workspace=beside + series_bytes + max(one.chosen.workspace for one in (*plans, *gradient)),
+        workspace=beside + max(making, series_bytes + max(one.chosen.workspace for one in (*plans, *themselves))),
     )
 
 
@@ -173,10 +181,13 @@ def perform_sigma(work: SigmaWork, field_values: AnyArray, *, progress: Progress
         _length_variance(work, out)
     else:
         for number, one in enumerate(work.plans):
-            target = out if len(work.plans) == 1 else np.empty(work.shape[:-1], dtype=work.dtype)
+            target = out if out.shape == one.sampling.shape else np.empty(one.sampling.shape, dtype=work.dtype)
             fill(one.prepare(), target, threads=one.demand.threads, progress=progress)
             if target is not out:
                 out[..., number] = target
+    if work.nominal is not None:
+        field_values = np.empty(work.shape, dtype=work.dtype)
+        fill(work.nominal.prepare(), field_values, threads=work.nominal.demand.threads)
     low, high, squares = _finish(out.reshape(-1), field_values.reshape(-1), work)
     # The accuracy of a variance is relative to its largest value; its root halves relative errors
     # there and magnifies them where σ is small.
@@ -211,6 +222,17 @@ def _squares(coefficients: CoefficientSet) -> CoefficientSet:
     sigma = coefficients.sigma
     if sigma is not None:
         sigma = volume * np.sqrt(4 * amplitude**2 * sigma**2 + 2 * sigma**4)
+    errors = None
+    if sigma is not None:
+        # They are real, those that are zero too, and no phase enters.
+        none = np.zeros(coefficients.count)
+        errors = PlaneErrors(
+            phasor=np.ones(coefficients.count, dtype=np.complex128),
+            along=sigma,
+            across=none,
+            mixed=none,
+            contains=("standard uncertainties of the amplitudes",),
+        )
     return replace(
         coefficients,
         values=(volume * amplitude**2).astype(np.complex128),
@@ -219,6 +241,7 @@ def _squares(coefficients: CoefficientSet) -> CoefficientSet:
         phase_sigma=None,
         merit=None,
         scale_sigma=2 * coefficients.scale_sigma,
+        plane_errors=errors,
     )
 
 
