@@ -26,7 +26,7 @@ from engine.films.assignment import Assignment, assign, check_orders
 from engine.films.facts import Fact, mean_of_composition
 from engine.films.line_widths import LineWidths, Rule
 from engine.films.orders import FilmOrders
-from engine.films.scale import FilmScale, scale_by_facts
+from engine.films.scale import FilmScale, density_at, scale_by_facts
 from engine.films.scaled_signs import rank_scaled
 from engine.films.scans import Scan
 from engine.films.signs import Criteria, RankedSigns, rank_signs
@@ -40,6 +40,7 @@ from engine.scattering import Composition
 from engine.synthesis import Progress
 from engine.windows import NO_WINDOW, Window
 
+SCALE_ERRORS = "the scale and the mean density, by the facts given and by the very amplitudes that they scale"
 LEAST_WIDTHS = 3
 """Lines with widths from which thickness and disorder are told."""
 
@@ -264,7 +265,9 @@ def analyse_film(
     treatment = Treatment(window=task.window)
     line = lattice_line(coefficients.lattice, [1], as_count(task.samples, "samples", least=2))
     uncertain = coefficients.sigma is not None or coefficients.scale_sigma > 0
-    profile = evaluate(coefficients, line, treatment, uncertainty=uncertain)
+    profile = _with_scale_errors(
+        evaluate(coefficients, line, treatment, uncertainty=uncertain), raw, phase_deg, scale, task
+    )
     found = layers(
         coefficients,
         line,
@@ -295,8 +298,32 @@ def analyse_film(
         change=change,
         widths=_widths(scan, table, task),
         applied=(*table.applied, *(() if scale is None else (scale.words, *scale.assumptions))),
-        notes=tuple(dict.fromkeys((*scan.notes, *_told(assignments, spacing, ranked, scale), *profile.notes))),
+        notes=tuple(
+            dict.fromkeys((*scan.notes, *_told(assignments, spacing, ranked, scale), *profile.notes, *_caution(scale)))
+        ),
     )
+
+
+def _with_scale_errors(
+    profile: Field, raw: FilmOrders, phase_deg: FloatArray, scale: FilmScale | None, task: FilmTask
+) -> Field:
+    """The profile with σ that knows how the scale hangs together with the amplitudes it was made from."""
+    if profile.sigma is None or scale is None or scale.mean is None or task.window.kind != "none":
+        return profile
+    place = profile.axes[0].coordinates()
+    _, sigma = density_at(raw, phase_deg, scale, place)
+    contains = (*(one for one in profile.sigma.contains if not one.startswith("the scale")), SCALE_ERRORS)
+    omits = tuple(one for one in profile.sigma.omits if not one.startswith("the uncertainty of the zero term"))
+    told = replace(
+        profile.sigma,
+        values=sigma,
+        minimum=float(sigma.min()),
+        maximum=float(sigma.max()),
+        rms=float(np.sqrt(np.mean(sigma**2))),
+        contains=contains,
+        omits=omits,
+    )
+    return replace(profile, sigma=told)
 
 
 def _with_mean(task: FilmTask, spacing: Spacing) -> FilmTask:
@@ -396,6 +423,15 @@ def _widths(scan: Scan, table: OrderTable, task: FilmTask) -> WidthComparison | 
             rule=task.instrument_rule,
         )
     return compare_widths(measured, table.period)
+
+
+def _caution(scale: FilmScale | None) -> tuple[str, ...]:
+    if scale is None:
+        return ()
+    return (
+        "In the σ's of layers and regions the scale counts as independent of the amplitudes and the mean as exact; in "
+        "that of the profile neither.",
+    )
 
 
 def _told(

@@ -113,13 +113,17 @@ class FilmOrders:
             applied=(*self.applied, words),
         )
 
-    def coefficients(self, phase_deg: ArrayLike, mean: float | None = None) -> CoefficientSet:
+    def coefficients(
+        self, phase_deg: ArrayLike, mean: float | None = None, *, merit: ArrayLike | None = None
+    ) -> CoefficientSet:
         """The coefficient set with given phases (degrees, NaN where unknown; 0 and 180 of a symmetric stack).
 
         Parameters
         ----------
         mean : float, optional
             Mean density, in the density's unit.
+        merit : float, shape (n,), optional
+            Figures of merit of the phases, 0…1.
 
         Raises
         ------
@@ -134,6 +138,7 @@ class FilmOrders:
                 amplitude=self.amplitude,
                 phase_deg=np.asarray(phase_deg, dtype=np.float64),
                 sigma=self.sigma,
+                merit=merit,
             ),
             values="structure_factor",
             mean=None if mean is None else mean * lattice.volume,
