@@ -11,7 +11,8 @@ RUN python -m venv /opt/densityloom \
 FROM python:3.11-slim-bookworm
 COPY --from=build /opt/densityloom /opt/densityloom
 # Nothing is written at run time: the root may be read-only (docker run --read-only).
-ENV PATH=/opt/densityloom/bin:$PATH PYTHONDONTWRITEBYTECODE=1 PYTHONUNBUFFERED=1
+# The library that draws wants a place for its list of fonts: memory, which is writable all the same.
+ENV PATH=/opt/densityloom/bin:$PATH PYTHONDONTWRITEBYTECODE=1 PYTHONUNBUFFERED=1 MPLCONFIGDIR=/dev/shm/densityloom
 USER 10001:10001
 WORKDIR /opt/densityloom
 EXPOSE 8420

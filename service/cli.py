@@ -27,6 +27,7 @@ from service.encoders.stack import write_stack
 from service.parts import Part
 from service.problems import Problem, at
 from service.schemas.coefficient_set import CoefficientSetIn, ReflectionSetIn
+from service.schemas.films import FilmTaskIn
 from service.schemas.products import ProductIn
 from service.schemas.requests import INSPECT, InspectIn
 from service.schemas.series import SeriesIn
@@ -147,6 +148,8 @@ def _run(options: argparse.Namespace) -> int:
     if isinstance(request, InspectIn):
         raise ValueError(f"{options.request.name} asks for an inspection: use densityloom inspect")
     form = _form(product, options.out)
+    if isinstance(request, FilmTaskIn):
+        return _film(request, form, options, settings)
     if isinstance(request, SeriesIn):
         return _series(request, form, options, settings)
     if not isinstance(request, ProductIn):
@@ -183,6 +186,20 @@ def _analyse(
     return 0
 
 
+def _film(request: FilmTaskIn, form: str | None, options: argparse.Namespace, settings: Settings) -> int:
+    with tqdm(desc="films", delay=SILENT_SECONDS, leave=False) as bar:
+
+        def progress(done: int, total: int) -> None:
+            bar.total = total
+            bar.update(done - bar.n)
+
+        report = pipeline.film_report(request, settings, threads=options.threads, progress=progress)
+    print(render_report(report))
+    if options.out is not None and form is not None:
+        _written(options.out, pipeline.film_answer(request, form, settings, threads=options.threads))
+    return 0
+
+
 def _series(request: SeriesIn, form: str | None, options: argparse.Namespace, settings: Settings) -> int:
     with tqdm(total=len(request.members), desc="series", delay=SILENT_SECONDS, leave=False) as bar:
 
@@ -190,7 +207,7 @@ def _series(request: SeriesIn, form: str | None, options: argparse.Namespace, se
             bar.total = total
             bar.update(done - bar.n)
 
-        made = stack(request, settings, threads=options.threads, progress=progress)
+        made = stack(request, settings, form, threads=options.threads, progress=progress)
     print(render_stack(made))
     if options.out is not None and form is not None:
         _written(options.out, write_stack(made, form, request, settings))

@@ -15,7 +15,7 @@ The second set of a combination or a comparison comes in the same way, as ``with
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -29,6 +29,7 @@ from service.forms import split
 from service.parts import Part
 from service.problems import Problem, at, from_validation
 from service.schemas.coefficient_set import COLUMN_NAMES
+from service.schemas.films import FILMS, SCAN_COLUMNS
 from service.schemas.requests import INSPECT, REQUESTS, Request
 
 JSON = "application/json"
@@ -123,10 +124,13 @@ def check(
             name: files[prefix + name] for name in ("reflections", "reference") if prefix + name in files
         }
         table = files.get(f"{prefix}columns")
+        place = _place(prefix, document) if product not in FILMS else ("scan",)
         if table is not None:
-            found |= columns(table, max_body_bytes=max_body_bytes, part=f"{prefix}columns")
+            names = COLUMN_NAMES if product not in FILMS else SCAN_COLUMNS
+            part = f"{prefix}columns"
+            found |= columns(table, max_body_bytes=max_body_bytes, part=part, place=place, names=names)
         if found:
-            document = _joined(document, found, _place(prefix, document))
+            document = _joined(document, found, place)
     try:
         return product, REQUESTS[product].model_validate(document)
     except ValidationError as fault:
@@ -140,8 +144,15 @@ def _place(prefix: str, document: dict[str, Any]) -> tuple[str, ...]:
     return ("combination", "with") if "combination" in document else ("with",)
 
 
-def columns(table: Part, *, max_body_bytes: int, part: str = "columns") -> dict[str, NDArray[np.float64]]:
-    """Columns of a table.
+def columns(
+    table: Part,
+    *,
+    max_body_bytes: int,
+    part: str = "columns",
+    place: tuple[str, ...] = ("set",),
+    names: Sequence[str] = COLUMN_NAMES,
+) -> dict[str, NDArray[np.float64]]:
+    """Columns of a table, for the set at a place.
 
     Raises
     ------
@@ -150,12 +161,12 @@ def columns(table: Part, *, max_body_bytes: int, part: str = "columns") -> dict[
     """
     try:
         if table.media_type == CSV:
-            return read_delimited(table.data, COLUMN_NAMES)
+            return read_delimited(table.data, names)
         if table.media_type == NPZ:
-            return read_npz(table.data, COLUMN_NAMES, max_bytes=UNPACKED_RATIO * max_body_bytes)
+            return read_npz(table.data, names, max_bytes=UNPACKED_RATIO * max_body_bytes)
     except InputError as fault:
         kind = "too-costly" if isinstance(fault, TooLargeError) else "invalid-request"
-        raise at(("set",), f"the part {part}: {fault.reason}", fault.cure, kind=kind) from fault
+        raise at(place, f"the part {part}: {fault.reason}", fault.cure, kind=kind) from fault
     raise Problem("unsupported-media-type", f"The part {part} is {table.media_type[:60]!r}; send {CSV} or {NPZ}.")
 
 

@@ -83,9 +83,11 @@ def _average(request: TreatedIn, lattice: Lattice) -> Average | None:
 
 
 def _own_normal(request: TreatedIn, lattice: Lattice) -> Sequence[int]:
-    normal: Sequence[int] | None = getattr(request, "normal_to", None) or getattr(request, "plane", None)
-    if normal is not None:
-        return normal
+    # The place of a series stands in a member of its own.
+    for where in (request, getattr(request, "profile", None), getattr(request, "slice", None)):
+        normal: Sequence[int] | None = getattr(where, "normal_to", None) or getattr(where, "plane", None)
+        if normal is not None:
+            return normal
     if lattice.dimension == 1:
         return [1]
     raise at(("average", "normal"), "is absent", "give the indices of the planes averaged over")

@@ -2,17 +2,24 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import replace
 from typing import Literal
 
+import numpy as np
+
 from engine.coefficients import CoefficientSet
 from engine.combination import AS_GIVEN, Combined, ScaleChoice, average, difference, fitted_scale, given_scale
-from engine.errors import InputError
+from engine.errors import InputError, TransformError
+from engine.fields import STEEPEST
 from service.interpret_set import one_set
 from service.problems import at, located, moved
 from service.schemas.coefficient_set import CoefficientSetIn
 from service.schemas.combination import CombinationIn, RelativeScaleIn
 from service.schemas.treatment import SetRequestIn
+
+NOT_FITTED = ("scale", "cannot be fitted: the fit did not converge", "check the two sets, or give the scale")
 
 
 def coefficient_set(request: SetRequestIn, *, max_coefficients: int) -> CoefficientSet:
@@ -60,12 +67,14 @@ def combined(
             "is absent" if asked.third is None else "is given, and its phases are not asked for",
             'give it together with "phases": "third", or leave both out',
         )
+    if asked.kind == "difference" and "weights" in asked.model_fields_set:
+        raise at(("combination", "weights"), "is for averages", "leave it out")
     merit = bool(getattr(request, "apply_merit", False))
-    with located("combination"):
-        scale = scale_choice(asked.scale)
+    with _placed(asked):
+        scale = scale_choice(asked.scale, (first, second))
         if asked.kind == "average":
             if asked.phases not in ("own", "first"):
-                raise InputError("phases", f"{asked.phases} is not for averages", "choose own or first")
+                raise at(("combination", "phases"), f"{asked.phases} is not for averages", "choose own or first")
             if asked.missing != "omit":
                 raise InputError(
                     "missing", "is for differences", "leave it out: each term is averaged over what there is"
@@ -89,13 +98,36 @@ def combined(
         return _told(difference(first, second, scale=scale, phases=phases, missing=asked.missing, apply_merit=merit))
 
 
-def scale_choice(asked: RelativeScaleIn) -> ScaleChoice:
+@contextmanager
+def _placed(asked: CombinationIn) -> Iterator[None]:
+    """Faults of a combination, where the sets stand in the body."""
+    other: tuple[str | int, ...] = ("combination", "with")
+    with located(
+        renamed={
+            **{name: ("combination", name) for name in ("scale", "missing", "weights", "phases")},
+            **dict.fromkeys(("first", "set 1"), ("set",)),
+            **dict.fromkeys(("second", "set 2", "sets"), other),
+            "phases": ("combination", "phases" if asked.third is None else "third"),
+        }
+    ):
+        try:
+            yield
+        except InputError as fault:
+            if fault.path[:1] == ("scale",) and fault.path[1:] in (("second",), ("set 2",)):
+                # A scale that cannot be fitted to a set: the set is at fault.
+                raise InputError("second", fault.reason, fault.cure) from fault
+            raise
+        except (TransformError, np.linalg.LinAlgError) as fault:
+            raise InputError(*NOT_FITTED) from fault
+
+
+def scale_choice(asked: RelativeScaleIn, sets: Sequence[CoefficientSet]) -> ScaleChoice:
     """How a set is brought to the scale of another.
 
     Raises
     ------
     InputError
-        A member that does not belong to the kind, or one that is absent.
+        A member that does not belong to the kind, one that is absent, or a B beyond all measure for the sets.
     """
     allowed = {"as_given": set(), "given": {"k", "k_sigma", "b"}, "fitted": {"displacement", "robust"}}[asked.kind]
     for name in sorted(asked.model_fields_set - {"kind"} - allowed):
@@ -106,6 +138,13 @@ def scale_choice(asked: RelativeScaleIn) -> ScaleChoice:
         return AS_GIVEN
     if asked.k is None:
         raise InputError(("scale", "k"), "is absent", "give it: amplitude of the first over that of the second")
+    if (asked.k_sigma or 0.0) > asked.k:
+        raise InputError(("scale", "k_sigma"), "exceeds k", "give the standard uncertainty of k, in its own unit")
+    steepest = max(float(one.lattice.sine_over_wavelength(one.indices).max(initial=0.0)) for one in sets) ** 2
+    if -(asked.b or 0.0) * steepest > STEEPEST:
+        raise InputError(
+            ("scale", "b"), f"multiplies the outermost coefficients by more than exp({STEEPEST:g})", "give B in Å²"
+        )
     return given_scale(asked.k, k_sigma=asked.k_sigma or 0.0, b=asked.b or 0.0)
 
 

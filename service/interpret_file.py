@@ -74,6 +74,12 @@ def prepared(
     wanted = given.preparation or PreparationIn()
     if given.reflections is None:
         raise at(("set", "reflections"), "is absent", "send the file as the part reflections of a form")
+    if given.symmetry is not None and given.symmetry.columns == "full":
+        raise at(
+            ("set", "symmetry", "columns"),
+            "is full beside a file of reflections",
+            "leave it out: equivalents of a file are merged, and then expanded",
+        )
     table, reflections, left = _reflections("reflections", given, lattice, max_rows=max_rows, progress=progress)
     group = _group(given.symmetry, table.crystal.symmetry, reflections.lattice.dimension)
     if wanted.phase == "hendrickson_lattman":
@@ -293,26 +299,45 @@ def _corrections(
     asked: list[CorrectionIn], reflections: Reflections, table: ReadTable, group: Group
 ) -> tuple[Correction, ...]:
     made: list[Correction] = []
-    for place, one in enumerate(asked):
-        own = {
-            "lorentz": {"geometry"},
-            "polarisation": {"degree", "monochromator_2theta_deg", "perfect"},
-            "multiplicity": set[str](),
-            "film_absorption": {"thickness_um", "mu_per_cm"},
-            "footprint": {"length_mm", "width_mm", "profile"},
-        }[one.kind]
-        where = ("set", "preparation", "corrections", place)
-        for name in sorted(one.model_fields_set - own - {"kind"}):
-            raise at((*where, name), f"has no meaning for {one.kind}", "leave it out")
-        for name in sorted(own - {"degree", "perfect", "profile", "monochromator_2theta_deg"}):
-            if getattr(one, name) is None:
-                raise at((*where, name), "is absent", f"{one.kind} needs it")
-        with located(*where):
-            if one.kind == "multiplicity":
+    for number, one in enumerate(asked):
+        where = ("set", "preparation", "corrections", number)
+        if one.kind == "multiplicity":
+            _check_correction(one, where)
+            with located(*where):
                 made.append(_multiplicity(reflections, table, group))
-            else:
-                made.append(_correction(one))
+        else:
+            made.append(correction(one, where))
     return tuple(made)
+
+
+def correction(one: CorrectionIn, where: tuple[str | int, ...]) -> Correction:
+    """One correction of a request that needs nothing of the reflections.
+
+    Raises
+    ------
+    Problem
+        Pointing below the place `where`.
+    """
+    _check_correction(one, where)
+    if one.kind == "multiplicity":
+        raise at((*where, "kind"), "multiplicity is of powders, by file or symmetry", "leave it out")
+    with located(*where):
+        return _correction(one)
+
+
+def _check_correction(one: CorrectionIn, where: tuple[str | int, ...]) -> None:
+    own = {
+        "lorentz": {"geometry"},
+        "polarisation": {"degree", "monochromator_2theta_deg", "perfect"},
+        "multiplicity": set[str](),
+        "film_absorption": {"thickness_um", "mu_per_cm"},
+        "footprint": {"length_mm", "width_mm", "profile"},
+    }[one.kind]
+    for name in sorted(one.model_fields_set - own - {"kind"}):
+        raise at((*where, name), f"has no meaning for {one.kind}", "leave it out")
+    for name in sorted(own - {"degree", "perfect", "profile", "monochromator_2theta_deg"}):
+        if getattr(one, name) is None:
+            raise at((*where, name), "is absent", f"{one.kind} needs it")
 
 
 def _multiplicity(reflections: Reflections, table: ReadTable, group: Group) -> Multiplicity:

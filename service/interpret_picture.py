@@ -15,16 +15,21 @@ from service.schemas.products import ProductIn
 
 
 def options(request: ProductIn, asked: PictureIn | None) -> PictureOptions:
-    """The options of a request's picture.
+    """The options of a product's picture.
 
     Raises
     ------
     Problem
         Pointing to the place in the body.
     """
-    asked = asked or PictureIn()
-    if asked.level_sigmas is not None and not request.uncertainty:
+    if asked is not None and asked.level_sigmas is not None and not request.uncertainty:
         raise at(("picture", "level_sigmas"), "needs the uncertainty", 'ask for it with "uncertainty": true')
+    return picture_options(asked)
+
+
+def picture_options(asked: PictureIn | None) -> PictureOptions:
+    """The options of any picture; raises as `options`."""
+    asked = asked or PictureIn()
     taken = set(PictureIn.model_fields) - {"markers", "mark_layers", "levels"}
     with located("picture"):
         return PictureOptions(

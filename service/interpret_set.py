@@ -19,6 +19,8 @@ from service.problems import at, located
 from service.schemas.coefficient_set import COLUMN_NAMES, INDEX_NAMES, Cell, CoefficientSetIn
 from service.schemas.treatment import SetRequestIn
 
+LARGEST = 1e70
+"""Value whose fourth power, in a moment of the density, is still a number."""
 CELL_PARAMETERS = ("a", "b", "c", "alpha", "beta", "gamma")
 
 
@@ -33,6 +35,13 @@ def one_set(request: SetRequestIn, given: CoefficientSetIn, *, max_coefficients:
     missing = request.missing_phase
     read = _of_columns if given.reflections is None else _of_file
     made = read(given, missing, max_coefficients)
+    largest = max(float(np.abs(column).max(initial=0.0)) for column in (made.values, made.sigma) if column is not None)
+    if not largest <= LARGEST:
+        raise at(
+            ("set",),
+            f"holds values beyond {LARGEST:g} in the unit of the density, whose powers overflow",
+            "state the columns in a larger unit",
+        )
     with located("resolution"):
         return made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
 
@@ -132,7 +141,7 @@ def _of_columns(given: CoefficientSetIn, missing_phase: MissingPhase, max_coeffi
         return replace(made, scale_sigma=given.scale_sigma)
     group = symmetry_group(given.symmetry, lattice.dimension)
     if given.symmetry.columns == "full":
-        with located("set"):
+        with located("set", renamed={"lattice": ("cell",), "indices": (names[0],)}):
             return replace(related(made, group), scale_sigma=given.scale_sigma)
     return _expanded(made, given, lattice, group)
 

@@ -15,6 +15,8 @@ from service.parts import Part
 from service.problems import MEDIA_TYPE as PROBLEM
 from service.problems import TITLES
 from service.schemas.answers import Answer, ProblemDocument, StackAnswer
+from service.schemas.film_reports import FILM_REPORTS
+from service.schemas.films import FILMS
 from service.schemas.reports import REPORTS
 from service.schemas.requests import INSPECT, REQUESTS, SERIES
 from service.schemas.summary import SummaryAnswer
@@ -33,6 +35,8 @@ SUMMARIES = {
     "statistics": "Moments and histogram of a field",
     "windows": "What termination windows do to a point and to a step",
     "compare": "Agreement of two densities on one cell",
+    "film": "A film from a scan's order table to its layer profile and layer table",
+    "film_run": "Films along a run, each analysed alike",
     INSPECT: "Summary of a file of reflections",
 }
 
@@ -87,6 +91,17 @@ _PREPARATION = {
         },
     }
 }
+_SCAN = {
+    "wavelength": 1.5406,
+    "two_theta_deg": [5.89, 11.79, 17.73, 23.72],
+    "position_sigma": [0.01, 0.01, 0.01, 0.02],
+    "intensity": [9120, 410, 233, 61],
+    "intensity_sigma": [95, 21, 16, 8],
+}
+_FILM_TASK = {
+    "corrections": [{"kind": "lorentz", "geometry": "film_part_of_arc"}, {"kind": "polarisation"}],
+    "phases": {"criteria": {"least_structure": {}}},
+}
 EXAMPLES: dict[str, dict[str, Any]] = {
     "profile": {"set": _FILM, "from": [0], "to": [1], "samples": 128},
     "slice": {"set": _CRYSTAL, "plane": [0, 0, 1], "offset": 4.35, "width": 12, "height": 12, "spacing": 0.1},
@@ -116,6 +131,17 @@ EXAMPLES: dict[str, dict[str, Any]] = {
     "statistics": {"set": _CRYSTAL, "bins": 32},
     "windows": {"set": _FILM},
     "compare": {"set": _FILM, "with": {**_FILM, "amplitude": [12.4, 40.8, 8.1, 23.3]}},
+    "film": {"scan": _SCAN, **_FILM_TASK},
+    "film_run": {
+        "scan": {"wavelength": 1.5406},
+        "variable": "relative humidity",
+        "variable_unit": "%",
+        "members": [
+            {"value": 10, "scan": _SCAN},
+            {"value": 60, "scan": {**_SCAN, "two_theta_deg": [5.52, 11.05, 16.62, 22.22]}},
+        ],
+        **_FILM_TASK,
+    },
 }
 
 
@@ -154,6 +180,12 @@ def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
         "request": {"contentType": JSON},
         **{name: {"contentType": ", ".join(FILE_TYPES)} for name in named},
     }
+    if product in FILMS:
+        form = {"type": "object", "required": ["request"], "properties": {"request": request, "columns": binary}}
+        return {
+            JSON: {"schema": schema, "examples": {"small": {"summary": "A small film", "value": EXAMPLES[product]}}},
+            MULTIPART: {"schema": form, "encoding": {"columns": {"contentType": f"{CSV}, {NPZ}"}}},
+        }
     if product == INSPECT:
         form = {"type": "object", "required": ["reflections"], "properties": {**properties, "request": schema}}
         example = {
@@ -222,7 +254,7 @@ def install(app: FastAPI) -> None:
                 (Answer, "serialization"),
                 (StackAnswer, "serialization"),
                 (SummaryAnswer, "serialization"),
-                *((model, "serialization") for model in REPORTS.values()),
+                *((model, "serialization") for model in (*REPORTS.values(), *FILM_REPORTS.values())),
                 (ProblemDocument, "serialization"),
             ]
             _, schemas = models_json_schema(models, ref_template=_SCHEMAS + "{model}")

@@ -6,7 +6,7 @@ import math
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Literal, cast
 
 import orjson
 
@@ -27,7 +27,9 @@ from service.encoders.report import report_csv, report_json
 from service.encoders.stack import write_stack
 from service.encoders.summary import summary_document
 from service.encoders.write import Wanted, write
+from service.films.run import film, film_picture, film_run, film_run_picture
 from service.problems import Problem, at, located
+from service.schemas.films import FilmIn, FilmRunIn, FilmTaskIn
 from service.schemas.products import DrawnIn, ProductIn, UnmeasuredIn
 from service.schemas.requests import InspectIn, Request
 from service.schemas.series import SeriesIn
@@ -148,7 +150,14 @@ def _change(request: ProductIn, asked: UnmeasuredIn, work: Work, settings: Setti
     """
     if (asked.formula is None) == (asked.amplitude is None):
         raise at(("unmeasured",), "has neither or both of formula and amplitude", "give one of the two")
-    with located("unmeasured", renamed={"composition": ("formula",), "unmeasured": ()}):
+    place = ("unmeasured",)
+    renamed: dict[str, tuple[str | int, ...]] = {
+        **{name: (*place, name) for name in ("formula", "units", "amplitude", "b", "d_stop")},
+        **dict.fromkeys(("unmeasured", "uncertainty", "samples"), place),
+        "composition": (*place, "formula"),
+        "phase_deg": ("set", "phase_deg"),
+    }
+    with located(renamed=renamed):
         if asked.formula is not None:
             content = composition(asked.formula)
             envelope = Envelope.from_composition(content, asked.b, units=asked.units)
@@ -191,11 +200,45 @@ def analyse(
     Problem
         The request cannot be carried out, or would exceed a limit.
     """
-    limits = Limits(
-        max_bytes=settings.max_memory_bytes, max_rows=settings.max_coefficients, threads=threads, progress=progress
-    )
+    limits = _limits(settings, threads, progress)
     coefficients = interpret_combination.coefficient_set(request, max_coefficients=settings.max_coefficients)
     return analysis(product, request, coefficients, limits)
+
+
+def film_answer(request: FilmTaskIn, form: str, settings: Settings, *, threads: int) -> bytes:
+    """A film or a run of films in the form asked for.
+
+    Raises
+    ------
+    Problem
+        The request cannot be carried out, or would exceed a limit.
+    """
+    if form in PICTURE_FORMATS:
+        limits = _limits(settings, threads, None)
+        kind = cast("Literal['png', 'svg']", form)
+        if isinstance(request, FilmRunIn):
+            return film_run_picture(request, limits, kind)
+        return film_picture(cast("FilmIn", request), limits, kind)
+    report = film_report(request, settings, threads=threads)
+    return report_json(report) if form == "json" else report_csv(report)
+
+
+def film_report(request: FilmTaskIn, settings: Settings, *, threads: int, progress: Progress | None = None) -> Report:
+    """The report of a film or of a run of films; raises as `film_answer`."""
+    limits = _limits(settings, threads, progress)
+    if isinstance(request, FilmRunIn):
+        return film_run(request, limits)
+    return film(cast("FilmIn", request), limits)
+
+
+def _limits(settings: Settings, threads: int, progress: Progress | None) -> Limits:
+    return Limits(
+        max_bytes=settings.max_memory_bytes,
+        max_rows=settings.max_coefficients,
+        max_values=settings.max_json_values,
+        threads=threads,
+        progress=progress,
+    )
 
 
 def answer(
@@ -214,7 +257,9 @@ def answer(
     elif isinstance(request, ProductIn):
         run(product, request, form, spool, settings, threads=threads)
     elif isinstance(request, SeriesIn):
-        spool.append(write_stack(stacks.stack(request, settings, threads=threads), form, request, settings))
+        spool.append(write_stack(stacks.stack(request, settings, form, threads=threads), form, request, settings))
+    elif isinstance(request, FilmTaskIn):
+        spool.append(film_answer(request, form, settings, threads=threads))
     else:
         report = analyse(product, request, settings, threads=threads)
         spool.append(report_json(report) if form == "json" else report_csv(report))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, field
@@ -154,24 +155,47 @@ def moved(*place: str | int) -> Iterator[None]:
         raise Problem(problem.kind, relocated(problem.detail), places, problem.headers) from problem
 
 
+@contextmanager
+def below(*place: str | int) -> Iterator[None]:
+    """Let problems that point to members of one object of the body point to where that object stands."""
+    try:
+        yield
+    except Problem as problem:
+        outer = pointer(place)
+        old = problem.places[0].pointer if problem.places else ""
+        places = tuple(Place(outer + one.pointer, one.reason, one.cure) for one in problem.places)
+        detail = outer + problem.detail if old and problem.detail.startswith(old) else problem.detail
+        raise Problem(problem.kind, detail, places, problem.headers) from problem
+
+
 def from_validation(error: ValidationError) -> Problem:
     """A schema's complaints as places; the values at fault are never echoed."""
-    places = []
+    found: dict[str, Place] = {}
     for complaint in error.errors(include_url=False, include_input=False)[:ERRORS_NAMED]:
         context = complaint.get("ctx", {})
         parts = [*complaint["loc"], *([context["row"]] if "row" in context else [])]
-        if complaint["type"] in ("int_type", "string_type") and parts[-1:] in (["int"], ["str"]):
-            # A member of either type: each is tried, complains, and adds its own name.
-            parts.pop()
+        if complaint["type"] != "extra_forbidden":
+            # A member of several types: each is tried, complains, and adds its own name.
+            parts = [part for part in parts if not (isinstance(part, str) and _OWN_NAME.fullmatch(part))]
         cure = str(context.get("cure", _CURES.get(complaint["type"], "see the request's schema at /docs")))
         # The stock message for an object names our own class.
         reason = "is not an object" if complaint["type"] == "model_type" else complaint["msg"].lower().rstrip(".")
-        places.append(Place(pointer(parts), reason, cure))
+        where = pointer(parts)
+        if where not in found:
+            found[where] = Place(where, reason, cure)
+        elif reason not in found[where].reason:
+            found[where] = Place(where, f"{found[where].reason}, or: {reason}", found[where].cure)
+    places = list(found.values())
     first = places[0]
     where = first.pointer or "the request"
     more = f" ({len(places) - 1} more under errors)" if len(places) > 1 else ""
-    return Problem("invalid-request", f"{where}: {first.reason}. {first.cure.capitalize()}{more}.", tuple(places))
+    return Problem(
+        "invalid-request", f"{where}: {first.reason}. {first.cure[:1].upper()}{first.cure[1:]}{more}.", tuple(places)
+    )
 
+
+_OWN_NAME = re.compile(r"(?:constrained-)?(?:int|float|str|bool)|(?:literal|list)\[.*\]")
+"""What the library calls the types of a member that may have several."""
 
 _CURES = {
     "missing": "add it",

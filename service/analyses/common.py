@@ -10,6 +10,15 @@ import numpy as np
 from engine.coefficients import CoefficientSet
 from service.analyses.report import Column
 
+OF_SET: dict[str, tuple[str | int, ...]] = {
+    "density": ("set", "density"),
+    "phase_deg": ("set", "phase_deg"),
+    "sigma": ("set", "sigma"),
+    "amplitude": ("set",),
+    "uncertainty": ("set",),
+}
+"""What the engine finds at fault in a set, and where that stands in a request."""
+
 
 def heading(
     product: str,

@@ -9,7 +9,7 @@ from engine.features.comparison import compare as compare_densities
 from service import interpret_combination
 from service.analyses.common import heading, rows, table_of, told
 from service.analyses.report import Limits, Report
-from service.problems import located
+from service.problems import at, located
 from service.schemas.analyses import CompareIn
 
 NUMBERS = (
@@ -39,6 +39,9 @@ def compare(request: CompareIn, coefficients: CoefficientSet, limits: Limits) ->
         Pointing to the place in the body.
     """
     other = interpret_combination.other_set(request, request.other, ("with",), max_coefficients=limits.max_rows)
+    for name, one in (("set", coefficients), ("with", other)):
+        if not one.phase_known.any():
+            raise at((name, "phase_deg"), "is known of no coefficient", "give phases")
     with located(renamed={"set": ("set",), "with": ("with",), "lattice": ("with", "cell")}):
         made = compare_densities(coefficients, other, terms=request.terms, shells=request.shells, names=("set", "with"))
     document = heading(
@@ -54,5 +57,4 @@ def compare(request: CompareIn, coefficients: CoefficientSet, limits: Limits) ->
     document |= every
     shells = asdict(made.shells)
     document["shells"] = rows(shells)
-    figures = "; ".join(f"{name.replace('_', ' ')}: {value}" for name, value in every.items())
-    return Report(document=document, table=table_of(shells), told=(*told(document), figures))
+    return Report(document=document, table=table_of(shells), told=told(document), figures=every)

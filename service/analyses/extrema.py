@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
 import numpy as np
@@ -13,8 +14,8 @@ from engine.features.neighbours import neighbours
 from engine.features.regions import Region, ball_region, box_region
 from engine.lattice import Lattice
 from service import interpret
-from service.analyses.common import heading, rows, table_of, told
-from service.analyses.report import Limits, Report
+from service.analyses.common import OF_SET, heading, rows, table_of, told
+from service.analyses.report import Column, Limits, Report
 from service.encoders.describe import FRACTIONAL_NAMES
 from service.problems import at, located
 from service.schemas.analyses import ExtremaIn, RegionIn
@@ -34,7 +35,15 @@ def extrema(request: ExtremaIn, coefficients: CoefficientSet, limits: Limits) ->
     lattice = coefficients.lattice
     treatment = interpret.treatment(request, lattice)
     region = None if request.region is None else _region(request.region, lattice, request.coordinates)
-    with located():
+    if request.within is not None and region is not None:
+        raise at(
+            ("within",),
+            "is asked for of extrema in a region",
+            "leave one of the two out, or name pairs under distances",
+        )
+    if request.spacing is not None:
+        _require_memory(request.spacing, lattice, limits)
+    with located(renamed=OF_SET):
         made = find_extrema(
             coefficients,
             treatment,
@@ -48,6 +57,8 @@ def extrema(request: ExtremaIn, coefficients: CoefficientSet, limits: Limits) ->
             max_bytes=limits.max_bytes,
             progress=limits.progress,
         )
+    d = lattice.dimension
+    _require_values(made.count * (14 + 4 * d + d * d), "most", limits)
     document = heading(
         "extrema",
         coefficients,
@@ -63,15 +74,51 @@ def extrema(request: ExtremaIn, coefficients: CoefficientSet, limits: Limits) ->
         "cell": None
         if made.cell is None
         else {"negative_curvatures": list(range(lattice.dimension + 1)), "counts": list(made.cell.counts)},
-        "distances": _distances(request, made),
+        "distances": _distances(request, made, limits),
         "angles": _angles(request, made),
     }
-    return Report(document=document, table=_table(made), told=told(document))
+    further = [("distances, Å", _flat(document["distances"], ("vector",))), ("angles, °", _flat(document["angles"]))]
+    return Report(
+        document=document,
+        table=_table(made),
+        told=told(document),
+        figures={"found": made.found, "listed": made.count},
+        further=tuple((title, table) for title, table in further if table),
+    )
+
+
+def _require_memory(spacing: float, lattice: Lattice, limits: Limits) -> None:
+    """Refuse at once what no search could hold: an eighth of the planes, with value, slopes and curvatures."""
+    samples = math.prod(float(length) / spacing for length in lattice.lengths)
+    if 8 * samples > limits.max_bytes:
+        raise at(
+            ("spacing",),
+            f"makes a grid of about {samples:.2g} samples, whose search would take more than the limit of "
+            f"{limits.max_bytes / 2**20:,.0f} MiB",
+            "search with a coarser spacing, or have the limit raised",
+            kind="too-costly",
+        )
+
+
+def _require_values(numbers: int, place: str, limits: Limits) -> None:
+    if numbers > limits.max_values:
+        raise at(
+            (place,),
+            f"makes a report of {numbers:,} numbers, more than the limit of {limits.max_values:,}",
+            "ask for fewer, or have the limit raised",
+            kind="too-costly",
+        )
+
+
+def _flat(records: list[dict[str, Any]], without: tuple[str, ...] = ()) -> tuple[Column, ...]:
+    names = [name for name in (records[0] if records else ()) if name not in without]
+    columns = {name: [record[name] for record in records] for name in names}
+    return tuple((name, values) for name, values in columns.items() if any(value is not None for value in values))
 
 
 def _region(given: RegionIn, lattice: Lattice, coordinates: Coordinates) -> Region:
-    box = {"origin", "edges"} & given.model_fields_set
-    ball = {"centre", "radius"} & given.model_fields_set
+    present = {name for name in type(given).model_fields if getattr(given, name) is not None}
+    box, ball = {"origin", "edges"} & present, {"centre", "radius"} & present
     if bool(box) == bool(ball):
         raise at(("region",), "is neither a parallelepiped nor a ball", "give origin and edges, or centre and radius")
     for name in sorted({"origin", "edges"} - box) if box else sorted({"centre", "radius"} - ball):
@@ -106,23 +153,26 @@ def _table(made: Extrema) -> tuple[tuple[str, Any], ...]:
     d = made.fractional.shape[1]
     columns: dict[str, Any] = {"number": list(range(1, made.count + 1)), "kind": list(made.kind)}
     columns |= dict(zip(FRACTIONAL_NAMES[d], made.fractional.T, strict=True))
-    columns |= {f"{AXES[axis]}_angstrom": made.cartesian[:, axis] for axis in range(d)}
+    for axis in range(d):
+        columns[f"{AXES[axis]}_angstrom"] = made.cartesian[:, axis]
+        if made.position_sigma is not None:
+            columns[f"{AXES[axis]}_sigma"] = made.position_sigma[:, axis]
     columns |= {"value": made.value, "sigma": made.sigma, "significance": made.significance}
-    if made.position_sigma is not None:
-        columns |= {f"{AXES[axis]}_sigma": made.position_sigma[:, axis] for axis in range(d)}
     columns |= {f"curvature_{axis + 1}": made.curvatures[:, axis] for axis in range(d)}
     return table_of(columns | {"multiplicity": made.multiplicity, "site_order": made.site_order})
 
 
-def _distances(request: ExtremaIn, made: Extrema) -> list[dict[str, Any]]:
+def _distances(request: ExtremaIn, made: Extrema, limits: Limits) -> list[dict[str, Any]]:
     found: list[dict[str, Any]] = []
     if request.distances:
         numbers = _numbers(request.distances, made.count, "distances")
         with located(renamed={"pairs": ("distances",)}):
             found += _listed(distances(made, numbers - 1))
     if request.within is not None:
-        with located(renamed={"within": ("within",)}):
-            found += _listed(neighbours(made, request.within))
+        with located(renamed={"cutoff": ("within",)}):
+            near = neighbours(made, request.within)
+        _require_values(near.value.size * (5 + near.vector.shape[1]), "within", limits)
+        found += _listed(near)
     return found
 
 
@@ -157,8 +207,7 @@ def _angles(request: ExtremaIn, made: Extrema) -> list[dict[str, Any]]:
 
 
 def _numbers(given: list[list[int]], count: int, name: str) -> np.ndarray[tuple[int, int], np.dtype[np.int64]]:
-    numbers = np.array(given, dtype=np.int64)
-    beyond = np.flatnonzero((numbers > count).any(axis=1))
-    if beyond.size:
-        raise at((name, int(beyond[0])), f"names more than the {count} extrema found", "give numbers of the list")
-    return numbers
+    for row, numbers in enumerate(given):
+        if max(numbers) > count:
+            raise at((name, row), f"names number {max(numbers)} of {count} extrema listed", "give numbers of the list")
+    return np.array(given, dtype=np.int64)

@@ -9,7 +9,7 @@ from engine.features import integrals as engine_integrals
 from engine.features.integrals import IntegralRegion
 from engine.lattice import Lattice
 from service import interpret
-from service.analyses.common import heading, rows, table_of, told
+from service.analyses.common import OF_SET, heading, rows, table_of, told
 from service.analyses.report import Limits, Report
 from service.problems import at, located
 from service.schemas.analyses import IntegralIn, IntegralsIn
@@ -35,7 +35,7 @@ def integrals(request: IntegralsIn, coefficients: CoefficientSet, limits: Limits
     lattice = coefficients.lattice
     regions = [region(one, lattice, number, request.coordinates) for number, one in enumerate(request.regions)]
     treatment = interpret.treatment(request, lattice)
-    with located():
+    with located(renamed=OF_SET):
         made = engine_integrals.integrals(coefficients, regions, treatment)
     document = heading(
         "integrals",

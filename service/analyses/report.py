@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from numpy.typing import NDArray
@@ -21,12 +21,15 @@ class Limits:
     max_bytes : int
     max_rows : int
         Coefficients of a further set.
+    max_values : int
+        Numbers of a report.
     threads : int
     progress : callable or None
     """
 
     max_bytes: int
     max_rows: int
+    max_values: int
     threads: int = 1
     progress: Progress | None = None
 
@@ -43,8 +46,14 @@ class Report:
         Name and values of each, all of one length: the CSV answer.
     told : tuple of str
         What a reader of the table must know: units, treatment, what an uncertainty contains.
+    figures : dict
+        Single numbers by their names, beside the table.
+    further : tuple of (str, tuple of columns)
+        Other tables of the document, each with what it is of; for the terminal.
     """
 
     document: dict[str, Any]
     table: tuple[Column, ...]
     told: tuple[str, ...]
+    figures: dict[str, Any] = field(default_factory=dict)
+    further: tuple[tuple[str, tuple[Column, ...]], ...] = ()

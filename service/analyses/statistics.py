@@ -8,7 +8,7 @@ from engine.coefficients import CoefficientSet
 from engine.features.distribution import distribution
 from engine.synthesis import Demand
 from service import interpret
-from service.analyses.common import heading, told
+from service.analyses.common import OF_SET, heading, told
 from service.analyses.report import Column, Limits, Report
 from service.problems import located
 from service.schemas.analyses import StatisticsIn
@@ -37,7 +37,7 @@ def statistics(request: StatisticsIn, coefficients: CoefficientSet, limits: Limi
         Pointing to the place in the body.
     """
     treatment = interpret.treatment(request, coefficients.lattice)
-    with located(renamed={"density": ("set", "density"), "samples": ("spacing",)}):
+    with located(renamed={**OF_SET, "samples": ("spacing",)}):
         made = distribution(
             coefficients,
             treatment,
@@ -53,5 +53,6 @@ def statistics(request: StatisticsIn, coefficients: CoefficientSet, limits: Limi
     document |= {name: every[name] for name in NUMBERS}
     document["histogram"] = {"edges": made.edges, "counts": made.counts}
     table: tuple[Column, ...] = (("lower", made.edges[:-1]), ("upper", made.edges[1:]), ("count", made.counts))
-    figures = "; ".join(f"{name.replace('_', ' ')}: {every[name]}" for name in NUMBERS)
-    return Report(document=document, table=table, told=(*told(document), figures))
+    return Report(
+        document=document, table=table, told=told(document), figures={name: document[name] for name in NUMBERS}
+    )

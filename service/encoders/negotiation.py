@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 from service.problems import Problem
 from service.schemas.analyses import ANALYSES
+from service.schemas.films import FILMS
 
 ARRAY_FORMATS = ("json", "npy", "npz")
 ROW_FORMATS = (*ARRAY_FORMATS, "csv")
@@ -45,6 +46,8 @@ def formats_of(product: str) -> tuple[str, ...]:
         return ("json",)
     if product in ANALYSES:
         return REPORT_FORMATS
+    if product in FILMS:
+        return (*REPORT_FORMATS, *PICTURE_FORMATS)
     if product == "series":
         return ROW_FORMATS
     rows = ROW_FORMATS if product in ("profile", "points") else ARRAY_FORMATS

@@ -24,11 +24,18 @@ def _plain(value: object) -> object:
     raise TypeError(f"{type(value).__name__} is not plain data")
 
 
+def report_value(value: object) -> str:
+    """One figure as JSON: null where it does not exist."""
+    return orjson.dumps(value, option=orjson.OPT_SERIALIZE_NUMPY, default=_plain).decode()
+
+
 def report_csv(report: Report) -> bytes:
     """The table, under comment lines that tell what it holds; an empty place is a value that does not exist."""
     buffer = io.StringIO()
     for line in report.told:
         buffer.write(f"# {' '.join(line.split())}\n")
+    for name, value in report.figures.items():
+        buffer.write(f"# {name}: {value if isinstance(value, str) else report_value(value)}\n")
     rows = csv.writer(buffer, lineterminator="\n")
     rows.writerow(name for name, _ in report.table)
     columns = [values.tolist() if isinstance(values, np.ndarray) else values for _, values in report.table]

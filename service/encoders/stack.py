@@ -16,6 +16,32 @@ from service.problems import Problem
 from service.schemas.series import SeriesIn
 from service.settings import Settings
 
+PROFILES_ONLY = "Only profiles of a real scalar field come as CSV; ask for application/x-npz."
+
+
+def require_form(form: str | None, request: SeriesIn, samples: int, settings: Settings) -> None:
+    """Refuse, before any work, a form that cannot hold what is asked for.
+
+    Raises
+    ------
+    Problem
+        As `write_stack`.
+    """
+    if form == "npy" and request.uncertainty:
+        raise Problem("not-acceptable", "A .npy holds one array: ask for application/x-npz, or no uncertainty.")
+    if form == "csv" and request.slice is not None:
+        raise Problem("not-acceptable", PROFILES_ONLY)
+    _require_text(form, samples * (1 + request.uncertainty), settings)
+
+
+def _require_text(form: str | None, numbers: int, settings: Settings) -> None:
+    if form in ("json", "csv") and numbers > settings.max_json_values:
+        raise Problem(
+            "too-costly",
+            f"The answer has {numbers:,} numbers, more than the {settings.max_json_values:,} that are written as "
+            f"{form.upper()}. Ask for application/x-npz.",
+        )
+
 
 def write_stack(made: StackedField, form: str, request: SeriesIn, settings: Settings) -> bytes:
     """The stack as JSON, .npy, .npz or, of profiles, CSV.
@@ -25,13 +51,8 @@ def write_stack(made: StackedField, form: str, request: SeriesIn, settings: Sett
     Problem
         More numbers than are written as text, uncertainties in a .npy, or CSV of slices.
     """
-    numbers = made.values.size * (2 if made.sigma is not None else 1)
-    if form in ("json", "csv") and numbers > settings.max_json_values:
-        raise Problem(
-            "too-costly",
-            f"The answer has {numbers:,} numbers, more than the {settings.max_json_values:,} that are written as "
-            f"{form.upper()}. Ask for application/x-npz.",
-        )
+    parts = (2 if made.values.dtype.kind == "c" else 1) + (made.sigma is not None)
+    _require_text(form, made.values.size * parts, settings)
     if form == "npy":
         if made.sigma is not None:
             raise Problem("not-acceptable", "A .npy holds one array: ask for application/x-npz, or no uncertainty.")
@@ -97,7 +118,7 @@ def _npz(made: StackedField, told: dict[str, Any]) -> bytes:
 def _csv(made: StackedField, told: dict[str, Any]) -> bytes:
     """One row a sample, one column a member (and one for its uncertainty)."""
     if made.values.ndim != 2 or made.values.dtype.kind == "c":
-        raise Problem("not-acceptable", "Only profiles of a real scalar field come as CSV; ask for application/x-npz.")
+        raise Problem("not-acceptable", PROFILES_ONLY)
     columns = [made.axes[0].coordinates()]
     names = ["distance_angstrom"]
     for number, row in enumerate(made.values):

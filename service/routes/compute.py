@@ -26,7 +26,12 @@ GONE = 499
 """Status logged for a client that went away before its answer; nobody reads it."""
 
 
-ADDRESSES = {**{product: f"/{product}" for product in (*PRODUCTS, SERIES, *ANALYSES)}, INSPECT: "/sets/inspect"}
+FILM_ADDRESSES = {"film": "/films/analysis", "film_run": "/films/run"}
+ADDRESSES = {
+    **{product: f"/{product}" for product in (*PRODUCTS, SERIES, *ANALYSES)},
+    **FILM_ADDRESSES,
+    INSPECT: "/sets/inspect",
+}
 
 
 def router(pool: Pool, settings: Settings) -> APIRouter:

@@ -17,8 +17,8 @@ class RelativeScaleIn(Strict):
     too, by least squares on the common amplitudes."""
 
     kind: Literal["as_given", "given", "fitted"]
-    k: float | None = Field(None, gt=0)
-    k_sigma: float | None = Field(None, ge=0, description="standard uncertainty of k")
+    k: float | None = Field(None, gt=0, le=1e30)
+    k_sigma: float | None = Field(None, ge=0, description="standard uncertainty of k, at most k")
     b: float | None = Field(None, description="Å²")
     displacement: bool = False
     robust: bool = Field(False, description="bound the pull of outliers on the fit")

@@ -19,8 +19,8 @@ class UnmeasuredIn(Strict):
     |n_G|."""
 
     formula: str | None = Field(None, max_length=1000, description="composition of a formula unit, such as SiO2")
-    units: float = Field(1.0, gt=0, description="formula units in the cell")
-    amplitude: float | None = Field(None, gt=0, description="of the bound at s = 0, in the density's unit")
+    units: float = Field(1.0, gt=0, le=1e6, description="formula units in the cell")
+    amplitude: float | None = Field(None, gt=0, le=1e30, description="of the bound at s = 0, in the density's unit")
     b: float = Field(gt=0, description="B of exp(−B s²), s = |G|/4π, Å²")
     d_stop: float | None = Field(None, gt=0, description="spacing down to which terms are listed, Å; the rest is added")
 

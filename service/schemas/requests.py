@@ -9,6 +9,7 @@ from pydantic import Field
 from service.schemas.analyses import ANALYSES
 from service.schemas.base import Strict
 from service.schemas.coefficient_set import ReflectionSetIn
+from service.schemas.films import FILMS, FilmTaskIn
 from service.schemas.products import PRODUCTS
 from service.schemas.series import SeriesIn
 from service.schemas.treatment import SetRequestIn
@@ -25,10 +26,11 @@ class InspectIn(Strict):
 
 
 SERIES = "series"
-Request = SetRequestIn | InspectIn
-REQUESTS: dict[str, type[SetRequestIn] | type[InspectIn]] = {
+Request = SetRequestIn | FilmTaskIn | InspectIn
+REQUESTS: dict[str, type[SetRequestIn] | type[FilmTaskIn] | type[InspectIn]] = {
     **PRODUCTS,
     SERIES: SeriesIn,
     **ANALYSES,
+    **FILMS,
     INSPECT: InspectIn,
 }

@@ -112,6 +112,11 @@ def test_the_image_is_pixels_inside_the_svg_with_the_end_colours_in_it():
     root = parsed(svg)
     images = list(root.iter(f"{SVG}image"))
     assert len(images) == 2
+    # The image ends where the samples end, at the frame: cut by its corners, not by a box.
+    (holder,) = [element for element in root.iter() if images[0] in list(element)]
+    cut = holder.get("clip-path")[5:-1]
+    (corners,) = [paths(element) for element in root.iter(f"{SVG}clipPath") if element.get("id") == cut]
+    np.testing.assert_allclose(corners[0][:4], frame(root), atol=1e-3)
     assert len(svg) < 600_000
     pixels = imread(io.BytesIO(base64.b64decode(images[0].get(XLINK).split(",")[1])))
     seen = pixels[pixels[..., 3] == 1][:, :3]
