@@ -1,13 +1,20 @@
-"""Print the figures: ``python -m tests.benchmarks [accuracy|grids|slices|http …]``, all by default."""
+"""Print the figures: ``python -m tests.benchmarks [accuracy|grids|slices|sigma|signs|http …]``, all by default."""
 
 from __future__ import annotations
 
 import sys
 
-from tests.benchmarks import accuracy, grids, http, slices
+from tests.benchmarks import accuracy, grids, http, sigma, signs, slices
 from tests.benchmarks.machine import describe
 
-PARTS = {"accuracy": accuracy.main, "grids": grids.main, "slices": slices.main, "http": http.main}
+PARTS = {
+    "accuracy": accuracy.main,
+    "grids": grids.main,
+    "slices": slices.main,
+    "sigma": sigma.main,
+    "signs": signs.main,
+    "http": http.main,
+}
 
 
 def main() -> None:

@@ -539,6 +539,8 @@ def test_a_limit_is_kept_to_the_byte(field):
     work = fits(high)
     assert work.bytes <= 1.02 * high
     assert high <= 1.02 * work.bytes
+    # What the whole request is costed at holds the values too.
+    assert prepare(made, where, treatment, uncertainty=True).bytes >= work.bytes + 8 * int(np.prod(work.shape))
     sigma = perform_sigma(work, np.zeros(work.shape))
     np.testing.assert_allclose(
         sigma.values,
