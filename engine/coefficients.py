@@ -137,6 +137,9 @@ class CoefficientSet:
         Covariances in the complex plane, where they are known better than ``sigma`` and
         ``phase_sigma`` can tell: those of a combination of sets. ``sigma``, ``phase_sigma`` and ``merit``
         then describe, and uncertainties are made from these.
+    common_errors : complex128, shape (N, E), or None
+        Displacements of all coefficients by one standard deviation of each of E further errors, independent
+        of each other and of those of the measurements: those of the scales of combined sets.
     """
 
     lattice: Lattice
@@ -153,6 +156,7 @@ class CoefficientSet:
     group: Group | None = None
     scale_sigma: float = 0.0
     plane_errors: PlaneErrors | None = None
+    common_errors: ComplexArray | None = None
 
     @property
     def count(self) -> int:
@@ -183,6 +187,7 @@ class CoefficientSet:
             phase_sigma=part(self.phase_sigma),
             merit=part(self.merit),
             plane_errors=None if self.plane_errors is None else self.plane_errors.select(kept),
+            common_errors=None if self.common_errors is None else self.common_errors[kept],
         )
 
     def within(self, *, d_min: float | None = None, d_max: float | None = None) -> CoefficientSet:

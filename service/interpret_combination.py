@@ -10,7 +10,17 @@ from typing import Literal
 import numpy as np
 
 from engine.coefficients import CoefficientSet
-from engine.combination import AS_GIVEN, Combined, ScaleChoice, average, difference, fitted_scale, given_scale
+from engine.combination import (
+    AS_GIVEN,
+    Combined,
+    ScaleChoice,
+    average,
+    difference,
+    fitted_scale,
+    given_scale,
+    with_scale_errors,
+)
+from engine.combination.modes import SCALES_APART
 from engine.errors import InputError, TransformError
 from engine.fields import STEEPEST
 from service.interpret_set import one_set
@@ -150,5 +160,6 @@ def scale_choice(asked: RelativeScaleIn, sets: Sequence[CoefficientSet]) -> Scal
 
 def _told(made: Combined, *more: str) -> CoefficientSet:
     """The combined set with all that is to be known of it in its history."""
-    result = made.coefficients
-    return replace(result, history=(*result.history, *more, *made.notes))
+    result = with_scale_errors(made.coefficients, made.scale_modes)
+    notes = [note for note in made.notes if note != SCALES_APART]
+    return replace(result, history=(*result.history, *more, *notes))

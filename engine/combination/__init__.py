@@ -16,7 +16,7 @@ from engine.combination.average import Averaged, average
 from engine.combination.build import Combined
 from engine.combination.combine import combination, difference
 from engine.combination.matching import CELL_TOLERANCE, Matched, common_group, match
-from engine.combination.modes import scale_sigma_of
+from engine.combination.modes import scale_sigma_of, with_scale_errors
 from engine.combination.scales import AS_GIVEN, Scale, ScaleChoice, find_scale, fitted_scale, given_scale
 from engine.combination.series import Aligned, Variable, aligned
 from engine.combination.stack import StackedField, evaluate_stack
@@ -43,4 +43,5 @@ __all__ = [
     "given_scale",
     "match",
     "scale_sigma_of",
+    "with_scale_errors",
 ]

@@ -20,7 +20,7 @@ from engine.combination.linear import (
     words_of_amplitudes,
 )
 from engine.combination.matching import CELL_TOLERANCE, check_alike, common_group, keys_of, positions_in
-from engine.combination.modes import SCALES_OMITTED, scale_modes
+from engine.combination.modes import SCALES_APART, SCALES_OMITTED, scale_modes
 from engine.combination.scales import Scale
 from engine.errors import InputError
 from engine.symmetry.group import Group
@@ -287,5 +287,5 @@ def _notes(
             "come out at about half their height"
         )
     if modes:
-        made.append("the uncertainty of the scales is not in the errors of the coefficients; the scale modes carry it")
+        made.append(SCALES_APART)
     return made

@@ -23,6 +23,7 @@ from engine.synthesis import Demand
 
 SCALES_OMITTED = "the uncertainty of the scales of the sets to each other"
 """What the errors of coefficients leave to the modes."""
+SCALES_APART = "the uncertainty of the scales is not in the errors of the coefficients; the scale modes carry it"
 
 
 def scale_modes(
@@ -56,6 +57,24 @@ def scale_modes(
     return tuple(
         replace(result, values=one, sigma=None, phase_sigma=None, plane_errors=None, scale_sigma=0.0) for one in moved
     )
+
+
+def with_scale_errors(result: CoefficientSet, modes: Sequence[CoefficientSet]) -> CoefficientSet:
+    """A combined set whose uncertainties contain those of the scales.
+
+    Parameters
+    ----------
+    modes : sequence of CoefficientSet
+        Such as `Combined.scale_modes`, with the indices of the result.
+    """
+    if not modes:
+        return result
+    errors = result.plane_errors
+    if errors is not None:
+        left = tuple(one for one in errors.omits if one != SCALES_OMITTED)
+        errors = replace(errors, omits=left)
+    shared = np.stack([mode.values for mode in modes], axis=1)
+    return replace(result, plane_errors=errors, common_errors=shared)
 
 
 def scale_sigma_of(

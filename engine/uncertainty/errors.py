@@ -37,6 +37,9 @@ from engine.phases.concentration import concentration_of_merit
 from engine.symmetry.reflections import classify, orbits
 
 
+COMMON = "the scales of the sets to each other, each common to all coefficients"
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Errors:
     """Independent errors of the coefficients that are summed, those of one measurement side by side.
@@ -67,6 +70,8 @@ class Errors:
         Relative standard uncertainty of the scale that all values but ``fixed`` share.
     fixed : complex
         What of the zero term does not depend on that scale.
+    common : complex128, shape (N, E)
+        Displacements by one standard deviation of each error common to all coefficients.
     contains, omits : tuple of str
         What is in an uncertainty made from these errors, and what is not.
     """
@@ -84,6 +89,7 @@ class Errors:
     starts: IntArray
     scale: float
     fixed: complex
+    common: ComplexArray
     contains: tuple[str, ...]
     omits: tuple[str, ...]
 
@@ -113,7 +119,7 @@ def errors_of(used: CoefficientSet) -> Errors:
     InputError
         The set has neither σ's nor phase σ's nor figures of merit nor a σ of its scale.
     """
-    columns = (used.sigma, used.phase_sigma, used.merit, used.plane_errors)
+    columns = (used.sigma, used.phase_sigma, used.merit, used.plane_errors, used.common_errors)
     if all(one is None for one in columns) and not used.scale_sigma:
         raise InputError("sigma", "is absent, and no other uncertainty is given", "give the column sigma")
     related = _related(used)
@@ -142,6 +148,7 @@ def errors_of(used: CoefficientSet) -> Errors:
         starts=starts,
         scale=used.scale_sigma,
         fixed=fixed,
+        common=np.zeros((used.count, 0), np.complex128) if used.common_errors is None else used.common_errors[order],
         contains=_contains(used, starts.size),
         omits=_omits(used),
     )
@@ -245,6 +252,8 @@ def _deviations(used: CoefficientSet, amplitude: FloatArray, centric: BoolArray)
 
 def _contains(used: CoefficientSet, count: int) -> tuple[str, ...]:
     found = list(_kinds(used))
+    if used.common_errors is not None and used.common_errors.shape[1]:
+        found.append(COMMON)
     if used.scale_sigma:
         found.append(f"the scale, {100 * used.scale_sigma:.3g} %, common to all coefficients")
     if used.group is None:

@@ -103,11 +103,13 @@ def covariance(
     blocks = count // size
     total: FloatArray = np.zeros((blocks, size, size))
     scaled = np.zeros(count)
+    shared = np.zeros((count, errors.common.shape[1]))
     weight = np.where(errors.indices.any(axis=1), 2.0, 1.0)
     if factors is not None:
         weight = weight * factors
     along, across = weight * errors.spread(), weight * errors.turned()
     values = weight * errors.values
+    shares = weight[:, None] * errors.common
     sideways = bool(errors.across.any())
     for part, starts in _runs(errors, max(1, CHUNK // max(count, 1))):
         made = functional.factors(errors.lattice, errors.indices[part])
@@ -116,6 +118,7 @@ def covariance(
             moved = np.add.reduceat((made * strengths[part]).real, starts, axis=1).reshape(blocks, size, -1)
             total += np.matmul(moved, moved.transpose(0, 2, 1))
         scaled += (made @ values[part]).real
+        shared += (made @ shares[part]).real
     if errors.scale:
         fixed = np.zeros(count)
         if errors.fixed:
@@ -124,6 +127,8 @@ def covariance(
             fixed = factor * (functional.factors(errors.lattice, zero)[:, 0] * errors.fixed).real
         common = (errors.scale * (scaled - fixed)).reshape(blocks, size)
         total += common[:, :, None] * common[:, None, :]
+    together = shared.reshape(blocks, size, -1)
+    total += np.matmul(together, together.transpose(0, 2, 1))
     return total if block else np.asarray(total[0])
 
 

@@ -63,6 +63,8 @@ class SigmaWork:
         Of the components themselves, where their direction is needed.
     nominal : Plan or None
         Of what a common scale multiplies, where the field's values are not that: an exact self term is in them.
+    common : tuple of tuples of Plan
+        Of each error common to all coefficients, what one standard deviation of it does to each component.
     zero_factor : float
         What the zero term is multiplied by in the field.
     shape : tuple of int
@@ -75,6 +77,7 @@ class SigmaWork:
     plans: tuple[Plan, ...]
     gradient: tuple[Plan, ...]
     nominal: Plan | None
+    common: tuple[tuple[Plan, ...], ...]
     zero_factor: float
     shape: tuple[int, ...]
     dtype: np.dtype[np.generic]
@@ -92,7 +95,8 @@ class SigmaWork:
 
     @property
     def _all(self) -> tuple[Plan, ...]:
-        return (*self.plans, *self.gradient, *(() if self.nominal is None else (self.nominal,)))
+        shared = tuple(one for every in self.common for one in every)
+        return (*self.plans, *self.gradient, *shared, *(() if self.nominal is None else (self.nominal,)))
 
 
 def prepare_sigma(
@@ -133,7 +137,7 @@ def prepare_sigma(
     # A vector is summed by way of each component, a length by way of all of them and a covariance.
     arrays = count + 1 if magnitude else int(vector)
     with_nominal = bool(errors.scale and treatment.self_term)
-    arrays += with_nominal
+    arrays += with_nominal + (2 if errors.common.shape[1] else 0)
     beside = arrays * samples * dtype.itemsize
     strengths = [_strengths(errors, one) for one in factors]
     kinds = len(strengths[0])
@@ -155,12 +159,20 @@ def prepare_sigma(
         plan(Series(errors.lattice, errors.indices, errors.values * one, errors.real), sampling, demand, max_bytes=room)
         for one in (factors if magnitude or with_nominal else ())
     )
+    common = tuple(
+        tuple(
+            plan(Series(errors.lattice, errors.indices, moved * one, errors.real), sampling, demand, max_bytes=room)
+            for one in factors
+        )
+        for moved in errors.common.T
+    )
     at_zero = ~errors.indices.any(axis=1)
     return SigmaWork(
         errors=errors,
         plans=plans,
         gradient=themselves if magnitude else (),
         nominal=themselves[0] if with_nominal else None,
+        common=common,
         zero_factor=float(factors[0][at_zero].real.sum()),
         shape=shape,
         dtype=dtype,
@@ -185,6 +197,10 @@ def perform_sigma(work: SigmaWork, field_values: AnyArray, *, progress: Progress
             fill(one.prepare(), target, threads=one.demand.threads, progress=progress)
             if target is not out:
                 out[..., number] = target
+        for every in work.common:
+            for number, one in enumerate(every):
+                moved = _filled(one)
+                (out[..., number] if out.shape != one.sampling.shape else out)[...] += np.abs(moved) ** 2
     if work.nominal is not None:
         field_values = np.empty(work.shape, dtype=work.dtype)
         fill(work.nominal.prepare(), field_values, threads=work.nominal.demand.threads)
@@ -242,6 +258,7 @@ def _squares(coefficients: CoefficientSet) -> CoefficientSet:
         merit=None,
         scale_sigma=2 * coefficients.scale_sigma,
         plane_errors=errors,
+        common_errors=None,
     )
 
 
@@ -263,6 +280,18 @@ def _length_variance(work: SigmaWork, out: AnyArray) -> None:
         out += (1 if i == j else 2) * components[i] * components[j] * covariance
         if i == j:
             out[still] += covariance[still] / count
+    for every in work.common:
+        along = np.zeros(work.shape, dtype=work.dtype)
+        for direction, one in zip(components, every, strict=True):
+            along += direction * _filled(one)
+        out += along**2
+
+
+def _filled(one: Plan) -> AnyArray:
+    """The values of a plan."""
+    made = np.empty(one.sampling.shape, dtype=result_dtype(one.series.real, one.demand.precision))
+    fill(one.prepare(), made, threads=one.demand.threads)
+    return made
 
 
 def _finish(variance: AnyArray, values: AnyArray, work: SigmaWork) -> tuple[float, float, float]:

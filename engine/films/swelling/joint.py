@@ -101,7 +101,7 @@ def joint_signs(
     transform = LayerTransform(
         thickness=limit,
         value=values[0],
-        covariance=layer + 0 * (apart.T * shares) @ apart,
+        covariance=layer + (apart.T * shares) @ apart / shares.sum(),
         largest=float(seen.q[-1]),
     )
     relative = np.concatenate([[0.0], np.sqrt(excess * np.diag(covariance)[nodes:])]) if free else np.zeros(seen.sets)

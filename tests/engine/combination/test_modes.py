@@ -8,8 +8,9 @@ import numpy as np
 import pytest
 
 from engine import Treatment, evaluate
-from engine.combination import AS_GIVEN, difference, fitted_scale, given_scale, scale_sigma_of
+from engine.combination import AS_GIVEN, difference, fitted_scale, given_scale, scale_sigma_of, with_scale_errors
 from engine.sampling import FreePoints
+from engine.uncertainty import PointDerivatives, covariance, errors_of
 from tests.engine.combination.crystals import random_set
 from tests.strategies import refusal_of
 
@@ -85,3 +86,23 @@ def test_refusals():
         fault = refusal_of(lambda field=field: scale_sigma_of(made.scale_modes, POINTS, Treatment(field=field)))
         assert fault.path == ("field",)
     assert difference(first, first, scale=AS_GIVEN).scale_modes == ()
+
+
+@pytest.mark.parametrize("field", ["density", "gradient", "laplacian"])
+def test_sets_with_scale_errors_have_them_in_every_uncertainty(field):
+    """σ² with the scales is σ² without them and the squares of the modes, on samples and of linear numbers."""
+    first, second = random_set(seed=1), random_set(seed=2)
+    made = difference(first, second, scale=given_scale(1.3, k_sigma=0.2, b=0.1))
+    whole = with_scale_errors(made.coefficients, made.scale_modes)
+    treatment = Treatment(field=field)
+    alone = evaluate(made.coefficients, POINTS, treatment, uncertainty=True).sigma
+    found = evaluate(whole, POINTS, treatment, uncertainty=True).sigma
+    modes = scale_sigma_of(made.scale_modes, POINTS, treatment)
+    np.testing.assert_allclose(found.values**2, alone.values**2 + modes**2, rtol=1e-6)
+    assert any("scales of the sets" in words for words in found.contains)
+    assert not any("scales of the sets" in words for words in found.omits)
+    if field == "density":
+        errors = errors_of(whole)
+        at_points = covariance(errors, PointDerivatives(POINTS.fractional))
+        np.testing.assert_allclose(np.sqrt(np.diag(at_points)), found.values, rtol=1e-6)
+    assert with_scale_errors(made.coefficients, ()) is made.coefficients

@@ -100,3 +100,11 @@ def test_half_a_period_below_the_first_order_is_no_order():
     q = np.array([0.02, 0.1, 0.2])
     rows = number(np.array([10.0]), q, np.zeros(3, dtype=np.int64), errors_of(np.full(3, 1e-3)))
     assert rows.tolist() == [[0, 1, 2]]
+
+
+def test_orders_carried_never_stand_out_of_sequence_with_those_found():
+    """A spacing of 0.1 makes 0.3 order 3, which cannot follow 0.2 as order 5; one of 0.04 numbers all three."""
+    q = np.array([0.1, 0.2, 0.3])
+    rows = number(np.array([10.0, 25.0]), q, np.array([0, 5, 0]), errors_of(np.full(3, 0.02)))
+    assert rows.size
+    assert all((np.diff(row[row > 0]) > 0).all() for row in rows)

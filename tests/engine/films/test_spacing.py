@@ -221,6 +221,9 @@ def test_what_cannot_be_refined_is_refused(scan, orders, more, reason):
 def test_a_refinement_that_goes_astray_is_refused():
     with pytest.raises(InputError, match="fit no period"):
         fit_spacing(scan_of([10.0, 11.0, 150.0, 151.0]), [1, 30, 31, 32], zero_shift=True, displacement=True)
+    # A zero shift of ten degrees would explain these, with a period four times that of any line.
+    with pytest.raises(InputError, match="fit no period"):
+        fit_spacing(scan_of([10.0, 11.0, 12.0, 13.0]), [1, 30, 31, 32], zero_shift=True)
 
 
 def test_an_order_that_a_negative_density_holds_back_has_no_line():

@@ -62,6 +62,29 @@ def test_turning_signs_mends_a_beam_that_is_too_narrow():
     assert right > greedy
 
 
+def test_neighbours_differ_in_one_sign_or_two():
+    made = beam._neighbours(np.array([[1, 1, -1, 1]]), np.array([0, 2, 3]))
+    assert sorted(made.tolist()) == sorted(
+        [[-1, 1, -1, 1], [1, 1, 1, 1], [1, 1, -1, -1], [-1, 1, 1, 1], [-1, 1, -1, -1], [1, 1, 1, -1]]
+    )
+
+
+def test_signs_are_given_from_the_strongest_order_on(monkeypatch):
+    stack, _ = problem(6, 3, EVERYTHING)
+    seen = []
+
+    def recorded(part, criteria, build=beam.build_terms):
+        seen.append(set(part.order.tolist()))
+        return build(part, criteria)
+
+    monkeypatch.setattr(beam, "build_terms", recorded)
+    given = np.zeros(6, dtype=np.int64)
+    given[1] = 1
+    beam.search(stack, EVERYTHING, given, best=1, width=4)
+    others = [l for l in stack.order[np.argsort(-stack.amplitude)].tolist() if l != 2]
+    assert seen[:5] == [{2, *others[: k + 1]} for k in range(5)]
+
+
 def test_many_orders_fit_in_little_memory():
     stack, _ = problem(40, 3, SHAPE)
     assert beam.work_bytes(stack, 40, 2048, 10) < 400 * 2**20

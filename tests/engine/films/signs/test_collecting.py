@@ -17,6 +17,13 @@ def test_the_best_are_those_of_a_sort_however_they_come():
     assert Best(3).worst == np.inf
 
 
+def test_of_equal_scores_the_lower_codes_stay():
+    best = Best(2)
+    for code in (5, 3, 4, 1):
+        best.add(np.array([code]), np.array([7.0]))
+    assert best.codes.tolist() == [1, 3]
+
+
 def test_sums_do_not_depend_on_when_the_best_is_met():
     generator = np.random.default_rng(3)
     scores = generator.normal(size=(4, 8)) * 900

@@ -194,6 +194,8 @@ def test_orders_with_a_common_factor_are_those_of_a_shorter_period():
     assert any("multiples of 2" in line for line in long.words)
     np.testing.assert_array_equal(long.signs, short.signs)
     np.testing.assert_array_equal(long.equivalent, short.equivalent)
+    np.testing.assert_allclose(long.parts, short.parts, rtol=1e-9)
+    assert long.z[-1] == pytest.approx(21.0)
     assert long.order.tolist() == [2, 4, 6, 8]
 
 

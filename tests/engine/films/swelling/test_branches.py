@@ -7,7 +7,7 @@ import itertools
 import numpy as np
 import pytest
 
-from engine.films.swelling.branches import alternatives, branch, neighbours, whitened
+from engine.films.swelling.branches import MOST_INTERVALS, alternatives, branch, neighbours, whitened
 from engine.films.swelling.observations import gather
 from tests.engine.films.swelling.invented import layer, read
 
@@ -68,6 +68,16 @@ def test_neighbours_reverse_runs():
     } - {tuple(-signs)}
     assert {tuple(row) for row in made} == expected
     np.testing.assert_allclose(misfit, np.sum((made @ root.T) ** 2, axis=1))
+
+
+def test_of_many_orders_short_runs_and_all_that_reach_the_end_are_tried():
+    count = 150
+    made, _ = neighbours(np.eye(count), np.ones(count))
+    first, length = (made < 0).argmax(axis=1), (made < 0).sum(axis=1)
+    longest = MOST_INTERVALS // count
+    assert set(first[first + length == count]) == set(range(1, count))
+    assert length[first + length < count].max() == longest
+    assert len(made) < 1.1 * MOST_INTERVALS
 
 
 def test_alternatives_keep_the_best_and_one_for_each_order():
