@@ -27,7 +27,7 @@ from service.encoders.stack import write_stack
 from service.parts import Part
 from service.problems import Problem, at
 from service.schemas.coefficient_set import CoefficientSetIn, ReflectionSetIn
-from service.schemas.films import FilmTaskIn
+from service.schemas.films import FilmRequestIn
 from service.schemas.products import ProductIn
 from service.schemas.requests import INSPECT, InspectIn
 from service.schemas.series import SeriesIn
@@ -148,7 +148,7 @@ def _run(options: argparse.Namespace) -> int:
     if isinstance(request, InspectIn):
         raise ValueError(f"{options.request.name} asks for an inspection: use densityloom inspect")
     form = _form(product, options.out)
-    if isinstance(request, FilmTaskIn):
+    if isinstance(request, FilmRequestIn):
         return _film(request, form, options, settings)
     if isinstance(request, SeriesIn):
         return _series(request, form, options, settings)
@@ -186,7 +186,7 @@ def _analyse(
     return 0
 
 
-def _film(request: FilmTaskIn, form: str | None, options: argparse.Namespace, settings: Settings) -> int:
+def _film(request: FilmRequestIn, form: str | None, options: argparse.Namespace, settings: Settings) -> int:
     with tqdm(desc="films", delay=SILENT_SECONDS, leave=False) as bar:
 
         def progress(done: int, total: int) -> None:

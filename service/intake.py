@@ -29,7 +29,7 @@ from service.forms import split
 from service.parts import Part
 from service.problems import Problem, at, from_validation
 from service.schemas.coefficient_set import COLUMN_NAMES
-from service.schemas.films import FILMS, SCAN_COLUMNS
+from service.schemas.films import SCAN_COLUMNS, SCANS
 from service.schemas.requests import INSPECT, REQUESTS, Request
 
 JSON = "application/json"
@@ -124,9 +124,9 @@ def check(
             name: files[prefix + name] for name in ("reflections", "reference") if prefix + name in files
         }
         table = files.get(f"{prefix}columns")
-        place = _place(prefix, document) if product not in FILMS else ("scan",)
+        place = _place(prefix, document) if product not in SCANS else ("scan",)
         if table is not None:
-            names = COLUMN_NAMES if product not in FILMS else SCAN_COLUMNS
+            names = COLUMN_NAMES if product not in SCANS else SCAN_COLUMNS
             part = f"{prefix}columns"
             found |= columns(table, max_body_bytes=max_body_bytes, part=part, place=place, names=names)
         if found:

@@ -15,8 +15,9 @@ from service.parts import Part
 from service.problems import MEDIA_TYPE as PROBLEM
 from service.problems import TITLES
 from service.schemas.answers import Answer, ProblemDocument, StackAnswer
+from service.schemas.film_models import MODELS
 from service.schemas.film_reports import FILM_REPORTS
-from service.schemas.films import FILMS
+from service.schemas.films import SCANS
 from service.schemas.reports import REPORTS
 from service.schemas.requests import INSPECT, REQUESTS, SERIES
 from service.schemas.summary import SummaryAnswer
@@ -37,6 +38,8 @@ SUMMARIES = {
     "compare": "Agreement of two densities on one cell",
     "film": "A film from a scan's order table to its layer profile and layer table",
     "film_run": "Films along a run, each analysed alike",
+    "film_swelling": "Signs of one layer from several periods, with its continuous transform",
+    "film_trial": "A trial stack against measured amplitudes",
     INSPECT: "Summary of a file of reflections",
 }
 
@@ -102,6 +105,30 @@ _FILM_TASK = {
     "corrections": [{"kind": "lorentz", "geometry": "film_part_of_arc"}, {"kind": "polarisation"}],
     "phases": {"criteria": {"least_structure": {}}},
 }
+_TRIAL = {
+    "orders": {
+        "period": 15.0,
+        "order": [1, 2, 3, 4, 5],
+        "amplitude": [4.1, 3.3, 0.6, 1.7, 1.1],
+        "sigma": [0.1, 0.1, 0.1, 0.1, 0.1],
+        "absolute": True,
+        "unit": "e/Å³",
+    },
+    "parts": [
+        {"kind": "plane", "name": "metal", "position": 0.0, "strength": 3.0, "width": 0.3},
+        {"kind": "plane", "name": "oxygen", "position": 2.2, "strength": 1.6, "width": 0.4},
+    ],
+    "background": 0.2,
+    "refine": ["metal.strength", "oxygen.position"],
+}
+_SWELLING = {
+    "sets": [
+        {"period": 16.0, "order": [1, 2, 3, 4], "amplitude": [5.2, 2.1, 0.7, 1.6], "sigma": [0.1, 0.1, 0.1, 0.1]},
+        {"period": 18.5, "order": [1, 2, 3, 4], "amplitude": [5.6, 3.1, 0.5, 0.9], "sigma": [0.1, 0.1, 0.1, 0.1]},
+        {"period": 21.0, "order": [1, 2, 3, 4], "amplitude": [5.9, 3.8, 1.5, 0.3], "sigma": [0.1, 0.1, 0.1, 0.1]},
+    ],
+    "orientation": {"kind": "excess", "sign": "positive"},
+}
 EXAMPLES: dict[str, dict[str, Any]] = {
     "profile": {"set": _FILM, "from": [0], "to": [1], "samples": 128},
     "slice": {"set": _CRYSTAL, "plane": [0, 0, 1], "offset": 4.35, "width": 12, "height": 12, "spacing": 0.1},
@@ -142,6 +169,8 @@ EXAMPLES: dict[str, dict[str, Any]] = {
         ],
         **_FILM_TASK,
     },
+    "film_swelling": _SWELLING,
+    "film_trial": _TRIAL,
 }
 
 
@@ -180,7 +209,11 @@ def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
         "request": {"contentType": JSON},
         **{name: {"contentType": ", ".join(FILE_TYPES)} for name in named},
     }
-    if product in FILMS:
+    if product in MODELS:
+        return {
+            JSON: {"schema": schema, "examples": {"small": {"summary": "A small film", "value": EXAMPLES[product]}}}
+        }
+    if product in SCANS:
         form = {"type": "object", "required": ["request"], "properties": {"request": request, "columns": binary}}
         return {
             JSON: {"schema": schema, "examples": {"small": {"summary": "A small film", "value": EXAMPLES[product]}}},

@@ -28,8 +28,11 @@ from service.encoders.stack import write_stack
 from service.encoders.summary import summary_document
 from service.encoders.write import Wanted, write
 from service.films.run import film, film_picture, film_run, film_run_picture
+from service.films.swelling import swelling
+from service.films.trial import trial
 from service.problems import Problem, at, located
-from service.schemas.films import FilmIn, FilmRunIn, FilmTaskIn
+from service.schemas.film_models import SwellingIn, TrialIn
+from service.schemas.films import FilmIn, FilmRequestIn, FilmRunIn
 from service.schemas.products import DrawnIn, ProductIn, UnmeasuredIn
 from service.schemas.requests import InspectIn, Request
 from service.schemas.series import SeriesIn
@@ -205,7 +208,7 @@ def analyse(
     return analysis(product, request, coefficients, limits)
 
 
-def film_answer(request: FilmTaskIn, form: str, settings: Settings, *, threads: int) -> bytes:
+def film_answer(request: FilmRequestIn, form: str, settings: Settings, *, threads: int) -> bytes:
     """A film or a run of films in the form asked for.
 
     Raises
@@ -223,11 +226,17 @@ def film_answer(request: FilmTaskIn, form: str, settings: Settings, *, threads: 
     return report_json(report) if form == "json" else report_csv(report)
 
 
-def film_report(request: FilmTaskIn, settings: Settings, *, threads: int, progress: Progress | None = None) -> Report:
+def film_report(
+    request: FilmRequestIn, settings: Settings, *, threads: int, progress: Progress | None = None
+) -> Report:
     """The report of a film or of a run of films; raises as `film_answer`."""
     limits = _limits(settings, threads, progress)
     if isinstance(request, FilmRunIn):
         return film_run(request, limits)
+    if isinstance(request, SwellingIn):
+        return swelling(request, limits)
+    if isinstance(request, TrialIn):
+        return trial(request, limits)
     return film(cast("FilmIn", request), limits)
 
 
@@ -258,7 +267,7 @@ def answer(
         run(product, request, form, spool, settings, threads=threads)
     elif isinstance(request, SeriesIn):
         spool.append(write_stack(stacks.stack(request, settings, form, threads=threads), form, request, settings))
-    elif isinstance(request, FilmTaskIn):
+    elif isinstance(request, FilmRequestIn):
         spool.append(film_answer(request, form, settings, threads=threads))
     else:
         report = analyse(product, request, settings, threads=threads)

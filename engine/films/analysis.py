@@ -29,7 +29,7 @@ from engine.films.orders import FilmOrders
 from engine.films.scale import FilmScale, density_at, scale_by_facts
 from engine.films.scaled_signs import rank_scaled
 from engine.films.scans import Scan
-from engine.films.signs import Criteria, RankedSigns, rank_signs
+from engine.films.signs import DECISIVE, Criteria, RankedSigns, rank_signs
 from engine.films.spacing import Spacing, fit_spacing
 from engine.films.widths import WidthComparison, compare_widths
 from engine.resolution.change import Change, perform_change, prepare_change
@@ -140,7 +140,7 @@ class FilmTask:
     criteria: Criteria | None = None
     fixed: Mapping[int, int] = field(default_factory=dict)
     rank: int = 0
-    decisive: float = 9.0
+    decisive: float = DECISIVE
     facts: tuple[Fact, ...] = ()
     content: Content | None = None
     unit: str = "arbitrary"

@@ -110,6 +110,11 @@ def _require_values(numbers: int, place: str, limits: Limits) -> None:
         )
 
 
+def _ball(radius: float, dimension: int) -> float:
+    """Å, Å² or Å³."""
+    return {1: 2 * radius, 2: math.pi * radius**2, 3: 4 / 3 * math.pi * radius**3}[dimension]
+
+
 def _flat(records: list[dict[str, Any]], without: tuple[str, ...] = ()) -> tuple[Column, ...]:
     names = [name for name in (records[0] if records else ()) if name not in without]
     columns = {name: [record[name] for record in records] for name in names}
@@ -169,6 +174,10 @@ def _distances(request: ExtremaIn, made: Extrema, limits: Limits) -> list[dict[s
         with located(renamed={"pairs": ("distances",)}):
             found += _listed(distances(made, numbers - 1))
     if request.within is not None:
+        # Refused before they are looked for: about as many as the cell holds, times the cells in a ball.
+        per_volume = made.multiplicity.sum() / made.coefficients.lattice.volume
+        expected = made.count * per_volume * _ball(request.within, made.fractional.shape[1])
+        _require_values(int(min(expected / 2, 1e18)), "within", limits)
         with located(renamed={"cutoff": ("within",)}):
             near = neighbours(made, request.within)
         _require_values(near.value.size * (5 + near.vector.shape[1]), "within", limits)

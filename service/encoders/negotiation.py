@@ -6,7 +6,8 @@ from dataclasses import dataclass
 
 from service.problems import Problem
 from service.schemas.analyses import ANALYSES
-from service.schemas.films import FILMS
+from service.schemas.film_models import MODELS
+from service.schemas.films import SCANS
 
 ARRAY_FORMATS = ("json", "npy", "npz")
 ROW_FORMATS = (*ARRAY_FORMATS, "csv")
@@ -46,7 +47,9 @@ def formats_of(product: str) -> tuple[str, ...]:
         return ("json",)
     if product in ANALYSES:
         return REPORT_FORMATS
-    if product in FILMS:
+    if product in MODELS:
+        return REPORT_FORMATS
+    if product in SCANS:
         return (*REPORT_FORMATS, *PICTURE_FORMATS)
     if product == "series":
         return ROW_FORMATS

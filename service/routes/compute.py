@@ -26,7 +26,12 @@ GONE = 499
 """Status logged for a client that went away before its answer; nobody reads it."""
 
 
-FILM_ADDRESSES = {"film": "/films/analysis", "film_run": "/films/run"}
+FILM_ADDRESSES = {
+    "film": "/films/analysis",
+    "film_run": "/films/run",
+    "film_swelling": "/films/swelling",
+    "film_trial": "/films/trial",
+}
 ADDRESSES = {
     **{product: f"/{product}" for product in (*PRODUCTS, SERIES, *ANALYSES)},
     **FILM_ADDRESSES,

@@ -196,4 +196,141 @@ class FilmRunReport(BaseModel):
     notes: list[str]
 
 
-FILM_REPORTS: dict[str, type[BaseModel]] = {"film": FilmReport, "film_run": FilmRunReport}
+class SwellingOrderOut(BaseModel):
+    """One order of one set."""
+
+    set: int
+    period: float
+    order: int
+    amplitude: float
+    sign: int
+    decided: bool
+    margin: float | None = Field(description="rise of χ² with the sign reversed; null: endless")
+    merit: float
+    fitted: float
+    residual: float
+
+
+class SetScaleOut(BaseModel):
+    """Amplitudes of a set over those of the first."""
+
+    set: int
+    period: float
+    scale: float
+    sigma: float
+
+
+class TransformOut(BaseModel):
+    """The layer's continuous transform with its band."""
+
+    thickness: float
+    q: list[float]
+    value: list[float]
+    sigma: list[float]
+
+
+class LayerContrastOut(BaseModel):
+    """The layer's own profile less what surrounds it."""
+
+    distance_angstrom: list[float]
+    contrast: list[float]
+    sigma: list[float]
+
+
+class ReversedOut(BaseModel):
+    """An order whose sign differs from the best solution's."""
+
+    set: int
+    order: int
+
+
+class SolutionOut(BaseModel):
+    """One choice of signs."""
+
+    behind: float = Field(description="misfit above the best, χ²")
+    signs: list[list[int]]
+    reversed: list[ReversedOut]
+
+
+class SwellingReport(BaseModel):
+    """Signs of one layer from several periods."""
+
+    product: str
+    settled: bool
+    oriented: bool
+    verdict: str
+    chi_squared: float
+    degrees: float
+    orders: list[SwellingOrderOut]
+    scales: list[SetScaleOut]
+    transform: TransformOut
+    layer: LayerContrastOut
+    solutions: list[SolutionOut]
+    notes: list[str]
+    sources: dict[str, str]
+
+
+class RefinedOut(BaseModel):
+    """How the refinement went."""
+
+    r_factor: float
+    chi_squared: float
+    degrees: int
+    weights: str
+    converged: bool
+    covariance: list[list[float | None]]
+    correlation: list[list[float | None]]
+    undetermined: list[list[str]]
+
+
+class ParameterOut(BaseModel):
+    """One refined number."""
+
+    parameter: str
+    value: float
+    sigma: float | None
+    at_bound: bool
+
+
+class TrialOrderOut(BaseModel):
+    """Measured and calculated amplitude of one order."""
+
+    order: int
+    measured: float
+    measured_sigma: float | None
+    calculated: float
+    phase_deg: float
+    difference: float
+    merit: float | None
+
+
+class TrialProfileOut(BaseModel):
+    """Observed amplitudes with the model's phases, and what the model lacks."""
+
+    distance_angstrom: list[float]
+    observed: list[float]
+    uncertainty: list[float] | None
+    residual: list[float]
+
+
+class TrialReport(BaseModel):
+    """A trial stack against measured amplitudes."""
+
+    product: str
+    unit: str
+    period: float
+    refined: RefinedOut | None
+    parameters: list[ParameterOut]
+    orders: list[TrialOrderOut]
+    profile: TrialProfileOut
+    applied: list[str]
+    notes: list[str]
+    sources: dict[str, str]
+
+
+FILM_REPORTS: dict[str, type[BaseModel]] = {
+    "film": FilmReport,
+    "film_run": FilmRunReport,
+    "film_swelling": SwellingReport,
+    "film_trial": TrialReport,
+}

@@ -6,6 +6,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import Field, model_validator
 
+from engine.films.signs import DECISIVE
 from service.schemas.base import Coordinate, Length, Strict
 from service.schemas.columns import NumberColumn, PhaseColumn
 from service.schemas.picture import PictureIn
@@ -108,7 +109,7 @@ class PhasesIn(Strict):
     criteria: CriteriaIn | None = Field(None, description="what signs are judged by")
     known_signs: dict[str, Literal[-1, 1]] = Field({}, max_length=1000, description="by order")
     use: Annotated[int, Field(ge=1, le=10)] = Field(1, description="which of the sign sets ranked is used")
-    decisive: float = Field(9.0, gt=0, description="margin from which on the best sign set counts as decided")
+    decisive: float = Field(DECISIVE, gt=0, description="margin from which on the best sign set counts as decided")
 
 
 class FactIn(Strict):
@@ -137,7 +138,13 @@ class FilmRegionIn(Strict):
     end: Coordinate = Field(alias="to")
 
 
-class FilmTaskIn(Strict):
+class FilmRequestIn(Strict):
+    """What all requests about films have in common."""
+
+    remark: str | None = Field(None, max_length=2000, description="for people; the service does not read it")
+
+
+class FilmTaskIn(FilmRequestIn):
     """What is made of a scan, once it is there."""
 
     spacing: SpacingIn = SpacingIn()
@@ -169,7 +176,6 @@ class FilmIn(FilmTaskIn):
     """A film from its order table to its layer profile and layer table."""
 
     product: Literal["film"] | None = None
-    remark: str | None = Field(None, max_length=2000, description="for people; the service does not read it")
     scan: ScanIn
 
 
@@ -186,7 +192,6 @@ class FilmRunIn(FilmTaskIn):
     """Films along a run (humidity, time): each analysed alike, in one table and one stack of profiles."""
 
     product: Literal["film_run"] | None = None
-    remark: str | None = Field(None, max_length=2000)
     scan: ScanIn = Field(ScanIn(), description="what the scans have in common")
     variable: str = Field("number", min_length=1, max_length=80)
     variable_unit: str = Field("", max_length=40)
@@ -210,4 +215,4 @@ class FilmRunIn(FilmTaskIn):
         return {**data, "members": whole}
 
 
-FILMS: dict[str, type[FilmTaskIn]] = {"film": FilmIn, "film_run": FilmRunIn}
+SCANS: dict[str, type[FilmTaskIn]] = {"film": FilmIn, "film_run": FilmRunIn}

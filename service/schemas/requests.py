@@ -9,7 +9,8 @@ from pydantic import Field
 from service.schemas.analyses import ANALYSES
 from service.schemas.base import Strict
 from service.schemas.coefficient_set import ReflectionSetIn
-from service.schemas.films import FILMS, FilmTaskIn
+from service.schemas.film_models import MODELS
+from service.schemas.films import SCANS, FilmRequestIn
 from service.schemas.products import PRODUCTS
 from service.schemas.series import SeriesIn
 from service.schemas.treatment import SetRequestIn
@@ -26,8 +27,9 @@ class InspectIn(Strict):
 
 
 SERIES = "series"
-Request = SetRequestIn | FilmTaskIn | InspectIn
-REQUESTS: dict[str, type[SetRequestIn] | type[FilmTaskIn] | type[InspectIn]] = {
+FILMS: dict[str, type[FilmRequestIn]] = {**SCANS, **MODELS}
+Request = SetRequestIn | FilmRequestIn | InspectIn
+REQUESTS: dict[str, type[SetRequestIn] | type[FilmRequestIn] | type[InspectIn]] = {
     **PRODUCTS,
     SERIES: SeriesIn,
     **ANALYSES,

@@ -8,15 +8,13 @@ level 0, the mean density and least structure, to 3, density and flatness of gal
 
 from __future__ import annotations
 
-import gc
 import time
-from pathlib import Path
+import tracemalloc
 
 import numpy as np
 
 from engine.films.signs import DECISIVE, Criteria, beam
 from engine.films.signs.exhaustive import search, sign_table, work_bytes
-from tests.benchmarks.memory import resident_peak
 from tests.benchmarks.timing import CORES, best
 from tests.engine.films.signs.problems import EVERYTHING, POSITIONS, SHAPE, problem
 from tests.engine.films.signs.stacks import trials
@@ -43,13 +41,10 @@ def main() -> None:
 def _row(name: str, criteria: Criteria) -> None:
     _, terms = problem(ORDERS, 5, criteria)
     free = np.zeros(ORDERS, dtype=np.int64)
+    tracemalloc.start()
     search(terms, free, best=10)
-    gc.collect()
-    # Resets the peak to what is resident now (proc(5), clear_refs).
-    Path("/proc/self/clear_refs").write_text("5")
-    before = resident_peak()
-    search(terms, free, best=10)
-    peak = (resident_peak() - before) / 2**20
+    peak = tracemalloc.get_traced_memory()[1] / 2**20
+    tracemalloc.stop()
     times = best(3, one=lambda: search(terms, free, best=10), two=lambda: search(terms, free, best=10, threads=2))
     signs = sign_table(ORDERS, 0, 16 * 4096).astype(np.int64)
     begin = time.perf_counter()

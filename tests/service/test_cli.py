@@ -1,5 +1,6 @@
 from __future__ import annotations
 
+import io
 import json
 import os
 import signal
@@ -16,7 +17,9 @@ from engine.errors import TransformError
 from service import cli, pipeline
 from service.cli import main
 from tests.service import bodies
+from tests.service.analyses import asked
 from tests.service.raw_files import AMPLITUDES, CELL, CIF, GRID, TABLE, WITHOUT_CELL, sent, with_set
+from tests.service.series_bodies import SERIES, SLICES
 
 NAMED = {product: {"product": product, **body} for product, body in bodies.GOOD.items()}
 
@@ -191,14 +194,14 @@ def test_run_of_an_inspection_names_the_right_command(run, tmp_path):
 @pytest.mark.parametrize(
     ("request_body", "options", "message"),
     [
-        (NAMED["profile"], ["--out", "out.png"], "--out: a profile is written as json, npy, npz, csv, not .png"),
+        (NAMED["profile"], ["--out", "out.txt"], "--out: a profile is written as json, npy"),
         (NAMED["profile"], ["--out", "out"], "--out: a profile is written as"),
-        (NAMED["grid"], ["--out", "out.csv"], "--out: a grid is written as json, npy, npz, not .csv"),
+        (NAMED["grid"], ["--out", "out.csv"], "--out: a grid is written as json, npy, npz, png, svg, not .csv"),
         (NAMED["profile"], ["--out", "no/such/folder/out.npy"], "No such file or directory"),
         (NAMED["profile"], ["--columns", "table.txt"], "--columns: table.txt does not end in .csv or .npz"),
         (NAMED["profile"], ["--columns", "table.csv"], "No such file or directory"),
         (NAMED["profile"], ["--threads", "0"], "--threads: give at least 1"),
-        (bodies.PROFILE, [], "/product: names no product. Give one of profile, slice, grid, points, extrema"),
+        (bodies.PROFILE, [], "/product: names no product. Give one of profile, slice, grid, points, series, extrema"),
         ({**NAMED["profile"], "product": ["profile"]}, [], "/product: names no product"),
         (b"{", [], "The body is not JSON"),
         ({**NAMED["profile"], "samples": 1}, [], "/samples: input should be greater than or equal to 2"),
@@ -429,3 +432,128 @@ def test_density_from_a_file(run, tmp_path):
     assert (code, errors) == (0, "")
     run({**request, "set": bodies.AMPLITUDES_SET}, "--out", tmp_path / "direct.npy")
     np.testing.assert_allclose(np.load(tmp_path / "out.npy"), np.load(tmp_path / "direct.npy"), rtol=1e-12)
+
+
+@pytest.mark.parametrize("form", ["json", "csv"])
+@pytest.mark.parametrize("product", asked.GOOD)
+def test_reports_in_files_are_those_of_the_service(client, run, tmp_path, product, form):
+    body = {"product": product, **asked.GOOD[product]}
+    out = tmp_path / f"out.{form}"
+    code, told, errors = run(body, "--out", out)
+    assert (code, errors) == (0, "")
+    assert f"written to {out}" in told
+    assert left_behind(tmp_path) == [out.name]
+    assert out.read_bytes() == client.post(f"/v1/{product}", params={"format": form}, json=body).content
+
+
+def test_reports_are_shown(run, tmp_path):
+    code, told, errors = run({"product": "integrals", **asked.GOOD["integrals"]})
+    assert (code, errors) == (0, "")
+    assert " ± " in told
+    assert "lower half" in told
+    assert left_behind(tmp_path) == []
+
+
+@pytest.mark.parametrize("form", ["json", "csv", "npz", "npy"])
+def test_series_in_files_are_those_of_the_service(client, run, tmp_path, form):
+    body = {"product": "series", **SERIES}
+    out = tmp_path / f"out.{form}"
+    code, told, errors = run(body, "--out", out)
+    assert (code, errors) == (0, "")
+    assert "temperature; 3 × 17 values" in told
+    answer = client.post("/v1/series", params={"format": form}, json=body)
+    if form == "npz":
+        with (
+            np.load(out, allow_pickle=False) as ours,
+            np.load(io.BytesIO(answer.content), allow_pickle=False) as theirs,
+        ):
+            assert ours.files == theirs.files
+            for name in ours.files:
+                np.testing.assert_array_equal(ours[name], theirs[name])
+    else:
+        assert out.read_bytes() == answer.content
+    assert left_behind(tmp_path) == [out.name]
+
+
+@pytest.mark.parametrize(
+    ("body", "out", "message"),
+    [
+        ({"product": "extrema", **asked.GOOD["extrema"], "kinds": ["peak"]}, None, "/kinds/0: input should be"),
+        (
+            {"product": "extrema", **asked.GOOD["extrema"], "distances": [[1, 99]]},
+            "json",
+            "/distances/0: names number 99",
+        ),
+        ({"product": "layers", **asked.GOOD["layers"]}, "npz", "--out: a layers is written as json, csv"),
+        ({"product": "windows", **asked.GOOD["windows"]}, "png", "--out: a windows is written as json, csv"),
+        ({"product": "series", **SERIES, "uncertainty": True}, "npy", "one array"),
+        ({"product": "series", **SLICES}, "csv", "Only profiles"),
+        ({"product": "series", **SERIES, "reference": 9}, "npz", "/reference: is 9 of 3 members"),
+        ({"product": "series", **SERIES}, "png", "--out: a series is written as"),
+    ],
+)
+def test_analyses_and_series_that_fail(run, tmp_path, body, out, message):
+    options = ("--out", tmp_path / f"out.{out}") if out else ()
+    code, told, errors = run(body, *options)
+    assert (code, told) == (2, "")
+    assert errors.startswith("densityloom: ")
+    assert message in errors
+    assert left_behind(tmp_path) == []
+
+
+@pytest.mark.parametrize(("ending", "packed"), [(".csv", bodies.as_csv), (".npz", bodies.as_npz)])
+def test_second_columns_from_a_table(run, tmp_path, ending, packed):
+    table = tmp_path / f"later{ending}"
+    table.write_bytes(packed(bodies.table_of(asked.LATER)))
+    combination = {
+        "kind": "difference",
+        "scale": {"kind": "as_given"},
+        "with": bodies.bare({"set": asked.LATER})["set"],
+    }
+    body = {"product": "profile", **bodies.PROFILE, "set": asked.FILM, "combination": combination}
+    code, told, errors = run(body, "--with-columns", table, "--out", tmp_path / "out.npy")
+    assert (code, errors) == (0, "")
+    assert "1 × first − 1 × second" in told
+    inline = {**body, "combination": {**combination, "with": asked.LATER}}
+    run(inline, "--out", tmp_path / "inline.npy")
+    np.testing.assert_array_equal(np.load(tmp_path / "out.npy"), np.load(tmp_path / "inline.npy"))
+    compared = {"product": "compare", "set": asked.FILM, "with": combination["with"]}
+    code, told, errors = run(compared, "--with-columns", table)
+    assert (code, errors) == (0, "")
+    assert "correlation" in told
+
+
+def test_second_set_of_a_file_of_reflections(run, tmp_path):
+    file = tmp_path / "rows.csv"
+    file.write_bytes(bodies.AMPLITUDES_FILE)
+    given = {name: bodies.AMPLITUDES_SET[name] for name in ("cell", "values")}
+    code, told, errors = run(
+        {"product": "compare", "set": bodies.AMPLITUDES_SET, "with": given}, "--with-reflections", file
+    )
+    assert (code, errors) == (0, "")
+    assert "3" in told.split("matched", 1)[1].split()[0]
+
+
+@pytest.mark.parametrize(
+    ("body", "name", "message"),
+    [
+        ({"product": "profile", **bodies.PROFILE}, "later.csv", "/with: is absent"),
+        ({"product": "compare", "set": asked.FILM, "with": asked.LATER}, "later.csv", "/with/amplitude: is given"),
+        ({"product": "compare", "set": asked.FILM, "with": asked.LATER}, "later.txt", "--with-columns: later.txt"),
+        ({"product": "compare", "set": asked.FILM, "with": asked.LATER}, "absent.csv", "absent.csv"),
+    ],
+)
+def test_second_columns_that_fail(run, tmp_path, body, name, message):
+    if not name.startswith("absent"):
+        (tmp_path / name).write_bytes(bodies.as_csv(bodies.table_of(asked.LATER)))
+    code, told, errors = run(body, "--with-columns", tmp_path / name)
+    assert (code, told) == (2, "")
+    assert message in errors
+
+
+def test_progress_of_analyses_and_series_is_shown_for_long_work_alone(run, monkeypatch):
+    for body in ({"product": "extrema", **asked.GOOD["extrema"]}, {"product": "series", **SERIES}):
+        assert run(body)[2] == ""
+    monkeypatch.setattr(cli, "SILENT_SECONDS", 0.0)
+    assert "extrema" in run({"product": "extrema", **asked.GOOD["extrema"]})[2]
+    assert "series" in run({"product": "series", **SERIES})[2]

@@ -7,6 +7,7 @@ import pytest
 from engine import evaluate, sampling
 from service.client import Client, ServiceError
 from tests.service import bodies
+from tests.service.series_bodies import SERIES
 
 
 @pytest.fixture(scope="module")
@@ -101,3 +102,40 @@ def test_answers_that_are_not_ours(answer):
 def test_no_service():
     with Client("http://127.0.0.1:9", timeout=5) as client, pytest.raises(httpx.TransportError):
         client.compute("profile", bodies.PROFILE)
+
+
+def test_reports_come_as_documents(connected):
+    made = connected.report("layers", {"set": bodies.FILM, "along": [1]})
+    assert made["product"] == "layers"
+    assert made["layers"][0]["position"] == 0
+    given = {name: np.array(column, float) for name, column in bodies.table_of(bodies.FILM).items()}
+    bare = bodies.bare({"set": bodies.FILM, "along": [1]})
+    bare["along"] = [1]
+    assert connected.report("layers", bare, given) == made
+    with pytest.raises(ServiceError) as caught:
+        connected.report("layers", {"set": bodies.FILM})
+    assert caught.value.problem["errors"][0]["pointer"] == "/from"
+
+
+def test_what_goes_beside_the_values(connected):
+    given = {**bodies.FILM, "sigma": [0.1, 0.2, 0.3, 0.4]}
+    body = {**bodies.PROFILE, "set": given}
+    plain = connected.compute("profile", body)
+    assert (plain.uncertainty, plain.unmeasured, plain.variable) == (None, None, None)
+    full = connected.compute("profile", {**body, "uncertainty": True, "unmeasured": {"amplitude": 1.0, "b": 30.0}})
+    film = bodies.coefficients(given)
+    direct = evaluate(film, sampling.line(film.lattice, [0], [1], 17), uncertainty=True)
+    np.testing.assert_array_equal(full.uncertainty, direct.sigma.values)
+    np.testing.assert_array_equal(full.values, plain.values)
+    assert full.unmeasured.shape == (17,)
+    assert full.unmeasured.min() > 0
+    assert not np.allclose(full.unmeasured, full.uncertainty)
+    assert full.metadata["summary"]["unmeasured"]["rms"] == pytest.approx(np.sqrt((full.unmeasured**2).mean()))
+
+
+def test_series_come_with_their_variable(connected):
+    made = connected.compute("series", {**SERIES, "uncertainty": True})
+    np.testing.assert_array_equal(made.variable, [290, 310, 330])
+    assert made.values.shape == made.uncertainty.shape == (3, 17)
+    np.testing.assert_allclose(made.axes[0], np.linspace(0, bodies.PERIOD, 17))
+    assert made.metadata["variable"]["unit"] == "K"

@@ -226,3 +226,72 @@ def test_file_is_no_json(file):
     problem = refusal(read_, "grid", JSON, asked)
     assert places(problem) == ["/set/reflections"]
     assert "part of a form" in problem.detail
+
+
+COMBINED = {
+    **bodies.bare(bodies.PROFILE),
+    "combination": {"kind": "difference", "scale": {"kind": "as_given"}, "with": bodies.bare(bodies.PROFILE)["set"]},
+}
+COMPARED = {name: bodies.bare(bodies.PROFILE)["set"] for name in ("set", "with")}
+TABLES = {
+    "columns": Part(CSV, bodies.as_csv(bodies.table_of(bodies.FILM))),
+    "with_columns": Part(NPZ, bodies.as_npz({**bodies.table_of(bodies.FILM), "amplitude": [1, 2, 3, 4]})),
+}
+
+
+@pytest.mark.parametrize(("product", "body"), [("profile", COMBINED), ("compare", COMPARED)])
+def test_tables_of_two_sets(product, body):
+    _, request = check(product, body, TABLES, max_body_bytes=LIMIT)
+    other = request.combination.other if product == "profile" else request.other
+    np.testing.assert_array_equal(request.set.amplitude, bodies.FILM["amplitude"])
+    np.testing.assert_array_equal(other.amplitude, [1, 2, 3, 4])
+    assert "amplitude" not in body["set"], "the caller's document was changed"
+
+
+def test_files_of_the_second_set():
+    files = {"with_reflections": Part("", CIF.encode(), "a.cif"), "with_reference": Part("", TABLE.encode(), "b.csv")}
+    _, request = check("compare", {"set": bodies.FILM, "with": GRID["set"]}, files, max_body_bytes=LIMIT)
+    assert request.other.reflections.data == CIF.encode()
+    assert request.other.reference.name == "b.csv"
+    assert request.set.reflections is None
+
+
+@pytest.mark.parametrize(
+    ("product", "body", "files", "place"),
+    [
+        ("profile", bodies.PROFILE, {"with_columns": TABLES["with_columns"]}, "/with"),
+        ("compare", {"set": bodies.FILM}, {"with_columns": TABLES["with_columns"]}, "/with"),
+        ("compare", {"set": bodies.FILM, "with": 3}, {"with_columns": TABLES["with_columns"]}, "/with"),
+        (
+            "profile",
+            {**bodies.PROFILE, "combination": [1]},
+            {"with_columns": TABLES["with_columns"]},
+            "/combination/with",
+        ),
+        (
+            "profile",
+            {**bodies.PROFILE, "combination": {}},
+            {"with_columns": TABLES["with_columns"]},
+            "/combination/with",
+        ),
+        (
+            "compare",
+            {"set": bodies.FILM, "with": bodies.FILM},
+            {"with_columns": TABLES["with_columns"]},
+            "/with/amplitude",
+        ),
+        ("compare", COMPARED, {"columns": TABLES["columns"], "with_columns": Part(CSV, b"l\nx\n")}, "/with"),
+        ("profile", COMBINED, {"with_columns": Part(CSV, b"l,widow\n1,2\n")}, "/combination/with"),
+    ],
+)
+def test_second_sets_at_fault(product, body, files, place):
+    problem = refusal(check, product, body, files, max_body_bytes=LIMIT)
+    assert places(problem) == [place]
+
+
+def test_part_of_the_second_set_is_named():
+    problem = refusal(check, "compare", COMPARED, {"with_columns": Part(CSV, b"l\nx\n")}, max_body_bytes=LIMIT)
+    assert "the part with_columns: line 2" in problem.detail
+    problem = refusal(check, "compare", COMPARED, {"with_columns": Part("text/html", b"")}, max_body_bytes=LIMIT)
+    assert problem.status == 415
+    assert "with_columns" in problem.detail

@@ -1,8 +1,11 @@
 from __future__ import annotations
 
+import json
+
 import numpy as np
 import pytest
 
+from engine import evaluate, sampling
 from service.intake import check
 from service.interpret_combination import coefficient_set
 from service.interpret_set import lattice_of
@@ -247,3 +250,67 @@ def test_resolution_cuts_a_file_too():
 )
 def test_what_columns_do_not_go_with(members, pointer):
     assert place({**bodies.PROFILE, "set": {**bodies.FILM, **members}}) == pointer
+
+
+SILICON = json.loads((bodies.SAMPLES / "silicon_uncertainty.json").read_text())["set"]
+BOND = {"positions": [[0.125, 0.125, 0.125], [0.3, 0.1, 0.2]]}
+
+
+def silicon(**symmetry):
+    given = {name: value for name, value in SILICON.items() if name != "symmetry"}
+    if symmetry:
+        given["symmetry"] = {"columns": "full", **symmetry}
+    return coefficients({"set": given, **BOND}, "points", limit=200)
+
+
+def test_symmetry_of_a_full_set_relates_its_errors_alone():
+    """No coefficient changes; but errors of equivalents, taken as one, no longer average out at a bond."""
+    related, plain = silicon(space_group="Fd-3m:1"), silicon()
+    assert plain.group is None
+    assert related.group.name.startswith("F")
+    np.testing.assert_array_equal(related.values, plain.values)
+    np.testing.assert_array_equal(related.indices, plain.indices)
+    where = sampling.points(plain.lattice, BOND["positions"])
+    one, other = (evaluate(made, where, uncertainty=True) for made in (related, plain))
+    np.testing.assert_array_equal(one.values, other.values)
+    assert one.sigma.values[0] > 1.4 * other.sigma.values[0]
+
+
+@pytest.mark.parametrize(
+    ("symmetry", "pointer", "words"),
+    [
+        ({"space_group": "Fd-3m:2"}, "/set/symmetry", "differs"),
+        ({"space_group": 225}, "/set/symmetry", "differs"),
+        ({"space_group": 194}, "/set/cell", "symmetry"),
+        ({"plane_group": 2}, "/set/symmetry/plane_group", ""),
+        ({}, "/set/symmetry", ""),
+    ],
+)
+def test_groups_that_a_full_set_does_not_have(symmetry, pointer, words):
+    given = {**SILICON, "symmetry": {"columns": "full", **symmetry}}
+    with pytest.raises(Problem) as caught:
+        coefficients({"set": given, **BOND}, "points", limit=200)
+    assert caught.value.places[0].pointer == pointer
+    assert words in caught.value.detail
+
+
+def test_a_subgroup_is_a_group_of_the_density_too():
+    assert silicon(space_group=195).group.order == 12
+
+
+def test_full_columns_are_no_matter_of_files():
+    given = {**FILE_SET, "symmetry": {"space_group": 1, "columns": "full"}}
+    assert place({**bodies.GRID, "set": given}, "grid", file=ROWS) == "/set/symmetry/columns"
+
+
+def test_full_columns_of_a_stack():
+    """Centrosymmetric about its origin or not: the phases tell."""
+    given = {**bodies.FILM, "symmetry": {"stack_group": "-1", "columns": "full"}}
+    assert coefficients({**bodies.PROFILE, "set": given}).group.name == "-1"
+    turned = {**given, "phase_deg": [0, 180, 5, 0]}
+    assert place({**bodies.PROFILE, "set": turned}) == "/set/symmetry"
+
+
+@pytest.mark.parametrize("members", [{"mean": 1e75}, {"amplitude": [1.0, 1e72, 1.0, 1.0]}, {"sigma": [1e75] * 4}])
+def test_values_whose_powers_overflow(members):
+    assert place({**bodies.PROFILE, "set": {**bodies.FILM, **members}}) == "/set"

@@ -1,15 +1,18 @@
 from __future__ import annotations
 
 import io
+import json
 
 import numpy as np
 import pytest
 
 from service import intake, pipeline
+from service.encoders.report import report_json
 from service.problems import Problem
 from service.settings import Settings
 from service.spool import Spool
 from tests.service import bodies
+from tests.service.analyses import asked
 
 
 def ran(product, body, form="npy", watch=None, threads=1, **limits):
@@ -116,3 +119,97 @@ def test_values_that_overflow_are_refused(form):
     body = {**bodies.changed(bodies.PROFILE, "set/amplitude", [1e50] * 4), "precision": "single"}
     problem = refusal("profile", body, form)
     assert (problem.kind, problem.places[0].pointer) == ("invalid-request", "/set")
+
+
+def analysed(product, body, **limits):
+    _, request = intake.check(product, body, {}, max_body_bytes=2**20)
+    return pipeline.analyse(product, request, Settings(**limits), threads=1)
+
+
+@pytest.mark.parametrize("product", asked.GOOD)
+def test_analyses_are_answered_as_reports(product):
+    body = asked.GOOD[product]
+    assert report_json(analysed(product, body)) == asked.answered(product, body)
+
+
+@pytest.mark.parametrize(
+    ("product", "limits", "pointer"),
+    [
+        ("extrema", {"max_json_values": 10}, "/most"),
+        ("extrema", {"max_memory_bytes": 2**20}, "/spacing"),
+        ("statistics", {"max_memory_bytes": 2**20}, "/spacing"),
+        ("integrals", {"max_coefficients": 39}, "/set/h"),
+        ("compare", {"max_coefficients": 3}, "/set/l"),
+    ],
+)
+def test_analyses_have_the_limits_of_the_service(product, limits, pointer):
+    body = asked.GOOD[product]
+    if product == "statistics":
+        body = {**body, "spacing": 0.05}
+    with pytest.raises(Problem) as caught:
+        analysed(product, body, **limits)
+    assert (caught.value.kind, caught.value.places[0].pointer) == ("too-costly", pointer)
+
+
+UNMEASURED = {"amplitude": 1.0, "b": 30.0}
+
+
+def test_unmeasured_terms_are_apart_from_the_uncertainty():
+    """Of the film in P 1: the same rms everywhere, from the orders beyond the fourth, by hand."""
+    body = {**bodies.PROFILE, "unmeasured": {**UNMEASURED, "d_stop": bodies.PERIOD / 10.5}}
+    done, content = ran("profile", body, "json")
+    told = json.loads(content)
+    assert told["uncertainty"] is None
+    orders = np.arange(5, 11)
+    strengths = np.exp(-30 * (orders / (2 * bodies.PERIOD)) ** 2)
+    listed = 2 * float((strengths**2).sum())
+    # The tail by its integral: one of each pair, an order to every period.
+    s = np.linspace(10.5, 400, 200_001) / (2 * bodies.PERIOD)
+    tail = 2 * np.trapezoid(np.exp(-60 * s**2), s) * 2 * bodies.PERIOD
+    np.testing.assert_allclose(told["unmeasured"], np.sqrt(listed + tail), rtol=0.02)
+    assert told["summary"]["unmeasured"]["rms"] == pytest.approx(np.sqrt(listed + tail), rel=0.02)
+    assert told["summary"]["unmeasured"]["assumed"]
+    assert done.shown.change is not None
+
+
+@pytest.mark.parametrize(
+    ("product", "body", "pointer"),
+    [
+        ("profile", {"unmeasured": {"b": 1.0}}, "/unmeasured"),
+        ("profile", {"unmeasured": {**UNMEASURED, "formula": "SiO2"}}, "/unmeasured"),
+        ("profile", {"unmeasured": {"amplitude": 1.0}}, "/unmeasured/b"),
+        ("profile", {"unmeasured": {"formula": "SiO2", "b": 1.0}}, "/unmeasured/formula"),
+        ("grid", {"unmeasured": {"formula": "Qq2", "b": 1.0}}, "/unmeasured/formula"),
+        ("grid", {"unmeasured": {"formula": "", "b": 1.0}}, "/unmeasured/formula"),
+        ("grid", {"unmeasured": {"formula": "SiO2", "b": 1.0, "units": 0}}, "/unmeasured/units"),
+        ("profile", {"unmeasured": {**UNMEASURED, "d_stop": 50.0}}, "/unmeasured/d_stop"),
+        ("grid", {"unmeasured": {**UNMEASURED, "d_stop": 1e-3}}, "/unmeasured/d_stop"),
+        ("profile", {"unmeasured": UNMEASURED, "field": "gradient"}, "/unmeasured"),
+        ("profile", {"unmeasured": UNMEASURED, "sharpen": 1.0}, "/unmeasured"),
+        ("grid", {"unmeasured": UNMEASURED, "set": bodies.ABSORBING}, "/unmeasured"),
+        (
+            "profile",
+            {"unmeasured": UNMEASURED, "set": {**bodies.FILM, "phase_deg": [None] * 4, "mean": 1.0}},
+            "/set/phase_deg",
+        ),
+    ],
+)
+def test_unmeasured_terms_that_cannot_be_told(product, body, pointer):
+    problem = refusal(product, {**bodies.GOOD[product], **body}, "json")
+    assert problem.places[0].pointer == pointer
+
+
+def test_unmeasured_terms_need_a_place_of_their_own():
+    assert refusal("profile", {**bodies.PROFILE, "unmeasured": UNMEASURED}).kind == "not-acceptable"
+
+
+def test_memory_of_unmeasured_terms_is_refused():
+    body = {**bodies.GRID, "unmeasured": {"amplitude": 1.0, "b": 1e-6}}
+    problem = refusal("grid", body, "json", max_memory_bytes=2**24)
+    assert (problem.kind, problem.places[0].pointer) == ("too-costly", "/unmeasured")
+
+
+def test_text_is_limited_with_what_goes_beside_the_values():
+    body = {**bodies.PROFILE, "unmeasured": UNMEASURED}
+    assert ran("profile", body, "json", max_json_values=34)
+    assert "34 numbers" in refusal("profile", body, "json", max_json_values=33).detail

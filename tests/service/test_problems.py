@@ -1,15 +1,28 @@
 from __future__ import annotations
 
 import json
+from typing import Annotated, Literal
 
 import pytest
-from pydantic import BaseModel, ConfigDict, ValidationError
+from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from engine import errors
 from engine.errors import EngineError, InputError, TooLargeError
 from service import pipeline
 from service.intake import JSON
-from service.problems import ERRORS_NAMED, LONGEST_PART, TITLES, Place, Problem, at, from_validation, located, pointer
+from service.problems import (
+    ERRORS_NAMED,
+    LONGEST_PART,
+    TITLES,
+    Place,
+    Problem,
+    at,
+    below,
+    from_validation,
+    located,
+    moved,
+    pointer,
+)
 from service.settings import Settings
 from service.spool import Spool
 from service.wall.worker import _serve
@@ -147,3 +160,90 @@ def test_complaints_are_counted():
 def test_places_beyond_a_number_are_not_told():
     problem = Problem("invalid-request", "Much.", tuple(Place(f"/{n}", "is", "do") for n in range(30)))
     assert len(problem.document()["errors"]) == len(problem.to_message()["places"]) == ERRORS_NAMED
+
+
+def relocated(context, *places, detail=None):
+    """A problem of these places, raised within a context."""
+    found = tuple(Place(one, "is at fault", "mend it") for one in places)
+    with pytest.raises(Problem) as caught, context:
+        raise Problem("too-costly", detail or f"{places[0]}: is at fault. Mend it.", found, {"Retry-After": "1"})
+    return caught.value
+
+
+def test_a_further_set_is_told_where_it_stands():
+    problem = relocated(moved("members", 3, "set"), "/set", "/set/h/2", "/settings", "/missing_phase")
+    assert [one.pointer for one in problem.places] == [
+        "/members/3/set",
+        "/members/3/set/h/2",
+        "/settings",
+        "/missing_phase",
+    ]
+    assert problem.detail == "/members/3/set: is at fault. Mend it."
+    assert (problem.kind, problem.headers) == ("too-costly", {"Retry-After": "1"})
+
+
+@pytest.mark.parametrize(
+    ("detail", "expected"),
+    [
+        ("/set/h: is absent.", "/with/h: is absent."),
+        ("/set: is absent.", "/with: is absent."),
+        ("/set_aside: is absent.", "/set_aside: is absent."),
+        ("the set is absent", "the set is absent"),
+        ("/setting/h: no", "/setting/h: no"),
+    ],
+)
+def test_details_move_with_their_place(detail, expected):
+    assert relocated(moved("with"), "/elsewhere", detail=detail).detail == expected
+
+
+def test_names_of_places_are_escaped():
+    assert relocated(moved("a/b", "c~d"), "/set/h").places[0].pointer == "/a~1b/c~0d/h"
+
+
+def test_members_of_an_inner_object():
+    problem = relocated(below("profile"), "/to", "/from")
+    assert [one.pointer for one in problem.places] == ["/profile/to", "/profile/from"]
+    assert problem.detail == "/profile/to: is at fault. Mend it."
+    with pytest.raises(Problem, match=r"^Too much\.$"), below("profile"):
+        raise Problem("too-costly", "Too much.")
+
+
+def test_what_is_no_problem_passes():
+    for context in (moved("with"), below("profile")):
+        with pytest.raises(ZeroDivisionError), context:
+            raise ZeroDivisionError
+
+
+class Several(BaseModel):
+    model_config = ConfigDict(extra="forbid", strict=True)
+
+    level: Literal["zero", "mean"] | float = 0.0
+    place: Annotated[float, Field(le=5)] | list[float] = 0.0
+    flag: bool | None = None
+
+
+@pytest.mark.parametrize(
+    ("given", "pointers"),
+    [
+        ({"level": "high"}, ["/level"]),
+        ({"place": "x"}, ["/place"]),
+        ({"place": [0.0, "x"]}, ["/place", "/place/1"]),
+        ({"place": 9.0}, ["/place"]),
+        ({"flag": 3}, ["/flag"]),
+        ({"float": 3, "list[int]": 4}, ["/float", "/list[int]"]),
+        ({"level": "x", "flag": 3}, ["/level", "/flag"]),
+    ],
+)
+def test_members_of_several_types_have_one_place(given, pointers):
+    """No pointer may name what is not in the body."""
+    with pytest.raises(ValidationError) as caught:
+        Several.model_validate(given)
+    assert [one.pointer for one in from_validation(caught.value).places] == pointers
+
+
+def test_all_that_would_do_is_told():
+    with pytest.raises(ValidationError) as caught:
+        Several.model_validate({"level": "high"})
+    (place,) = from_validation(caught.value).places
+    assert "'zero' or 'mean'" in place.reason
+    assert "valid number" in place.reason

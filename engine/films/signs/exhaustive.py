@@ -124,7 +124,7 @@ def work_bytes(terms: Terms, free: int, threads: int) -> int:
     bits = min(LAST_BITS, free - free // 2)
     samples = sum(term.design.shape[1] for term in (terms.below, terms.roughness) if term is not None)
     tables = 8 * (1 << bits) * (samples + terms.count)
-    each = 8 * (ROWS * (samples + terms.count) + (1 << bits) * (2 * samples + 4 * ROWS))
+    each = 8 * (ROWS * (samples + terms.count) + (1 << bits) * (2 * samples + 10 * ROWS))
     return int(tables + max(threads, 1) * each + 2 * 8 * (1 << max(free - bits, 0)))
 
 

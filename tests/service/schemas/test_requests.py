@@ -4,14 +4,15 @@ import pytest
 from pydantic import ValidationError
 
 from service.routes.compute import ADDRESSES
-from service.schemas.coefficient_set import ReflectionSetIn
 from service.schemas.analyses import ANALYSES
+from service.schemas.coefficient_set import ReflectionSetIn
+from service.schemas.films import FILMS
 from service.schemas.products import PRODUCTS
-from service.schemas.requests import INSPECT, REQUESTS, InspectIn
+from service.schemas.requests import INSPECT, REQUESTS, SERIES, InspectIn
 
 
 def test_every_kind_of_request_has_an_address():
-    assert set(REQUESTS) == {*PRODUCTS, *ANALYSES, INSPECT} == set(ADDRESSES)
+    assert set(REQUESTS) == {*PRODUCTS, SERIES, *ANALYSES, *FILMS, INSPECT} == set(ADDRESSES)
     assert len(set(ADDRESSES.values())) == len(ADDRESSES)
 
 

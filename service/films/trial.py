@@ -1,0 +1,170 @@
+"""A trial stack against measured amplitudes."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from engine.coefficients import CoefficientSet
+from engine.evaluate import Field, evaluate
+from engine.films.orders import FilmOrders
+from engine.films.trial import (
+    Part,
+    Plane,
+    Refined,
+    Slab,
+    Stack,
+    calculated,
+    observed_set,
+    refine,
+    residual_set,
+)
+from engine.sampling import lattice_line
+from service.analyses.common import rows, table_of
+from service.analyses.report import Limits, Report
+from service.films.orders import orders_of
+from service.problems import located
+from service.schemas.film_models import PlaneIn, SlabIn, TrialIn
+
+SOURCES = {
+    "merit of signs": "Sim, Acta Cryst. 12 (1959) 813; Woolfson, Acta Cryst. 9 (1956) 804",
+}
+
+
+def trial(request: TrialIn, limits: Limits) -> Report:
+    """Calculate, refine on request, and give the observed profile its phases.
+
+    Raises
+    ------
+    Problem
+        Pointing to the place in the body.
+    """
+    orders = orders_of(request.orders, ("orders",))
+    renamed: dict[str, tuple[str | int, ...]] = {"parameters": ("refine",), "B": ("b_iso",), "orders": ("orders",)}
+    parts = [_part(one, ("parts", place)) for place, one in enumerate(request.parts)]
+    with located(renamed=renamed):
+        stack = Stack.of(
+            orders.period,
+            parts,
+            symmetry=request.symmetry,
+            probe=request.probe,
+            background=request.background,
+            B=request.b_iso,
+            scale=request.scale,
+            unit=None if request.orders.unit == "arbitrary" else request.orders.unit,
+        )
+        found: Refined | None = None
+        if request.refine:
+            bounds = {name: (pair[0], pair[1]) for name, pair in request.bounds.items()}
+            found = refine(stack, orders, request.refine, bounds=bounds)
+            stack = found.stack
+        observed = observed_set(found or stack, None if found else orders)
+        lacking = residual_set(found or stack, None if found else orders)
+    profile, rest = (_profile(one, request.samples) for one in (observed, lacking))
+    tables = {
+        "parameters": _parameters(found),
+        "orders": _orders(stack, orders, observed),
+        "profile": {
+            "distance_angstrom": profile.axes[0].coordinates(),
+            "observed": profile.values,
+            "uncertainty": None if profile.sigma is None else profile.sigma.values,
+            "residual": rest.values,
+        },
+    }
+    notes = [*(() if found is None else found.notes), *profile.notes]
+    document: dict[str, Any] = {
+        "product": "film_trial",
+        "unit": stack.unit,
+        "period": stack.period,
+        "refined": None if found is None else _refined(found),
+        "parameters": rows(tables["parameters"]) if found is not None else [],
+        "orders": rows(tables["orders"]),
+        "profile": tables["profile"],
+        "applied": list(profile.applied),
+        "notes": notes,
+        "sources": SOURCES,
+    }
+    chosen = request.table if found is not None or request.table != "parameters" else "orders"
+    figures = () if found is None else (f"R = {found.r_factor:.4g}, χ² {found.chi_square:.4g} of {found.freedom}",)
+    return Report(
+        document=document,
+        table=table_of(tables[chosen]),
+        told=(*figures, *document["applied"], *document["notes"]),
+        further=(("orders", table_of(tables["orders"])),) if chosen != "orders" else (),
+    )
+
+
+def _part(given: PlaneIn | SlabIn, place: tuple[str | int, ...]) -> Part:
+    renamed: dict[str, tuple[str | int, ...]] = {"parts": place}
+    with located(renamed=renamed):
+        if isinstance(given, SlabIn):
+            return Slab.between(given.name, given.lower, given.upper, density=given.density, roughness=given.roughness)
+        return Plane.of(
+            given.name,
+            given.position,
+            width=given.width,
+            occupancy=given.occupancy,
+            formula=given.formula,
+            area=given.area,
+            strength=given.strength,
+            displaced=given.displaced,
+        )
+
+
+def _profile(coefficients: CoefficientSet, samples: int) -> Field:
+    line = lattice_line(coefficients.lattice, [1], samples)
+    return evaluate(coefficients, line, uncertainty=coefficients.sigma is not None)
+
+
+def _parameters(found: Refined | None) -> dict[str, Any]:
+    if found is None:
+        return {}
+    return {
+        "parameter": list(found.names),
+        "value": found.values,
+        "sigma": [_finite(value) for value in found.sigma.tolist()],
+        "at_bound": found.at_bound,
+    }
+
+
+def _orders(stack: Stack, orders: FilmOrders, observed: CoefficientSet) -> dict[str, Any]:
+    model = calculated(stack, orders.order)
+    merit = observed.merit
+    return {
+        "order": orders.order,
+        "measured": orders.amplitude,
+        "measured_sigma": orders.sigma,
+        "calculated": np.abs(model),
+        "phase_deg": np.rad2deg(np.angle(model)),
+        "difference": orders.amplitude - np.abs(model),
+        "merit": None if merit is None else _merit_by_order(observed, orders),
+    }
+
+
+def _merit_by_order(observed: CoefficientSet, orders: FilmOrders) -> list[float | None]:
+    if observed.merit is None:
+        return [None] * orders.count
+    by_order = dict(zip(np.abs(observed.indices[:, 0]).tolist(), observed.merit.tolist(), strict=True))
+    return [by_order.get(order) for order in orders.order.tolist()]
+
+
+def _refined(found: Refined) -> dict[str, Any]:
+    return {
+        "r_factor": found.r_factor,
+        "chi_squared": found.chi_square,
+        "degrees": found.freedom,
+        "weights": found.weights,
+        "converged": found.converged,
+        "covariance": _table(found.covariance),
+        "correlation": _table(found.correlation),
+        "undetermined": [list(names) for names in found.undetermined],
+    }
+
+
+def _table(values: np.ndarray[tuple[int, ...], np.dtype[np.float64]]) -> list[list[float | None]]:
+    return [[_finite(value) for value in row] for row in values.tolist()]
+
+
+def _finite(value: float) -> float | None:
+    return value if np.isfinite(value) else None
