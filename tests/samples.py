@@ -20,7 +20,7 @@ from scipy import special
 
 from engine.lattice import Lattice
 from engine.series import faces_backward
-from tests import samples_raw, samples_trust
+from tests import samples_films, samples_raw, samples_trust
 from tests.external.silicon import deformation_set
 
 FOLDER = Path(__file__).parent.parent / "sample_requests"
@@ -52,6 +52,7 @@ def build() -> dict[str, dict[str, Any]]:
     }
     return {
         **samples_raw.requests(INVENTED),
+        **samples_films.requests(INVENTED),
         **samples_trust.requests(film, triclinic, silicon_set, INVENTED),
         "film_profile.json": {
             "product": "profile",
@@ -195,6 +196,7 @@ def texts() -> dict[str, str]:
         "film_orders.csv": film_table(),
         "film_scan.csv": samples_raw.film_scan(),
         "crystal_OR4.cif": samples_raw.crystal_cif(),
+        "coating_scan.csv": samples_films.table(),
     }
 
 

@@ -223,17 +223,13 @@ def number_lines(
     return found[0].order, found
 
 
-def analyse_film(
-    task: FilmTask, *, threads: int = 1, max_bytes: int | None = None, progress: Progress | None = None
-) -> FilmAnalysis:
-    """All steps of a task.
+def measured(task: FilmTask) -> tuple[tuple[Assignment, ...], Spacing, OrderTable]:
+    """Numbering, period and amplitudes: what does not depend on phases. ``table.film()`` are the amplitudes.
 
     Raises
     ------
     InputError
-        What the steps refuse; no phases and no criteria; a rank beyond the sign sets found.
-    TooLargeError
-        More than `max_bytes` would be needed.
+        What these steps refuse.
     """
     scan = task.scan
     numbers, assignments = number_lines(scan, task.period_range)
@@ -254,9 +250,26 @@ def analyse_film(
         corrections=task.corrections,
         rule=task.rule,
         negative=task.negative,
-        symmetric=task.phases_deg is None,
+        symmetric=_symmetric(task),
         keep_saturated=task.keep_saturated,
     )
+    return assignments, spacing, table
+
+
+def analyse_film(
+    task: FilmTask, *, threads: int = 1, max_bytes: int | None = None, progress: Progress | None = None
+) -> FilmAnalysis:
+    """All steps of a task.
+
+    Raises
+    ------
+    InputError
+        What the steps refuse; no phases and no criteria; a rank beyond the sign sets found.
+    TooLargeError
+        More than `max_bytes` would be needed.
+    """
+    scan = task.scan
+    assignments, spacing, table = measured(task)
     raw = table.film()
     task = _with_mean(task, spacing)
     phase_deg, orders, scale, ranked = _phased(raw, task, threads, max_bytes, progress)
@@ -299,9 +312,22 @@ def analyse_film(
         widths=_widths(scan, table, task),
         applied=(*table.applied, *(() if scale is None else (scale.words, *scale.assumptions))),
         notes=tuple(
-            dict.fromkeys((*scan.notes, *_told(assignments, spacing, ranked, scale), *profile.notes, *_caution(scale)))
+            dict.fromkeys(
+                (
+                    *scan.notes,
+                    *_told(assignments, spacing, ranked, scale),
+                    *_left_over(task, raw),
+                    *profile.notes,
+                    *_caution(scale),
+                )
+            )
         ),
     )
+
+
+def _symmetric(task: FilmTask) -> bool:
+    """Whether signs are sought, or the phases given are those of a stack with its origin on a mirror."""
+    return all(phase % 180 == 0 for phase in (task.phases_deg or {}).values() if np.isfinite(phase))
 
 
 def _with_scale_errors(
@@ -356,15 +382,16 @@ def _phased(
     if task.criteria is None:
         raise InputError("phases_deg", "are not given, and no criteria to find signs by", "give one of the two")
     ranked = _rank(raw, task, threads, max_bytes, progress)
-    if task.rank >= len(ranked.scores):
-        raise InputError("rank", f"is {task.rank}, and {len(ranked.scores)} sign sets are listed", "name one of them")
+    if not 0 <= task.rank < len(ranked.scores):
+        raise InputError("rank", f"is beyond the last of {len(ranked.scores)} sign sets listed", "name one of them")
     phases = ranked.phases_deg(task.rank)
     scale = scale_by_facts(raw, phases, task.facts, unit=task.unit) if task.facts else None
     return phases, _scaled(raw, scale, task), scale, ranked
 
 
 def _scaled(raw: FilmOrders, scale: FilmScale | None, task: FilmTask) -> FilmOrders:
-    return replace(raw, unit=task.unit) if scale is None else scale.apply(raw)
+    # Without a scale the density has no unit, whatever was hoped for.
+    return raw if scale is None else scale.apply(raw)
 
 
 def _rank(
@@ -390,6 +417,12 @@ def _integrals(coefficients: CoefficientSet, task: FilmTask, treatment: Treatmen
         return None
     made: list[IntegralRegion] = []
     for number, region in enumerate(task.regions):
+        if region.end - region.start > coefficients.lattice.volume * (1 + 1e-9):
+            raise InputError(
+                ("regions", number),
+                f"is longer than the period, {coefficients.lattice.volume:g} Å",
+                "give a region within one period",
+            )
         try:
             made.append(slab(coefficients.lattice, [1], region.start, region.end))
         except InputError as fault:
@@ -423,6 +456,18 @@ def _widths(scan: Scan, table: OrderTable, task: FilmTask) -> WidthComparison | 
             rule=task.instrument_rule,
         )
     return compare_widths(measured, table.period)
+
+
+def _left_over(task: FilmTask, raw: FilmOrders) -> tuple[str, ...]:
+    """Phases that met no amplitude."""
+    lost = sorted(set(task.phases_deg or {}) - set(raw.order.tolist()))
+    return (f"phases of orders without an amplitude are not used: {', '.join(map(str, lost))}",) if lost else ()
+
+
+def _unscaled(task: FilmTask, scale: FilmScale | None) -> tuple[str, ...]:
+    if scale is not None or task.unit == "arbitrary":
+        return ()
+    return (f"The scale is arbitrary and the unit not {task.unit}: no facts were given that would make it absolute.",)
 
 
 def _caution(scale: FilmScale | None) -> tuple[str, ...]:

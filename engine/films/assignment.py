@@ -216,7 +216,14 @@ def _range(scan: Scan, q: FloatArray, known: IntArray, period_range: tuple[float
     if known.any():
         periods = 2 * math.pi * known[known > 0] / q[known > 0]
         return 0.9 * float(periods.min()), 1.1 * float(periods.max())
-    return max(SHORTEST, 0.9 * 2 * math.pi / float(q[-1])), min(LONGEST, MOST_ORDERS * 2 * math.pi / float(q[-1]))
+    low, high = max(SHORTEST, 0.9 * 2 * math.pi / float(q[-1])), min(LONGEST, MOST_ORDERS * 2 * math.pi / float(q[-1]))
+    if low >= high:
+        raise InputError(
+            "position",
+            f"leads to no period from {SHORTEST:g} to {LONGEST:g} Å",
+            "correct the wavelength or the positions, or give the range of the period",
+        )
+    return low, high
 
 
 def _choose(score: FloatArray, period: FloatArray, ranked: int, most: int) -> tuple[IntArray, list[float]]:

@@ -36,7 +36,6 @@ from engine.lattice import Lattice
 from engine.phases.concentration import concentration_of_merit
 from engine.symmetry.reflections import classify, orbits
 
-
 COMMON = "the scales of the sets to each other, each common to all coefficients"
 
 

@@ -2,8 +2,13 @@
 
 from __future__ import annotations
 
+import re
+from collections.abc import Mapping
 from dataclasses import replace
 
+import numpy as np
+
+from engine.arrays import refuse_rows
 from engine.films.analysis import Content, FilmTask, Region
 from engine.films.facts import (
     Fact,
@@ -13,7 +18,7 @@ from engine.films.facts import (
     KnownMean,
     KnownTotal,
 )
-from engine.films.scans import Scan
+from engine.films.scans import HIGHEST_ORDER, Scan
 from engine.films.signs import Criteria, Flat, LeastStructure, NonNegative
 from engine.films.signs import KnownDensity as DensityCriterion
 from engine.films.signs import KnownTotal as TotalCriterion
@@ -35,6 +40,7 @@ NEEDED = {
 """Of each kind of fact: what it needs."""
 OPTIONAL = {"composition": ("units", "area_sigma")}
 ALIAS = {"start": "from", "end": "to"}
+ORDER = re.compile("[1-9][0-9]{0,9}")
 
 
 def scan_of(given: ScanIn, place: tuple[str | int, ...] = ("scan",)) -> Scan:
@@ -45,12 +51,21 @@ def scan_of(given: ScanIn, place: tuple[str | int, ...] = ("scan",)) -> Scan:
     Problem
         Pointing to the place in the body.
     """
+    columns = {name: getattr(given, name) for name in ScanIn.model_fields}
     with located(*place, renamed={"position": ("two_theta_deg",)}):
-        return Scan.of(**{name: getattr(given, name) for name in ScanIn.model_fields})
+        if given.saturated is not None:
+            refuse_rows(~np.isin(given.saturated, (0, 1)), "saturated", "is neither 0 nor 1", "give 1 where it is so")
+            columns["saturated"] = given.saturated == 1
+        return Scan.of(**columns)
 
 
-def task(request: FilmTaskIn, scan: Scan) -> FilmTask:
+def task(request: FilmTaskIn, scan: Scan, joint: Mapping[int, float] | None = None) -> FilmTask:
     """What is to be made of a scan.
+
+    Parameters
+    ----------
+    joint : mapping of int to float, optional
+        Phases (degrees) by order that all scans of a run gave together; empty before they are known.
 
     Raises
     ------
@@ -58,16 +73,22 @@ def task(request: FilmTaskIn, scan: Scan) -> FilmTask:
         Pointing to the place in the body.
     """
     spacing, phases = request.spacing, request.phases
-    if (phases.phase_deg is None) == (phases.criteria is None):
-        raise at(("phases",), "have neither or both of phase_deg and criteria", "give one of the two")
+    _check_meaning(request, scan)
+    given = [name for name in ("phase_deg", "criteria", "swelling") if getattr(phases, name) is not None]
+    if len(given) != 1:
+        raise at(("phases",), f"have {' and '.join(given) or 'nothing'}", "give one of phase_deg, criteria, swelling")
+    if phases.swelling is not None and joint is None:
+        raise at(("phases", "swelling"), "needs several periods", "ask for a run, or give phase_deg or criteria")
     for name in ("known_signs", "use", "decisive"):
         if phases.criteria is None and name in phases.model_fields_set:
             raise at(("phases", name), "belongs to criteria", "leave it out")
     envelope = None
     if request.unmeasured is not None:
         bound = request.unmeasured
-        if bound.amplitude is None or bound.formula is not None:
-            raise at(("unmeasured", "amplitude"), "is absent, or formula is given", "give the bound: amplitude and b")
+        for name in sorted(bound.model_fields_set - {"amplitude", "b"}):
+            raise at(("unmeasured", name), "has no meaning for a film", "leave it out; give amplitude and b")
+        if bound.amplitude is None:
+            raise at(("unmeasured", "amplitude"), "is absent", "give the bound: amplitude and b")
         with located("unmeasured"):
             envelope = Envelope.from_bound(bound.amplitude, bound.b)
     with located("window"):
@@ -85,7 +106,7 @@ def task(request: FilmTaskIn, scan: Scan) -> FilmTask:
         rule=request.amplitudes,
         negative=request.negative,
         keep_saturated=request.keep_saturated,
-        phases_deg=None if phases.phase_deg is None else _by_order(phases.phase_deg, ("phases", "phase_deg")),
+        phases_deg=joint if phases.phase_deg is None else _by_order(phases.phase_deg, ("phases", "phase_deg")),
         criteria=None if phases.criteria is None else _criteria(phases.criteria),
         fixed={},
         rank=phases.use - 1,
@@ -105,6 +126,32 @@ def task(request: FilmTaskIn, scan: Scan) -> FilmTask:
     )
     fixed = _by_order({key: float(sign) for key, sign in phases.known_signs.items()}, ("phases", "known_signs"))
     return replace(made, fixed={order: int(sign) for order, sign in fixed.items()})
+
+
+def _check_meaning(request: FilmTaskIn, scan: Scan) -> None:
+    """Refuse what contradicts the rest of the request or would do nothing."""
+    criteria = request.phases.criteria
+    if criteria is not None and not request.facts:
+        for name in ("non_negative", "densities", "totals"):
+            if getattr(criteria, name):
+                raise at(
+                    ("facts",),
+                    f"are absent, and without them {name} says nothing of signs",
+                    "give facts that fix scale and mean, or judge by flat and least_structure alone",
+                )
+    if request.table == "signs" and criteria is None:
+        raise at(("table",), "is of signs found by criteria, of which none are given", "choose another table")
+    if request.spacing.radius_mm is not None and not request.spacing.displacement:
+        raise at(("spacing", "radius_mm"), "has no meaning without displacement", "leave it out, or fit a displacement")
+    if scan.radiation == "neutron":
+        for number, one in enumerate(request.corrections):
+            if one.kind == "polarisation":
+                raise at(("corrections", number, "kind"), "is of X-rays", "leave it out for neutrons")
+    names: set[str] = set()
+    for number, region in enumerate(request.regions):
+        if region.name in names:
+            raise at(("regions", number, "name"), "comes twice", "give each region a name of its own")
+        names.add(region.name)
 
 
 def _facts(given: list[FactIn]) -> tuple[tuple[Fact, ...], Content | None]:
@@ -179,7 +226,8 @@ def _criteria(given: CriteriaIn) -> Criteria:
 def _by_order(given: dict[str, float], place: tuple[str | int, ...]) -> dict[int, float]:
     made = {}
     for key, value in given.items():
-        if not (key.isascii() and key.isdecimal() and 0 < int(key) <= 10_000):
-            raise at((*place, key), "is not an order", "name orders by whole numbers above 0")
+        # An order has one name, so that none is given twice.
+        if not ORDER.fullmatch(key) or int(key) > HIGHEST_ORDER:
+            raise at((*place, key), "is not an order", f'name orders by whole numbers, "1" to "{HIGHEST_ORDER}"')
         made[int(key)] = value
     return made

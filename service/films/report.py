@@ -10,7 +10,7 @@ from engine.films.analysis import FilmAnalysis
 from engine.films.scale import FilmScale
 from engine.films.signs import RankedSigns
 from engine.films.widths import WidthComparison, WidthFit
-from service.analyses.common import heading, rows, table_of
+from service.analyses.common import heading, rows, table_of, told
 from service.analyses.layers import layer_columns, layers_members
 from service.analyses.report import Column, Report
 
@@ -76,16 +76,29 @@ def film_report(made: FilmAnalysis, table: str = "profile", product: str = "film
             "assumed": list(made.change.words),
         },
         "widths": None if made.widths is None else _widths(made.widths),
-        "sources": CITATIONS,
+        "sources": _sources(made),
     }
     # The terminal shows what a person reports; files hold the table asked for.
     others = tuple((name, table_of(columns[name])) for name in ("orders", "layers", "signs") if name != table)
     return Report(
         document=document,
         table=table_of(columns[table]),
-        told=(*_headlines(made), *document["applied"], *document["notes"]),
+        told=tuple(dict.fromkeys((f"{product}; unit: {profile.unit}", *_headlines(made), *told(document)[1:]))),
         further=tuple(one for one in others if one[1]),
     )
+
+
+def _sources(made: FilmAnalysis) -> dict[str, str]:
+    """Citations of the published methods that were used."""
+    criteria = made.task.criteria
+    used = {
+        "amplitudes": made.task.rule == "bayesian",
+        "signs": criteria is not None and (criteria.least_structure is not None or bool(made.task.facts)),
+        "position uncertainties": made.profile.sigma is not None,
+        "widths": made.widths is not None,
+        "refraction": bool(made.spacing.critical_square),
+    }
+    return {name: text for name, text in CITATIONS.items() if used[name]}
 
 
 def _tables(made: FilmAnalysis) -> dict[str, dict[str, Any]]:

@@ -2,34 +2,57 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from typing import Any, Literal
 
 import numpy as np
 
-from engine.films.analysis import FilmAnalysis, analyse_film
+from engine.errors import InputError
+from engine.films.amplitudes import OrderTable
+from engine.films.analysis import FilmAnalysis, analyse_film, measured
+from engine.films.swelling import JointSigns, joint_signs
 from service.analyses.common import rows, table_of
 from service.analyses.report import Limits, Report
 from service.encoders.picture import require_drawing
 from service.films import interpret
 from service.films.report import film_report
+from service.films.swelling import orientation_of, swelling_document
 from service.interpret_picture import picture_options
-from service.problems import located
+from service.problems import at, located
 from service.schemas.films import FilmIn, FilmRunIn, FilmTaskIn, ScanIn
 
 RENAMED: dict[str, tuple[str | int, ...]] = {
     **{name: ("scan", name) for name in ScanIn.model_fields},
     "position": ("scan",),
+    "order": ("scan", "order"),
+    "observed": ("scan", "intensity"),
+    "sigma": ("scan", "width_sigma"),
+    "fixed": ("phases", "known_signs"),
     "period_range": ("spacing", "period_range"),
     "criteria": ("phases", "criteria"),
     "phases_deg": ("phases", "phase_deg"),
     "rank": ("phases", "use"),
     "amplitude": ("scan", "intensity"),
-    "orders": ("scan",),
+    "orders": ("scan", "order"),
     "critical_q": ("spacing", "critical_q"),
     "mean_density": ("spacing", "mean_density"),
     "radius": ("spacing", "radius_mm"),
 }
 """Where in a request the engine's arguments stand."""
+OWN_COLUMNS = ("value", "period", "period_sigma", "decided", "mean", "layers")
+"""Of the table of a run, beside those of its regions."""
+MEMBERS = {
+    "start": "from",
+    "stop": "to",
+    "end": "to",
+    "density": "value",
+    "total": "value",
+    "mean": "value",
+    "factor": "value",
+    "amplitude": "value",
+}
+"""What the engine's members of facts, criteria and regions are called in a request."""
 
 
 def film(request: FilmIn, limits: Limits) -> Report:
@@ -68,20 +91,19 @@ def film_run(request: FilmRunIn, limits: Limits) -> Report:
     Problem
         Pointing to the place in the body.
     """
-    made = []
-    for number, member in enumerate(request.members):
-        made.append(_analysed(request, member.scan, ("members", number, "scan"), limits))
-        if limits.progress is not None:
-            limits.progress(number + 1, len(request.members))
+    _check_names(request)
+    made, joint = _along(request, limits)
     values = [member.value for member in request.members]
     columns: dict[str, Any] = {"value": values, **_figures(made)}
     documents = [film_report(one, request.table).document for one in made]
-    notes = list(dict.fromkeys(note for one in documents for note in one["notes"]))
+    verdict = () if joint is None else (joint.verdict, *joint.notes)
+    notes = list(dict.fromkeys((*verdict, *(note for one in documents for note in one["notes"]))))
     document = {
         "product": "film_run",
         "variable": {"name": request.variable, "unit": request.variable_unit, "values": values},
         "unit": request.unit,
         "table": rows(columns),
+        "swelling": None if joint is None else swelling_document(joint),
         "members": documents,
         "notes": notes,
     }
@@ -90,6 +112,16 @@ def film_run(request: FilmRunIn, limits: Limits) -> Report:
         table=table_of(columns),
         told=(f"value: {request.variable} ({request.variable_unit or 'no unit'})", *notes),
     )
+
+
+def _check_names(request: FilmRunIn) -> None:
+    """Refuse regions whose columns in the table would stand on those of something else."""
+    taken = set(OWN_COLUMNS)
+    for number, region in enumerate(request.regions):
+        columns = {region.name, f"{region.name}_sigma"}
+        if columns & taken:
+            raise at(("regions", number, "name"), "is the name of another column of the table", "choose another name")
+        taken |= columns
 
 
 def film_run_picture(request: FilmRunIn, limits: Limits, form: Literal["png", "svg"]) -> bytes:
@@ -104,21 +136,88 @@ def film_run_picture(request: FilmRunIn, limits: Limits, form: Literal["png", "s
     from service.pictures.films import draw_run
 
     options = picture_options(request.picture)
-    made = [
-        _analysed(request, member.scan, ("members", number, "scan"), limits)
-        for number, member in enumerate(request.members)
-    ]
+    made, _ = _along(request, limits)
     values = [member.value for member in request.members]
     with located("picture"):
         return draw_run(made, values, request.variable, request.variable_unit, options, form)
 
 
-def _analysed(request: FilmTaskIn, scan: ScanIn, place: tuple[str | int, ...], limits: Limits) -> FilmAnalysis:
+def _along(request: FilmRunIn, limits: Limits) -> tuple[list[FilmAnalysis], JointSigns | None]:
+    """Every film of a run; where its swelling gives the signs, also what all of them gave together."""
+    count = len(request.members)
+    places = [("members", number, "scan") for number in range(count)]
+    scans = [member.scan for member in request.members]
+    phases: list[dict[int, float] | None] = [None] * count
+    joint = None
+    if request.phases.swelling is not None:
+        orientation = orientation_of(request.phases.swelling, ("phases", "swelling"))
+        orders = [_measured(request, scan, place).film() for scan, place in zip(scans, places, strict=True)]
+        with located(
+            renamed={"orders": ("members",), "sigma": ("members",), "entry": ("phases", "swelling", "number")}
+        ):
+            joint = joint_signs(orders, orientation=orientation)
+        # A sign that the series does not decide is no phase.
+        phases = [
+            {
+                int(order): 0.0 if sign > 0 else 180.0
+                for order, sign, sure in zip(one.order, signs, decided, strict=True)
+                if sure
+            }
+            for one, signs, decided in zip(orders, joint.signs, joint.decided, strict=True)
+        ]
+    made = []
+    for number in range(count):
+        made.append(_analysed(request, scans[number], places[number], limits, phases[number]))
+        if limits.progress is not None:
+            limits.progress(number + 1, count)
+    return made, joint
+
+
+def _measured(request: FilmTaskIn, scan: ScanIn, place: tuple[str | int, ...]) -> OrderTable:
+    """Amplitudes of one film of a run, before phases are known."""
+    task = interpret.task(request, interpret.scan_of(scan, place), {})
+    with located(renamed=_renamed(place)), _worded(request, scan, place):
+        return measured(task)[2]
+
+
+def _renamed(place: tuple[str | int, ...]) -> dict[str, tuple[str | int, ...]]:
+    return {name: (*place, *where[1:]) if where[0] == "scan" else where for name, where in RENAMED.items()}
+
+
+def _analysed(
+    request: FilmTaskIn,
+    scan: ScanIn,
+    place: tuple[str | int, ...],
+    limits: Limits,
+    joint: Mapping[int, float] | None = None,
+) -> FilmAnalysis:
+    """One film; `joint` are phases that a run gave together."""
     given = interpret.scan_of(scan, place)
-    task = interpret.task(request, given)
-    renamed = {name: (*place, *where[1:]) if where[0] == "scan" else where for name, where in RENAMED.items()}
-    with located(renamed=renamed):
+    task = interpret.task(request, given, joint)
+    with located(renamed=_renamed(place)), _worded(request, scan, place):
         return analyse_film(task, threads=limits.threads, max_bytes=limits.max_bytes)
+
+
+@contextmanager
+def _worded(request: FilmTaskIn, scan: ScanIn, place: tuple[str | int, ...]) -> Iterator[None]:
+    """Give faults of the engine the members' names in a request, and of a run say in which member they are."""
+    try:
+        yield
+    except InputError as fault:
+        first, *rest = fault.path or ("scan",)
+        path: tuple[str | int, ...] = (first, *(MEMBERS.get(str(one), one) for one in rest))
+        rows = fault.rows
+        reason, cure = fault.reason, fault.cure
+        if first in ("order", "orders") and scan.order is None:
+            path = ("position", *rest)
+        if first in ("critical_q", "mean_density"):
+            rows = ()
+        if fault.path == ("criteria", "mean"):
+            path, cure = ("facts",), "give facts that fix scale and mean, or judge by flat and least_structure alone"
+            reason = "fix no mean density, and without it criteria other than these two say nothing of signs"
+        if place[0] == "members" and RENAMED.get(str(path[0]), path)[0] != "scan":
+            reason += f" (in member {place[1]}, counted from 0)"
+        raise type(fault)(path, reason, cure, rows) from fault
 
 
 def _figures(made: list[FilmAnalysis]) -> dict[str, Any]:

@@ -21,7 +21,8 @@ from service.analyses.common import rows, table_of
 from service.analyses.report import Limits, Report
 from service.films.orders import orders_of
 from service.problems import at, located
-from service.schemas.film_models import OrientationIn, SwellingIn
+from service.schemas.film_models import SwellingIn
+from service.schemas.films import OrientationIn
 
 NEEDED = {
     "undecided": (),
@@ -44,7 +45,7 @@ def swelling(request: SwellingIn, limits: Limits) -> Report:
         Pointing to the place in the body.
     """
     sets = [orders_of(one, ("sets", number)) for number, one in enumerate(request.sets)]
-    orientation = _orientation(request.orientation)
+    orientation = orientation_of(request.orientation)
     with located(renamed={"orders": ("sets",), "entry": ("orientation", "number"), "sigma": ("sets",)}):
         found = joint_signs(
             sets,
@@ -53,13 +54,18 @@ def swelling(request: SwellingIn, limits: Limits) -> Report:
             scales=request.scales,
             relative_sigma=request.relative_sigma,
         )
+    document = {"product": "film_swelling", **swelling_document(found, request.samples)}
+    return Report(document=document, table=table_of(_columns(found)), told=(found.verdict, *found.notes))
+
+
+def swelling_document(found: JointSigns, samples: int = 256) -> dict[str, Any]:
+    """What a joint fit says, as plain data."""
     columns = _columns(found)
-    q = np.linspace(0.0, found.transform.largest, request.samples)
+    q = np.linspace(0.0, found.transform.largest, samples)
     value, sigma = found.transform.at(q)
-    z = np.linspace(-found.transform.thickness / 2, found.transform.thickness / 2, request.samples)
+    z = np.linspace(-found.transform.thickness / 2, found.transform.thickness / 2, samples)
     contrast, contrast_sigma = found.transform.contrast(z)
-    document = {
-        "product": "film_swelling",
+    return {
         "settled": found.settled,
         "oriented": found.oriented,
         "verdict": found.verdict,
@@ -68,8 +74,8 @@ def swelling(request: SwellingIn, limits: Limits) -> Report:
         "orders": rows(columns),
         "scales": rows(
             {
-                "set": list(range(1, len(sets) + 1)),
-                "period": [one.period for one in sets],
+                "set": list(range(1, len(found.orders) + 1)),
+                "period": [one.period for one in found.orders],
                 "scale": found.scales,
                 "sigma": found.scale_sigma,
             }
@@ -87,7 +93,6 @@ def swelling(request: SwellingIn, limits: Limits) -> Report:
         "notes": list(found.notes),
         "sources": SOURCES,
     }
-    return Report(document=document, table=table_of(columns), told=(found.verdict, *found.notes))
 
 
 def _columns(found: JointSigns) -> dict[str, Any]:
@@ -106,15 +111,22 @@ def _columns(found: JointSigns) -> dict[str, Any]:
     }
 
 
-def _orientation(given: OrientationIn) -> Orientation:
+def orientation_of(given: OrientationIn, place: tuple[str | int, ...] = ("orientation",)) -> Orientation:
+    """What fixes the common sign.
+
+    Raises
+    ------
+    Problem
+        Pointing below the place.
+    """
     needed = NEEDED[given.kind]
     for name in needed:
         if getattr(given, name) is None:
-            raise at(("orientation", name), "is absent", f"the kind {given.kind} needs it")
+            raise at((*place, name), "is absent", f"the kind {given.kind} needs it")
     for name in sorted(given.model_fields_set - {"kind", *needed}):
-        raise at(("orientation", name), f"has no meaning for the kind {given.kind}", "leave it out")
+        raise at((*place, name), f"has no meaning for the kind {given.kind}", "leave it out")
     sign: Literal["positive", "negative"] = given.sign or "positive"
-    with located("orientation"):
+    with located(*place):
         if given.kind == "excess":
             return excess(sign)
         if given.kind == "total":

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from typing import Any
 
@@ -10,15 +11,23 @@ from matplotlib.axes import Axes
 from matplotlib.ticker import MaxNLocator
 
 from engine.films.analysis import FilmAnalysis
-from service.pictures.canvas import Form, Sheet, settings
-from service.pictures.captions import Caption, number, with_unit
+from service.pictures.canvas import Form, Sheet, plain, set_ticks, set_value_label, settings
+from service.pictures.captions import Caption, number
 from service.pictures.options import PictureOptions
 
 ALTERNATIVES = 4
 """Sign sets shown beside the one used."""
 DASHES = ("-", "--")
-SHARE = 0.46
+SHARE = 0.5
 """Of the height that the profile takes."""
+SMALL = 0.72
+"""Size of the letters of labels, relative to the others."""
+LABEL_ROWS = 2
+"""Of positions of layers above a profile."""
+LEAST_HEIGHT = 5.0
+"""Inches of a page from which it has room for all notes."""
+ROUNDING = 1e-9
+"""Of a period: below it a position is 0."""
 
 
 def draw_film(made: FilmAnalysis, options: PictureOptions, form: Form) -> bytes:
@@ -31,42 +40,95 @@ def draw_film(made: FilmAnalysis, options: PictureOptions, form: Form) -> bytes:
     """
     with settings(options):
         sheet = Sheet(options, _caption(made, options))
-        gap, left = 3.6 * sheet.em, sheet.left + 5.2 * sheet.em
+        gap, left = 2.8 * sheet.em + LABEL_ROWS * SMALL * sheet.em, sheet.left + 5.2 * sheet.em
         width, height = sheet.right - left - 0.8 * sheet.em, sheet.top - sheet.bottom
         low = sheet.bottom + 3.0 * sheet.em
         tall = SHARE * (height - gap)
-        _profile(sheet.axes(left, low, width, tall), made, sheet, options)
+        _profile(sheet.axes(left, low, width, tall), made, sheet, options, (width, tall))
         above = low + tall + gap + 1.2 * sheet.em
         rest = sheet.top - above - 1.2 * sheet.em
         if made.ranked is not None and len(made.ranked.profiles) > 1:
-            half = (width - gap - 2.5 * sheet.em) / 2
-            _amplitudes(sheet.axes(left, above, half, rest), made, sheet)
-            _alternatives(sheet.axes(left + half + gap + 2.5 * sheet.em, above, half, rest), made, sheet)
+            legend, between = 6.6 * sheet.em, 5.6 * sheet.em
+            half = (width - between - legend) / 2
+            _amplitudes(sheet.axes(left, above, half, rest), made, sheet, rest)
+            _alternatives(sheet.axes(left + half + between, above, half, rest), made, sheet, rest)
         else:
-            _amplitudes(sheet.axes(left, above, width, rest), made, sheet)
+            _amplitudes(sheet.axes(left, above, width, rest), made, sheet, rest)
         return sheet.save(form, options.title or "film")
 
 
-def _profile(axes: Axes, made: FilmAnalysis, sheet: Sheet, options: PictureOptions) -> None:
+def _profile(axes: Axes, made: FilmAnalysis, sheet: Sheet, options: PictureOptions, size: tuple[float, float]) -> None:
     place, values, theme = made.profile.axes[0].coordinates(), made.profile.values, sheet.theme
     if made.profile.sigma is not None and options.band > 0:
         spread = options.band * made.profile.sigma.values
         axes.fill_between(place, values - spread, values + spread, color=theme.curves[0], alpha=0.3, linewidth=0)
     axes.plot(place, values, color=theme.curves[0], linewidth=1.3)
     axes.axhline(0, color=theme.ink, linewidth=0.5)
-    high = float(np.max(values))
-    for position, sigma in zip(made.layers.position, _errors(made), strict=True):
+    for position in made.layers.position.tolist():
         axes.axvline(position, color=theme.ink, linewidth=0.4, alpha=0.6)
-        words = number(float(position)) + ("" if sigma is None else f" ± {sigma:.2g}")
-        axes.annotate(
-            words, (position, high), xytext=(2, 3), textcoords="offset points", fontsize="x-small", rotation=0
-        )
-    for region in made.task.regions:
-        axes.axvspan(region.start, region.end, color=theme.ink, alpha=0.06, linewidth=0)
     axes.set_xlim(float(place[0]), float(place[-1]))
+    low, high = axes.get_ylim()
+    # Head room for the names of the regions, so that no curve runs through them.
+    room = 1.6 * SMALL * sheet.em / size[1] if made.task.regions else 0.0
+    axes.set_ylim(low if options.low is None else options.low, low + (high - low) / (1 - room))
+    if options.high is not None:
+        axes.set_ylim(top=options.high)
+    _regions(axes, made, sheet, size[0])
+    _label_layers(axes, made, sheet, size[0])
+    set_ticks(axes, sheet, *size)
     axes.set_xlabel("distance along the normal (Å)")
-    axes.set_ylabel(with_unit("density", made.profile.unit))
+    set_value_label(axes, sheet, "density", made.profile.unit, size[1])
     _plain(axes)
+
+
+def _regions(axes: Axes, made: FilmAnalysis, sheet: Sheet, width: float) -> None:
+    """Shades where the regions lie, in every period that is seen, and their names where there is room."""
+    period = made.spacing.period
+    points = SMALL * sheet.points
+    for region in made.task.regions:
+        first = math.floor(-region.end / period)
+        for turn in range(first, first + 3):
+            low, high = max(region.start + turn * period, 0.0), min(region.end + turn * period, period)
+            if low >= high:
+                continue
+            axes.axvspan(low, high, color=sheet.theme.ink, alpha=0.06, linewidth=0)
+            words = sheet.fitted(plain(region.name), (high - low) / period * width - 0.4 * sheet.em, points)
+            if words in ("", "…"):
+                continue
+            axes.annotate(
+                words,
+                ((low + high) / 2 / period, 1.0),
+                xycoords="axes fraction",
+                xytext=(0, -2),
+                textcoords="offset points",
+                fontsize=points,
+                ha="center",
+                va="top",
+            )
+
+
+def _label_layers(axes: Axes, made: FilmAnalysis, sheet: Sheet, width: float) -> None:
+    """Positions of layers above the frame, in rows so that none covers another; what has no room is left out."""
+    period, points = made.spacing.period, SMALL * sheet.points
+    ends = [-math.inf] * LABEL_ROWS
+    for position, sigma in zip(made.layers.position.tolist(), _errors(made), strict=True):
+        words = number(position) if abs(position) > ROUNDING * period else "0"
+        for text in (words if sigma is None else f"{words} ± {sigma:.2g}", words):
+            wide = sheet.text_width(text, points)
+            start = min(max(position / period * width - wide / 2, 0.0), width - wide)
+            row = next((row for row in range(LABEL_ROWS) if ends[row] < start), None)
+            if row is None:
+                continue
+            ends[row] = start + wide + 0.6 * sheet.em
+            axes.annotate(
+                text,
+                (start / width, 1.0),
+                xycoords="axes fraction",
+                xytext=(0, 2 + row * 1.15 * points),
+                textcoords="offset points",
+                fontsize=points,
+            )
+            break
 
 
 def _errors(made: FilmAnalysis) -> list[float | None]:
@@ -75,7 +137,7 @@ def _errors(made: FilmAnalysis) -> list[float | None]:
     return [None] * made.layers.count if sigma is None else [float(one) if one > 1e-9 else None for one in sigma]
 
 
-def _amplitudes(axes: Axes, made: FilmAnalysis, sheet: Sheet) -> None:
+def _amplitudes(axes: Axes, made: FilmAnalysis, sheet: Sheet, height: float) -> None:
     orders, theme = made.orders, sheet.theme
     known = np.isfinite(made.phase_deg)
     signed = orders.amplitude * np.where(known, np.cos(np.radians(np.nan_to_num(made.phase_deg))), 1.0)
@@ -87,13 +149,13 @@ def _amplitudes(axes: Axes, made: FilmAnalysis, sheet: Sheet) -> None:
         axes.errorbar(orders.order, signed, orders.sigma, fmt="none", ecolor=theme.ink, elinewidth=0.8, capsize=2)
     axes.axhline(0, color=theme.ink, linewidth=0.5)
     axes.set_xlabel("order" + (", pale: sign in doubt" if doubtful else ""))
-    unit = "arbitrary unit" if orders.scale == "arbitrary" else f"{orders.unit} · Å"
-    axes.set_ylabel(f"F ({unit})")
+    unit = "arbitrary" if orders.scale == "arbitrary" else f"{orders.unit} · Å"
+    _label_values(axes, sheet, "F", unit, height)
     axes.xaxis.set_major_locator(MaxNLocator(integer=True))
     _plain(axes)
 
 
-def _alternatives(axes: Axes, made: FilmAnalysis, sheet: Sheet) -> None:
+def _alternatives(axes: Axes, made: FilmAnalysis, sheet: Sheet, height: float) -> None:
     ranked, theme = made.ranked, sheet.theme
     if ranked is None:
         raise AssertionError("drawn only where signs were ranked")
@@ -103,11 +165,30 @@ def _alternatives(axes: Axes, made: FilmAnalysis, sheet: Sheet) -> None:
             "linestyle": DASHES[row // len(theme.curves)],
             "linewidth": 1.4 if row == 0 else 0.9,
         }
-        axes.plot(ranked.z, profile, label=f"{row + 1}: score {ranked.scores[row]:.4g}", **style)
-    axes.legend(fontsize="x-small", frameon=False, loc="best")
-    axes.set_xlabel("distance from mirror to mirror (Å)")
-    axes.set_ylabel(with_unit("density", ranked.unit))
+        axes.plot(ranked.z, profile, label=f"{row + 1}: {ranked.scores[row]:.4g}", **style)
+    # Beside the curves, where it hides none.
+    axes.legend(
+        title="sign set: score",
+        fontsize=SMALL * sheet.points,
+        title_fontsize=SMALL * sheet.points,
+        frameon=False,
+        loc="upper left",
+        bbox_to_anchor=(1.0, 1.0),
+        borderaxespad=0.0,
+        handlelength=1.4,
+        labelspacing=0.2,
+    )
+    axes.set_xlim(float(ranked.z[0]), float(ranked.z[-1]))
+    axes.set_xlabel("mirror to mirror (Å)")
+    _label_values(axes, sheet, "density", ranked.unit, height)
     _plain(axes)
+
+
+def _label_values(axes: Axes, sheet: Sheet, name: str, unit: str, height: float) -> None:
+    """Ticks and a label for a low panel, in smaller letters so that its unit has room."""
+    axes.yaxis.set_major_locator(MaxNLocator(nbins=max(2, min(6, int(height / 2.2 / sheet.em)))))
+    set_value_label(axes, sheet, name, unit, height / SMALL)
+    axes.yaxis.label.set_fontsize(SMALL * sheet.points)
 
 
 def _plain(axes: Axes) -> None:
@@ -121,12 +202,21 @@ def _caption(made: FilmAnalysis, options: PictureOptions) -> Caption:
     if made.ranked is not None:
         needed.append(made.ranked.verdict)
     if made.scale is not None:
-        needed.append(made.scale.words[:1].upper() + made.scale.words[1:] + ".")
+        needed.append(made.scale.words)
     needed.append("Phases decide: wrong phases give a wrong profile that looks as sharp.")
     sigma = made.profile.sigma
     if sigma is not None:
         needed.append(f"Band: ±{options.band:g} σ, of {'; '.join(sigma.contains)}.")
-    return Caption(tuple(needed), tuple(note for note in made.notes if note not in needed))
+    told = [_sentence(one) for one in needed]
+    # On a small page the curves need the room; the notes are in every other form of the answer.
+    further = [_sentence(note) for note in made.notes] if options.inches[1] >= LEAST_HEIGHT else []
+    return Caption(tuple(told), tuple(note for note in further if note not in told))
+
+
+def _sentence(words: str) -> str:
+    if words[:1].isascii():  # A symbol keeps its case.
+        words = words[:1].upper() + words[1:]
+    return words if words.endswith((".", "!", "?")) else f"{words}."
 
 
 def draw_run(
@@ -158,7 +248,7 @@ def draw_run(
         theme = sheet.theme
         spans = [float(np.ptp(one.profile.values)) for one in made]
         step = 0.35 * (max(spans) or 1.0)
-        ends = []
+        ends: list[tuple[float, str]] = []
         for row, (one, value) in enumerate(zip(made, values, strict=True)):
             place, raised = one.profile.axes[0].coordinates(), one.profile.values + row * step
             # The first lie in front: later ones are drawn before them and hidden where they overlap.
@@ -166,18 +256,25 @@ def draw_run(
             axes.fill_between(place, raised, raised.min() - step, color=theme.paper, linewidth=0, zorder=depth)
             axes.plot(place, raised, color=theme.curves[0], linewidth=1.1, zorder=depth + 1)
             ends.append((float(raised[-1]), f"{value:g} {unit}".rstrip()))
+        tall = sheet.top - low - 0.6 * sheet.em
+        bottom, top = axes.get_ylim()
+        least, last = 1.1 * SMALL * sheet.em / tall * (top - bottom), -math.inf
+        # Labels that would cover the one before are left out.
         for height, words in ends:
+            if height < last + least:
+                continue
+            last = height
             axes.annotate(
-                words,
+                sheet.fitted(plain(words), 5.4 * sheet.em, SMALL * sheet.points),
                 (1.0, height),
                 xycoords=("axes fraction", "data"),
                 xytext=(4, 0),
                 textcoords="offset points",
-                fontsize="x-small",
+                fontsize=SMALL * sheet.points,
                 va="center",
             )
         axes.set_xlim(0, max(one.spacing.period for one in made))
         axes.set_xlabel("distance along the normal (Å)")
-        axes.set_ylabel(with_unit("density, raised", made[0].profile.unit))
+        set_value_label(axes, sheet, "density, raised", made[0].profile.unit, tall)
         _plain(axes)
         return sheet.save(form, options.title or "film run")

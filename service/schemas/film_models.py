@@ -8,7 +8,7 @@ from pydantic import Field
 
 from service.schemas.base import Coordinate, Length, Strict
 from service.schemas.columns import NumberColumn
-from service.schemas.films import FilmRequestIn
+from service.schemas.films import FilmRequestIn, OrientationIn
 
 Name = Annotated[str, Field(min_length=1, max_length=60)]
 
@@ -23,20 +23,6 @@ class OrdersIn(Strict):
     sigma: NumberColumn | None = None
     absolute: bool = Field(False, description="whether amplitudes are density × Å")
     unit: str = Field("arbitrary", min_length=1, max_length=40, description="of the density")
-
-
-class OrientationIn(Strict):
-    """What fixes the sign common to all orders.
-
-    excess: the layer scatters more (or less) than what it displaces. total: ∫ of the difference. known_order: one sign.
-    never_negative: in a solvent of known density, absolute amplitudes."""
-
-    kind: Literal["undecided", "excess", "total", "known_order", "never_negative"]
-    sign: Literal["positive", "negative"] | None = None
-    value: float | None = Field(None, description="total, or the density of the solvent")
-    sigma: float | None = Field(None, gt=0)
-    number: Annotated[int, Field(ge=1)] | None = Field(None, description="known_order: of the set, from 1")
-    order: Annotated[int, Field(ge=1)] | None = None
 
 
 class SwellingIn(FilmRequestIn):

@@ -185,17 +185,6 @@ class FilmReport(ReportOut):
     sources: dict[str, str] = Field(description="published methods used")
 
 
-class FilmRunReport(BaseModel):
-    """Films along a run."""
-
-    product: str
-    variable: VariableOut
-    unit: str
-    table: list[dict[str, float | int | bool | None]] = Field(description="one row a film")
-    members: list[FilmReport]
-    notes: list[str]
-
-
 class SwellingOrderOut(BaseModel):
     """One order of one set."""
 
@@ -252,10 +241,9 @@ class SolutionOut(BaseModel):
     reversed: list[ReversedOut]
 
 
-class SwellingReport(BaseModel):
+class JointSignsOut(BaseModel):
     """Signs of one layer from several periods."""
 
-    product: str
     settled: bool
     oriented: bool
     verdict: str
@@ -268,6 +256,24 @@ class SwellingReport(BaseModel):
     solutions: list[SolutionOut]
     notes: list[str]
     sources: dict[str, str]
+
+
+class SwellingReport(JointSignsOut):
+    """Signs of one layer from several periods."""
+
+    product: str
+
+
+class FilmRunReport(BaseModel):
+    """Films along a run."""
+
+    product: str
+    variable: VariableOut
+    unit: str
+    table: list[dict[str, float | int | bool | None]] = Field(description="one row a film")
+    swelling: JointSignsOut | None = Field(description="what the run's swelling says of the signs")
+    members: list[FilmReport]
+    notes: list[str]
 
 
 class RefinedOut(BaseModel):

@@ -14,6 +14,12 @@ from service.schemas.preparation import CorrectionIn
 from service.schemas.products import UnmeasuredIn
 from service.schemas.treatment import WindowIn
 
+LARGEST = 1e30
+"""Bound of densities, σ's and weights: squares of larger numbers leave the range of floating point."""
+Density = Annotated[float, Field(ge=-LARGEST, le=LARGEST)]
+Spread = Annotated[float, Field(ge=0, le=LARGEST)]
+Positive = Annotated[float, Field(gt=0, le=LARGEST)]
+
 SCAN_COLUMNS = (
     "two_theta_deg",
     "q",
@@ -55,7 +61,7 @@ class SpacingIn(Strict):
     displacement: bool = Field(False, description="fit a displacement of the sample")
     radius_mm: Length | None = Field(None, description="of the goniometer: displacement in mm instead of relative")
     critical_q: Length | None = Field(None, description="for refraction, q′² = q² − q_c², Å⁻¹; or")
-    mean_density: float | None = Field(None, description="the mean density it follows from")
+    mean_density: Density | None = Field(None, description="the mean density it follows from")
 
 
 class FlatIn(Strict):
@@ -63,8 +69,8 @@ class FlatIn(Strict):
 
     start: Coordinate = Field(alias="from")
     end: Coordinate = Field(alias="to")
-    sigma: float = Field(0.0, ge=0, description="unevenness that is allowed, in the density's unit")
-    weight: float = Field(1.0, gt=0)
+    sigma: Spread = Field(0.0, description="unevenness that is allowed, in the density's unit")
+    weight: Positive = 1.0
 
 
 class KnownIn(Strict):
@@ -72,22 +78,22 @@ class KnownIn(Strict):
 
     start: Coordinate = Field(alias="from")
     end: Coordinate | None = Field(None, alias="to", description="left out: at the point `from`")
-    value: float
-    sigma: float = Field(gt=0)
-    weight: float = Field(1.0, gt=0)
+    value: Density
+    sigma: Positive
+    weight: Positive = 1.0
 
 
 class WeightIn(Strict):
     """A criterion's weight: 1 takes it as seriously as the errors say."""
 
-    weight: float = Field(1.0, gt=0)
+    weight: Positive = 1.0
 
 
 class FloorIn(Strict):
     """The density is nowhere below a floor."""
 
-    floor: float = 0.0
-    weight: float = Field(1.0, gt=0)
+    floor: Density = 0.0
+    weight: Positive = 1.0
 
 
 class CriteriaIn(Strict):
@@ -100,13 +106,31 @@ class CriteriaIn(Strict):
     least_structure: WeightIn | None = None
 
 
+class OrientationIn(Strict):
+    """What fixes the sign common to all orders.
+
+    excess: the layer scatters more (or less) than what it displaces. total: ∫ of the difference. known_order: one sign.
+    never_negative: in a solvent of known density, absolute amplitudes."""
+
+    kind: Literal["undecided", "excess", "total", "known_order", "never_negative"]
+    sign: Literal["positive", "negative"] | None = None
+    value: Density | None = Field(None, description="total, or the density of the solvent")
+    sigma: Positive | None = None
+    number: Annotated[int, Field(ge=1)] | None = Field(None, description="known_order: of the set, from 1")
+    order: Annotated[int, Field(ge=1)] | None = None
+
+
 class PhasesIn(Strict):
     """Phases given, or signs found."""
 
-    phase_deg: dict[str, float] | None = Field(
+    phase_deg: dict[str, Annotated[float, Field(ge=-1e6, le=1e6)]] | None = Field(
         None, max_length=1000, description='by order, such as {"1": 0, "2": 180}; or'
     )
-    criteria: CriteriaIn | None = Field(None, description="what signs are judged by")
+    criteria: CriteriaIn | None = Field(None, description="what signs are judged by; or")
+    swelling: OrientationIn | None = Field(
+        None,
+        description="of a run: signs from the continuity of the layer's transform, and what fixes their common sign",
+    )
     known_signs: dict[str, Literal[-1, 1]] = Field({}, max_length=1000, description="by order")
     use: Annotated[int, Field(ge=1, le=10)] = Field(1, description="which of the sign sets ranked is used")
     decisive: float = Field(DECISIVE, gt=0, description="margin from which on the best sign set counts as decided")
@@ -121,12 +145,12 @@ class FactIn(Strict):
     kind: Literal["density", "total", "mean", "composition", "factor", "amplitude"]
     start: Coordinate | None = Field(None, alias="from")
     end: Coordinate | None = Field(None, alias="to")
-    value: float | None = None
-    sigma: float = Field(0.0, ge=0)
+    value: Density | None = None
+    sigma: Spread = 0.0
     formula: str | None = Field(None, max_length=1000, description="composition: of a formula unit")
-    units: float = Field(1.0, gt=0, description="composition: formula units in a repeat unit")
+    units: float = Field(1.0, gt=0, le=1e6, description="composition: formula units in a repeat unit")
     area: Length | None = Field(None, description="composition: Å² of the plane per repeat unit")
-    area_sigma: float = Field(0.0, ge=0)
+    area_sigma: Spread = 0.0
     order: Annotated[int, Field(ge=1)] | None = Field(None, description="amplitude: which")
 
 
@@ -159,12 +183,14 @@ class FilmTaskIn(FilmRequestIn):
     unit: str = Field("arbitrary", min_length=1, max_length=40, description="of the density")
     samples: Annotated[int, Field(ge=16, le=100_000)] = 513
     window: WindowIn = WindowIn()
-    baseline: Literal["minima", "higher_minimum", "zero"] | float = "minima"
-    least_significance: float = Field(3.0, ge=0, description="of a layer, σ of its prominence")
+    baseline: Literal["minima", "higher_minimum", "zero"] | Density = "minima"
+    least_significance: Spread = Field(3.0, description="of a layer, σ of its prominence")
     regions: list[FilmRegionIn] = Field([], max_length=50)
     area: Length | None = Field(None, description="Å² of the plane per repeat unit: numbers per unit are told too")
     unmeasured: UnmeasuredIn | None = Field(None, description="by a bound: `amplitude` and `b`")
-    instrument_width: float | None = Field(None, ge=0, description="full width at half maximum, unit of the positions")
+    instrument_width: float | None = Field(
+        None, ge=0, le=180, description="full width at half maximum, unit of the positions"
+    )
     instrument_rule: Literal["gaussian", "lorentzian"] = "gaussian"
     picture: PictureIn | None = None
     table: Literal["layers", "profile", "orders", "signs"] = Field(

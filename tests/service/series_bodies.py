@@ -6,7 +6,12 @@ from typing import Any
 
 from tests.service.analyses.asked import FEW, FILM, LATER
 
-LAST: dict[str, Any] = {**FILM, "amplitude": [13.5, 39.0, 8.0, 24.0], "phase_deg": [0, 180, 180, 0]}
+LAST: dict[str, Any] = {
+    **FILM,
+    "amplitude": [13.5, 39.0, 8.0, 24.0],
+    "phase_deg": [0, 180, 180, 0],
+    "sigma": [0.9, 0.2, 0.5, 0.1],
+}
 SERIES: dict[str, Any] = {
     "set": FILM,
     "variable": "temperature",
@@ -14,7 +19,7 @@ SERIES: dict[str, Any] = {
     "members": [
         {"value": 290.0, "set": {}},
         {"value": 310.0, "set": {"amplitude": LATER["amplitude"]}},
-        {"value": 330.0, "set": {"amplitude": LAST["amplitude"], "phase_deg": LAST["phase_deg"]}},
+        {"value": 330.0, "set": {name: LAST[name] for name in ("amplitude", "phase_deg", "sigma")}},
     ],
     "profile": {"from": [0], "to": [1], "samples": 17},
     "scale": {"kind": "as_given"},

@@ -20,9 +20,15 @@ def test_profiles_are_shades_on_one_scale():
     assert [line.split()[:2] for line in lines[:3]] == [["290", "K"], ["310", "K"], ["330", "K"]]
     assert lines[0].endswith(f"{made.values[0].min():.4g} … {made.values[0].max():.4g}")
     assert "temperature; 3 × 17 values in e/Å³" in lines[4]
-    # Only the highest of all is as dark as can be.
     assert "█" in lines[int(made.values.max(axis=1).argmax())]
     assert max(map(len, lines)) < 200
+
+
+def test_a_weak_row_is_pale():
+    weak = {"amplitude": [0.1 * one for one in SERIES["set"]["amplitude"]]}
+    _, lines = shown({**SERIES, "members": [{"value": 1.0, "set": {}}, {"value": 2.0, "set": weak}]})
+    assert "█" in lines[0]
+    assert not set("▓█") & set(lines[1])
 
 
 def test_flat_rows_are_blank():

@@ -113,6 +113,13 @@ def test_options_reach_the_engine():
     assert any("lanczos" in word.lower() or "Lanczos" in word for word in made["applied"])
 
 
+def test_bounds_of_the_value():
+    every = [one["value"] for one in report("extrema", {"set": FEW, "kinds": ["saddle"]}).document["extrema"]]
+    low, high = sorted(every)[1], sorted(every)[-2]
+    bounded = {"set": FEW, "kinds": ["saddle"], "least_value": low - 1e-6, "greatest_value": high + 1e-6}
+    assert [one["value"] for one in report("extrema", bounded).document["extrema"]] == sorted(every)[1:-1]
+
+
 @pytest.mark.parametrize("coordinates", ["fractional", "cartesian"])
 def test_regions(coordinates):
     lattice = FEW_SET.lattice

@@ -89,5 +89,11 @@ def test_unit_cannot_break_out_of_the_comments():
 def test_progress_is_passed_on():
     told = []
     with Spool.unnamed() as spool:
-        write(Wanted(product="grid"), prepare(CRYSTAL, CELL), "json", spool, lambda done, total: told.append((done, total)))
+        write(
+            Wanted(product="grid"),
+            prepare(CRYSTAL, CELL),
+            "json",
+            spool,
+            lambda done, total: told.append((done, total)),
+        )
     assert told[-1] == (4, 4)

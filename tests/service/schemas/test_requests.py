@@ -6,9 +6,8 @@ from pydantic import ValidationError
 from service.routes.compute import ADDRESSES
 from service.schemas.analyses import ANALYSES
 from service.schemas.coefficient_set import ReflectionSetIn
-from service.schemas.films import FILMS
 from service.schemas.products import PRODUCTS
-from service.schemas.requests import INSPECT, REQUESTS, SERIES, InspectIn
+from service.schemas.requests import FILMS, INSPECT, REQUESTS, SERIES, InspectIn
 
 
 def test_every_kind_of_request_has_an_address():
