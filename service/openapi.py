@@ -246,13 +246,13 @@ def _answers(product: str) -> dict[str, Any]:
     for name in formats_of(product):
         schema: dict[str, Any] = {"type": "string", "format": "binary"}
         if name == "json":
-            answer = (
-                SummaryAnswer
-                if product == INSPECT
-                else StackAnswer
-                if product == SERIES
-                else REPORTS.get(product, Answer)
-            )
+            reports: dict[str, type[BaseModel]] = {
+                INSPECT: SummaryAnswer,
+                SERIES: StackAnswer,
+                **REPORTS,
+                **FILM_REPORTS,
+            }
+            answer = reports.get(product, Answer)
             schema = {"$ref": _SCHEMAS + answer.__name__}
         elif name in ("csv", "svg"):
             schema = {"type": "string"}

@@ -1,5 +1,6 @@
 """Layered films: from a scan's order table to a layer profile that can be reported.
 
+task.py          what is to be made of a scan
 scans.py         what is measured: positions, intensities, widths of lines
 assignment.py    which order each line is (numbering.py weighs the evidence)
 spacing.py       the period by least squares (positions.py is the model)

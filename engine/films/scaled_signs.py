@@ -97,8 +97,8 @@ def rank_scaled(
         max_bytes=max_bytes,
         progress=progress,
     )
+    # Known signs of odd orders leave no equivalent, those of even ones are the same in it.
     sets = first.signs if first.equivalent is None else np.concatenate([first.signs, first.equivalent])
-    sets = sets[_allowed(first.order, sets, fixed)]
     judged, refused = _judge(raw, criteria, facts, unit, np.unique(sets, axis=0), decisive)
     if not judged:
         raise InputError(
@@ -112,13 +112,6 @@ def rank_scaled(
 
 def _needs_phases(fact: Fact) -> bool:
     return isinstance(fact, KnownDensity | KnownTotal)
-
-
-def _allowed(order: IntArray, sets: IntArray, fixed: Mapping[int, int] | None) -> FloatArray:
-    kept = np.ones(len(sets), dtype=np.bool_)
-    for one, sign in (fixed or {}).items():
-        kept &= (sets[:, order == one] * sign >= 0).all(axis=1)
-    return np.asarray(kept)
 
 
 def _judge(

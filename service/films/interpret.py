@@ -9,7 +9,6 @@ from dataclasses import replace
 import numpy as np
 
 from engine.arrays import refuse_rows
-from engine.films.analysis import Content, FilmTask, Region
 from engine.films.facts import (
     Fact,
     KnownAmplitude,
@@ -22,6 +21,7 @@ from engine.films.scans import HIGHEST_ORDER, Scan
 from engine.films.signs import Criteria, Flat, LeastStructure, NonNegative
 from engine.films.signs import KnownDensity as DensityCriterion
 from engine.films.signs import KnownTotal as TotalCriterion
+from engine.films.task import Content, FilmTask, Region
 from engine.resolution.envelope import Envelope
 from engine.scattering import composition
 from engine.windows import Window
@@ -41,6 +41,8 @@ NEEDED = {
 OPTIONAL = {"composition": ("units", "area_sigma")}
 ALIAS = {"start": "from", "end": "to"}
 ORDER = re.compile("[1-9][0-9]{0,9}")
+WIDEST = 180.0
+"""Degrees, or Å⁻¹: no line is wider."""
 
 
 def scan_of(given: ScanIn, place: tuple[str | int, ...] = ("scan",)) -> Scan:
@@ -56,6 +58,9 @@ def scan_of(given: ScanIn, place: tuple[str | int, ...] = ("scan",)) -> Scan:
         if given.saturated is not None:
             refuse_rows(~np.isin(given.saturated, (0, 1)), "saturated", "is neither 0 nor 1", "give 1 where it is so")
             columns["saturated"] = given.saturated == 1
+        for name in ("position_sigma", "width", "width_sigma"):
+            if columns[name] is not None:
+                refuse_rows(columns[name] > WIDEST, name, f"is above {WIDEST:g}", "give it in the positions' unit")
         return Scan.of(**columns)
 
 

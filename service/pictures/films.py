@@ -26,6 +26,8 @@ LABEL_ROWS = 2
 """Of positions of layers above a profile."""
 LEAST_HEIGHT = 5.0
 """Inches of a page from which it has room for all notes."""
+STEP = 0.6
+"""From one profile of a run to the next, relative to the height of the highest."""
 ROUNDING = 1e-9
 """Of a period: below it a position is 0."""
 
@@ -244,36 +246,30 @@ def draw_run(
     with settings(options):
         sheet = Sheet(options, caption)
         left, low = sheet.left + 5.2 * sheet.em, sheet.bottom + 3.0 * sheet.em
-        axes = sheet.axes(left, low, sheet.right - left - 6 * sheet.em, sheet.top - low - 0.6 * sheet.em)
-        theme = sheet.theme
-        spans = [float(np.ptp(one.profile.values)) for one in made]
-        step = 0.35 * (max(spans) or 1.0)
-        ends: list[tuple[float, str]] = []
-        for row, (one, value) in enumerate(zip(made, values, strict=True)):
-            place, raised = one.profile.axes[0].coordinates(), one.profile.values + row * step
-            # The first lie in front: later ones are drawn before them and hidden where they overlap.
-            depth = 2 * (len(made) - row)
-            axes.fill_between(place, raised, raised.min() - step, color=theme.paper, linewidth=0, zorder=depth)
-            axes.plot(place, raised, color=theme.curves[0], linewidth=1.1, zorder=depth + 1)
-            ends.append((float(raised[-1]), f"{value:g} {unit}".rstrip()))
-        tall = sheet.top - low - 0.6 * sheet.em
+        wide, tall = sheet.right - left - 6 * sheet.em, sheet.top - low - 0.6 * sheet.em
+        axes = sheet.axes(left, low, wide, tall)
+        step = STEP * (max(float(np.ptp(one.profile.values)) for one in made) or 1.0)
+        longest = max(one.spacing.period for one in made)
+        for row, one in enumerate(made):
+            raised = one.profile.values + row * step
+            axes.plot(one.profile.axes[0].coordinates(), raised, color=sheet.theme.curves[0], linewidth=1.1)
         bottom, top = axes.get_ylim()
-        least, last = 1.1 * SMALL * sheet.em / tall * (top - bottom), -math.inf
-        # Labels that would cover the one before are left out.
-        for height, words in ends:
-            if height < last + least:
+        axes.set_ylim(bottom, top)
+        points = SMALL * sheet.points
+        covered: list[tuple[float, float]] = []
+        for row, (one, value) in enumerate(zip(made, values, strict=True)):
+            # Each label stands at its curve's end; one that would cover another is left out.
+            end, height = one.spacing.period, float(one.profile.values[-1]) + row * step
+            words = sheet.fitted(plain(f"{value:g} {unit}".rstrip()), 5.4 * sheet.em, points)
+            place = (end / longest * wide, (height - bottom) / (top - bottom) * tall)
+            if any(
+                abs(place[0] - across) < 5.4 * sheet.em and abs(place[1] - up) < 1.1 * points / 72
+                for across, up in covered
+            ):
                 continue
-            last = height
-            axes.annotate(
-                sheet.fitted(plain(words), 5.4 * sheet.em, SMALL * sheet.points),
-                (1.0, height),
-                xycoords=("axes fraction", "data"),
-                xytext=(4, 0),
-                textcoords="offset points",
-                fontsize=SMALL * sheet.points,
-                va="center",
-            )
-        axes.set_xlim(0, max(one.spacing.period for one in made))
+            covered.append(place)
+            axes.annotate(words, (end, height), xytext=(4, 0), textcoords="offset points", fontsize=points, va="center")
+        axes.set_xlim(0, longest)
         axes.set_xlabel("distance along the normal (Å)")
         set_value_label(axes, sheet, "density, raised", made[0].profile.unit, tall)
         _plain(axes)

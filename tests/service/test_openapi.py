@@ -9,12 +9,16 @@ import pytest
 
 from service.app import create_app
 from service.encoders.negotiation import MEDIA_TYPES, formats_of
-from service.intake import FILE_TYPES
+from service.intake import FILE_TYPES, FILES
 from service.openapi import EXAMPLES
 from service.problems import TITLES
-from service.schemas.analyses import ANALYSES
+from service.routes.compute import ADDRESSES
+from service.schemas.answers import Answer, StackAnswer
+from service.schemas.film_models import MODELS
+from service.schemas.film_reports import FILM_REPORTS
 from service.schemas.products import PRODUCTS
 from service.schemas.reports import REPORTS
+from service.schemas.requests import INSPECT, REQUESTS, SERIES
 from service.settings import Settings
 from tests.service import bodies
 from tests.service.problem_shape import assert_problem
@@ -28,7 +32,7 @@ each_operation = pytest.mark.parametrize("operation", OPERATIONS.values(), ids=[
 STATEMENTS = {
     "$ref", "type", "properties", "required", "additionalProperties", "items", "minItems", "maxItems", "enum", "const",
     "anyOf", "allOf", "oneOf", "minimum", "maximum", "exclusiveMinimum", "exclusiveMaximum", "minLength", "maxLength",
-    "title", "description", "default", "format", "examples", "maxProperties",
+    "title", "description", "default", "format", "examples", "maxProperties", "discriminator",
 }  # fmt: skip
 TYPES = {"object", "array", "string", "number", "integer", "boolean", "null"}
 
@@ -77,8 +81,7 @@ def test_frame():
     assert "phases" in DOCUMENT["info"]["description"]
     assert set(DOCUMENT) <= {"openapi", "info", "paths", "components", "tags", "servers"}
     assert {path for _, path in OPERATIONS} == {
-        *(f"/v1/{name}" for name in (*PRODUCTS, *ANALYSES)),
-        "/v1/sets/inspect",
+        *(f"/v1{address}" for address in ADDRESSES.values()),
         "/health/live",
         "/health/ready",
     }
@@ -137,7 +140,7 @@ def test_bodies_are_described_as_strictly_as_they_are_checked():
 @pytest.mark.parametrize("product", PRODUCTS)
 def test_errors_are_described(product):
     responses = OPERATIONS["post", f"/v1/{product}"]["responses"]
-    assert set(map(int, responses)) == {200, 400, 406, 413, 415, 422, 500, 503, 504}
+    assert set(map(int, responses)) == {200, 400, 406, 413, 415, 422, 500, 501, 503, 504}
     for status, response in responses.items():
         if int(status) != 200:
             assert list(response["content"]) == ["application/problem+json"]
@@ -158,22 +161,25 @@ def test_forms_of_answer_are_described_and_given(client, product):
         assert answer.headers["content-type"].split(";")[0] in described
 
 
-@pytest.mark.parametrize("product", [*PRODUCTS, *ANALYSES])
+@pytest.mark.parametrize("product", sorted(EXAMPLES))
 def test_every_example_is_answered(client, product):
-    body = OPERATIONS["post", f"/v1/{product}"]["requestBody"]
+    address = f"/v1{ADDRESSES[product]}"
+    body = OPERATIONS["post", address]["requestBody"]
     assert body["required"] is True
-    assert set(body["content"]) == {"application/json", "multipart/form-data"}
+    # A stack of models has no table beside it.
+    assert set(body["content"]) == {"application/json"} | ({"multipart/form-data"} if product not in MODELS else set())
     examples = body["content"]["application/json"]["examples"]
     assert examples
     for example in examples.values():
         assert example["summary"]
-        answer = client.post(f"/v1/{product}", json=example["value"])
+        answer = client.post(address, json=example["value"])
         assert answer.status_code == 200, answer.text
-        check_shape(answer.json(), REPORTS[product].__name__ if product in REPORTS else "Answer")
+        shapes = {SERIES: StackAnswer, **REPORTS, **FILM_REPORTS}
+        check_shape(answer.json(), shapes.get(product, Answer).__name__)
 
 
 def test_examples_are_of_every_product_and_analysis():
-    assert set(EXAMPLES) == {*PRODUCTS, *ANALYSES}
+    assert set(EXAMPLES) == set(REQUESTS) - {INSPECT}
 
 
 INSPECTION = OPERATIONS["post", "/v1/sets/inspect"]
@@ -182,7 +188,7 @@ INSPECTION = OPERATIONS["post", "/v1/sets/inspect"]
 def test_files_are_described_wherever_they_are_taken():
     for product in PRODUCTS:
         form = OPERATIONS["post", f"/v1/{product}"]["requestBody"]["content"]["multipart/form-data"]
-        parts = {"request", "columns", "reflections", "reference"}
+        parts = {"request", *FILES}
         assert set(form["schema"]["properties"]) == parts == set(form["encoding"])
         assert form["schema"]["required"] == ["request"]
     content = INSPECTION["requestBody"]["content"]
@@ -202,7 +208,7 @@ def test_a_file_is_no_component():
 
 
 def test_errors_of_an_inspection_are_described():
-    assert set(map(int, INSPECTION["responses"])) == {200, 400, 406, 413, 415, 422, 500, 503, 504}
+    assert set(map(int, INSPECTION["responses"])) == {200, 400, 406, 413, 415, 422, 500, 501, 503, 504}
 
 
 def test_forms_of_a_summary_are_described():

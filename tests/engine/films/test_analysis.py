@@ -15,13 +15,14 @@ from engine.features.integrals import integrals, slab
 from engine.features.layer_distances import layer_distances
 from engine.features.layers import layers
 from engine.fields import Treatment
-from engine.films.analysis import Content, FilmTask, Region, analyse_film, number_lines
+from engine.films.analysis import analyse_film, number_lines
 from engine.films.facts import KnownDensity, KnownFactor, KnownMean
 from engine.films.orders import FilmOrders
 from engine.films.scale import scale_by_facts
 from engine.films.scans import Scan
 from engine.films.signs import Criteria, Flat, LeastStructure, NonNegative
 from engine.films.spacing import fit_spacing
+from engine.films.task import Content, FilmTask, Region
 from engine.resolution.envelope import Envelope
 from engine.sampling import lattice_line
 from engine.scattering import composition
@@ -388,6 +389,16 @@ def test_zero_shift_is_fitted():
     found = analyse_film(task(moved, zero_shift=True))
     assert found.spacing.zero_shift_deg == pytest.approx(0.05, abs=1e-6)
     assert found.spacing.period == pytest.approx(PERIOD, rel=1e-6)
+
+
+def test_scatter_beyond_the_errors_given_widens_that_of_the_period():
+    scan = scanned(seed=6, blur=0.003)
+    sure = replace(scan, position_sigma=scan.position_sigma / 10)
+    other = analyse_film(task(sure)).spacing
+    assert other.sigma_source == "given, scaled"
+    scatter = np.sqrt((other.residual**2).sum() / other.degrees)
+    alone = fit_spacing(scan, ORDER).period_sigma
+    assert other.period_sigma == pytest.approx(alone * scatter / 0.003, rel=1e-3)
 
 
 def test_lines_that_carry_orders_are_not_numbered_anew():

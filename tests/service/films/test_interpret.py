@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from engine.films.analysis import Region
 from engine.films.facts import KnownAmplitude, KnownDensity, KnownFactor, KnownMean, KnownTotal
+from engine.films.task import Region
 from service.films import interpret
 from service.problems import Problem
 from tests.service.films.asked import FILM, GIVEN, SIMPLE, answered, asked, changed, refused, scan
@@ -109,6 +109,9 @@ REFUSED = {
     "a σ of 0": (changed(FILM, scan__position_sigma__3=0.0), "/scan/position_sigma/3"),
     "widths of 0": (changed(FILM, scan__width__3=0.0), "/scan/width/3"),
     "σ's of widths of 0": (changed(FILM, scan__width_sigma__3=0.0), "/scan/width_sigma/3"),
+    "a line wider than any": (changed(FILM, scan__width__3=1e200), "/scan/width/3"),
+    "a position known not at all": (changed(FILM, scan__position_sigma__3=1e200), "/scan/position_sigma/3"),
+    "widths that no fit finds": (changed(FILM, scan__width_sigma__0=3e-11), "/scan/width"),
     "an instrument broader than the lines": (changed(FILM, instrument_width=2.0), "/scan/width"),
     "an absurd instrument": (changed(FILM, instrument_width=1e300), "/instrument_width"),
     "saturated by half": (changed(FILM, scan__saturated=[0, 0, 0.5, 0, 0]), "/scan/saturated/2"),

@@ -8,10 +8,11 @@ import numpy as np
 import pytest
 
 from engine.amplitudes.corrections import Lorentz, Polarisation
-from engine.films.analysis import FilmTask, Region, analyse_film
+from engine.films.analysis import analyse_film
 from engine.films.facts import KnownDensity, KnownMean
 from engine.films.scans import Scan
 from engine.films.signs import Criteria, Flat, LeastStructure, NonNegative
+from engine.films.task import FilmTask, Region
 from engine.resolution.envelope import Envelope
 from service.films.report import CITATIONS, film_report
 from tests.service.analyses.asked import numbers, table

@@ -10,8 +10,8 @@ import numpy as np
 import pytest
 from pydantic import ValidationError
 
-from engine.films.analysis import FilmTask
 from engine.films.scans import Scan
+from engine.films.task import FilmTask
 from service.schemas.films import SCAN_COLUMNS, FilmIn, FilmRunIn, FilmTaskIn, ScanIn
 from tests.service.films.asked import FILM, RUN, SIMPLE, changed
 
