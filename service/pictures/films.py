@@ -10,6 +10,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.ticker import MaxNLocator
 
+from engine.errors import InputError
 from engine.films.analysis import FilmAnalysis
 from service.pictures.canvas import Form, Sheet, plain, set_ticks, set_value_label, settings
 from service.pictures.captions import Caption, number
@@ -26,6 +27,8 @@ LABEL_ROWS = 2
 """Of positions of layers above a profile."""
 LEAST_HEIGHT = 5.0
 """Inches of a page from which it has room for all notes."""
+LEAST_PANEL = 2.5
+"""Ems that each side of a panel has at least."""
 STEP = 0.6
 """From one profile of a run to the next, relative to the height of the highest."""
 ROUNDING = 1e-9
@@ -38,7 +41,7 @@ def draw_film(made: FilmAnalysis, options: PictureOptions, form: Form) -> bytes:
     Raises
     ------
     InputError
-        The picture has no room for its caption.
+        The picture has no room for its caption, or for its curves beside that.
     """
     with settings(options):
         sheet = Sheet(options, _caption(made, options))
@@ -46,17 +49,26 @@ def draw_film(made: FilmAnalysis, options: PictureOptions, form: Form) -> bytes:
         width, height = sheet.right - left - 0.8 * sheet.em, sheet.top - sheet.bottom
         low = sheet.bottom + 3.0 * sheet.em
         tall = SHARE * (height - gap)
+        rest = height - 3.0 * sheet.em - tall - gap - 2.4 * sheet.em
+        _require_room(sheet, width, rest)
         _profile(sheet.axes(left, low, width, tall), made, sheet, options, (width, tall))
         above = low + tall + gap + 1.2 * sheet.em
-        rest = sheet.top - above - 1.2 * sheet.em
         if made.ranked is not None and len(made.ranked.profiles) > 1:
             legend, between = 6.6 * sheet.em, 5.6 * sheet.em
             half = (width - between - legend) / 2
+            _require_room(sheet, half, rest)
             _amplitudes(sheet.axes(left, above, half, rest), made, sheet, rest)
             _alternatives(sheet.axes(left + half + between, above, half, rest), made, sheet, rest)
         else:
             _amplitudes(sheet.axes(left, above, width, rest), made, sheet, rest)
         return sheet.save(form, options.title or "film")
+
+
+def _require_room(sheet: Sheet, width: float, height: float) -> None:
+    """Refuse a page that leaves less than this, inches, to a panel."""
+    for name, room in (("width", width), ("height", height)):
+        if room < LEAST_PANEL * sheet.em:
+            raise InputError(name, "leaves no room for the curves beside all labels", "give a larger picture")
 
 
 def _profile(axes: Axes, made: FilmAnalysis, sheet: Sheet, options: PictureOptions, size: tuple[float, float]) -> None:
@@ -187,10 +199,12 @@ def _alternatives(axes: Axes, made: FilmAnalysis, sheet: Sheet, height: float) -
 
 
 def _label_values(axes: Axes, sheet: Sheet, name: str, unit: str, height: float) -> None:
-    """Ticks and a label for a low panel, in smaller letters so that its unit has room."""
+    """Ticks and a label for a low panel, in smaller letters where its unit has no room else."""
     axes.yaxis.set_major_locator(MaxNLocator(nbins=max(2, min(6, int(height / 2.2 / sheet.em)))))
-    set_value_label(axes, sheet, name, unit, height / SMALL)
-    axes.yaxis.label.set_fontsize(SMALL * sheet.points)
+    set_value_label(axes, sheet, name, unit, height)
+    if axes.get_ylabel().endswith("…"):
+        set_value_label(axes, sheet, name, unit, height / SMALL)
+        axes.yaxis.label.set_fontsize(SMALL * sheet.points)
 
 
 def _plain(axes: Axes) -> None:
@@ -234,7 +248,7 @@ def draw_run(
     Raises
     ------
     InputError
-        The picture has no room for its caption.
+        The picture has no room for its caption, or for its curves beside that.
     """
     caption = Caption(
         (
@@ -247,6 +261,7 @@ def draw_run(
         sheet = Sheet(options, caption)
         left, low = sheet.left + 5.2 * sheet.em, sheet.bottom + 3.0 * sheet.em
         wide, tall = sheet.right - left - 6 * sheet.em, sheet.top - low - 0.6 * sheet.em
+        _require_room(sheet, wide, tall)
         axes = sheet.axes(left, low, wide, tall)
         step = STEP * (max(float(np.ptp(one.profile.values)) for one in made) or 1.0)
         longest = max(one.spacing.period for one in made)

@@ -392,7 +392,7 @@ def test_zero_shift_is_fitted():
 
 
 def test_scatter_beyond_the_errors_given_widens_that_of_the_period():
-    scan = scanned(seed=6, blur=0.003)
+    scan = scanned(seed=6, blur=0.003, order=ORDER)
     sure = replace(scan, position_sigma=scan.position_sigma / 10)
     other = analyse_film(task(sure)).spacing
     assert other.sigma_source == "given, scaled"

@@ -182,7 +182,7 @@ def test_the_curves_are_the_profiles(film, series, figures):
 
 def test_a_page_too_small_for_its_caption_is_refused(film):
     with pytest.raises(InputError, match="no room"):
-        draw_film(film, PictureOptions(width=300, height=200), "png")
+        draw_film(film, PictureOptions(width=300, height=220), "png")
 
 
 @pytest.mark.parametrize("form", ["png", "svg"])
