@@ -27,6 +27,9 @@ from engine.sampling import normal_line
 from engine.sampling.grids import Sampling
 
 BaselineKind = Literal["minima", "higher_minimum", "zero"]
+PLACES = ("position", "centroid", "lower", "upper")
+ROUNDING = 1e-9
+"""Of the line's length, below which the σ of a place is rounding."""
 EXACT_LATTICE = "the uncertainty of the lattice, whose lengths are taken as exact"
 FIRST_ORDER = "changes of the numbers beyond first order in the errors, and layers that come or go with them"
 
@@ -237,7 +240,9 @@ def _described(
             block = made.covariance[row, :, row, :]
             blocks[name] = block
             # Rounding may leave less than nothing of a variance that is zero.
-            sigma[name] = np.sqrt(np.maximum(np.diagonal(block), 0.0))
+            found = np.sqrt(np.maximum(np.diagonal(block), 0.0))
+            # A place on a mirror of the density is exact; what rounding leaves is no uncertainty.
+            sigma[name] = np.where(found < ROUNDING * line.length, 0.0, found) if name in PLACES else found
     closed = np.stack([parts.closed[:-1], parts.closed[1:]])
     depth = np.where(closed, np.stack([parts.depths[:-1], parts.depths[1:]]), -np.inf)
     overlapping = (parts.heights > level) & (depth.max(axis=0) > level + 0.5 * (parts.heights - level))

@@ -36,6 +36,8 @@ from engine.sampling import lattice_line
 from engine.synthesis import Progress
 
 SCALE_ERRORS = "the scale and the mean density, by the facts given and by the very amplitudes that they scale"
+STRAY_SHARE = 0.25
+"""Of lines that are no orders, beyond which the numbering is to be doubted."""
 LEAST_WIDTHS = 3
 """Lines with widths from which thickness and disorder are told."""
 
@@ -375,6 +377,12 @@ def _told(
     assignments: tuple[Assignment, ...], spacing: Spacing, ranked: RankedSigns | None, scale: FilmScale | None
 ) -> tuple[str, ...]:
     told = [note for one in assignments[:1] for note in one.notes]
+    if assignments and assignments[0].stray > STRAY_SHARE * (assignments[0].stray + assignments[0].indexed):
+        told.append(
+            f"{assignments[0].stray} of {assignments[0].stray + assignments[0].indexed} lines are no orders of the "
+            "period found. Were the σ's of their positions too small, orders would be taken for strays: check them, or "
+            "give the orders."
+        )
     told += spacing.notes
     if ranked is not None:
         told.append(ranked.verdict)

@@ -188,4 +188,6 @@ def csv_bytes(lines: Sequence[str], columns: Sequence[tuple[str, AnyArray]]) -> 
     table = np.ascontiguousarray(np.stack([column for _, column in columns], axis=1), dtype=np.float64)
     # The shortest digits that read back as the same number, written by compiled code.
     rows = orjson.dumps(table, option=orjson.OPT_SERIALIZE_NUMPY)[2:-2].replace(b"],[", b"\n")
+    # What is not a number leaves its cell empty, as in the tables of reports.
+    rows = rows.replace(b"null", b"")
     return head.encode() + rows + b"\n"

@@ -496,3 +496,18 @@ def test_distances_and_areas_lie_within_one_sigma_two_times_in_three():
     for place, true in enumerate(truth):
         share = share_within([one[0][place] for one in rows], [one[1][place] for one in rows], true)
         assert 0.63 < share < 0.73, (place, share)
+
+
+def test_many_strays_are_doubted_aloud():
+    """Positions whose σ's are ten times too small: orders are taken for strays, and the answer says what to check."""
+    rng = np.random.default_rng(5)
+    order = np.arange(1, 10)
+    q = 2 * np.pi * order / 40.0 + 3e-4 * rng.normal(size=9)
+    intensity = 1e4 / order**2
+    scan = Scan.of(q=q, position_sigma=np.full(9, 1e-7), intensity=intensity, intensity_sigma=0.02 * intensity)
+    phases = {int(one): 0.0 for one in order}
+    _, ways = number_lines(scan)
+    made = analyse_film(FilmTask(scan=scan, phases_deg=phases))
+    assert any("check them" in note for note in made.notes) == (ways[0].stray > 2)
+    good = replace(scan, position_sigma=np.full(9, 3e-4))
+    assert not any("check them" in note for note in analyse_film(FilmTask(scan=good, phases_deg=phases)).notes)
