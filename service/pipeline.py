@@ -29,7 +29,7 @@ from service.encoders.summary import summary_document
 from service.encoders.write import Wanted, write
 from service.films.run import film, film_picture, film_run, film_run_picture
 from service.films.swelling import swelling
-from service.films.trial import trial
+from service.films.trial import trial, trial_picture
 from service.problems import Problem, at, located
 from service.schemas.film_models import SwellingIn, TrialIn
 from service.schemas.films import FilmIn, FilmRequestIn, FilmRunIn
@@ -221,6 +221,8 @@ def film_answer(request: FilmRequestIn, form: str, settings: Settings, *, thread
         kind = cast("Literal['png', 'svg']", form)
         if isinstance(request, FilmRunIn):
             return film_run_picture(request, limits, kind)
+        if isinstance(request, TrialIn):
+            return trial_picture(request, limits, kind)
         return film_picture(cast("FilmIn", request), limits, kind)
     report = film_report(request, settings, threads=threads)
     return report_json(report) if form == "json" else report_csv(report)

@@ -20,6 +20,7 @@ from engine.features.layers import Layers, layers
 from engine.fields import Treatment, summands
 from engine.films.amplitudes import OrderTable, order_table
 from engine.films.assignment import Assignment, assign, check_orders
+from engine.films.damping import Damping, damping_by_envelope
 from engine.films.facts import mean_of_composition
 from engine.films.line_widths import LineWidths
 from engine.films.orders import FilmOrders
@@ -70,6 +71,8 @@ class FilmAnalysis:
     change : Change or None
         By orders that were not measured.
     widths : WidthComparison or None
+    damping : Damping or None
+        From the fall of the intensities; None of too few orders.
     applied, notes : tuple of str
     """
 
@@ -90,6 +93,7 @@ class FilmAnalysis:
     integrals: Integrals | None
     change: Change | None
     widths: WidthComparison | None
+    damping: Damping | None
     applied: tuple[str, ...]
     notes: tuple[str, ...]
 
@@ -197,6 +201,7 @@ def analyse_film(
         integrals=_integrals(coefficients, task, treatment),
         change=change,
         widths=_widths(scan, table, task),
+        damping=_damping(orders, task),
         applied=(*table.applied, *(() if scale is None else (scale.words, *scale.assumptions))),
         notes=tuple(
             dict.fromkeys(
@@ -371,6 +376,14 @@ def _caution(scale: FilmScale | None) -> tuple[str, ...]:
         "In the σ's of layers and regions the scale counts as independent of the amplitudes and the mean as exact; in "
         "that of the profile neither.",
     )
+
+
+def _damping(orders: FilmOrders, task: FilmTask) -> Damping | None:
+    try:
+        return damping_by_envelope(orders, centric=_symmetric(task))
+    except (InputError, TransformError):
+        # Too few orders, or a fall that no envelope follows: the rest of the report stands.
+        return None
 
 
 def _told(

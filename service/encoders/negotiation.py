@@ -47,9 +47,9 @@ def formats_of(product: str) -> tuple[str, ...]:
         return ("json",)
     if product in ANALYSES:
         return REPORT_FORMATS
-    if product in MODELS:
+    if product in MODELS and product != "film_trial":
         return REPORT_FORMATS
-    if product in SCANS:
+    if product in SCANS or product in MODELS:
         return (*REPORT_FORMATS, *PICTURE_FORMATS)
     if product == "series":
         return ROW_FORMATS

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 
 from engine.films.analysis import FilmAnalysis
+from engine.films.damping import Damping
 from engine.films.scale import FilmScale
 from engine.films.signs import RankedSigns
 from engine.films.widths import WidthComparison, WidthFit
@@ -76,6 +77,7 @@ def film_report(made: FilmAnalysis, table: str = "profile", product: str = "film
             "assumed": list(made.change.words),
         },
         "widths": None if made.widths is None else _widths(made.widths),
+        "damping": None if made.damping is None else _damping(made.damping),
         "sources": _sources(made),
     }
     # The terminal shows what a person reports; files hold the table asked for.
@@ -237,6 +239,22 @@ def _widths(found: WidthComparison) -> dict[str, Any]:
         "words": found.words,
         "notes": list(found.notes),
         "models": [_width_fit(one) for one in found.fits],
+    }
+
+
+def _damping(found: Damping) -> dict[str, Any]:
+    return {
+        "u_squared": found.u_squared,
+        "u_squared_sigma": found.u_squared_sigma,
+        "u": found.u,
+        "u_sigma": found.u_sigma,
+        "b": found.b,
+        "b_sigma": found.b_sigma,
+        "cumulative": found.cumulative,
+        "orders": found.order.tolist(),
+        "expected": found.calculated.tolist(),
+        "assumptions": list(found.assumptions),
+        "notes": list(found.notes),
     }
 
 

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from typing import Any
+from dataclasses import dataclass
+from typing import Any, Literal
 
 import numpy as np
 
@@ -23,13 +24,27 @@ from engine.films.trial import (
 from engine.sampling import lattice_line
 from service.analyses.common import rows, table_of
 from service.analyses.report import Limits, Report
+from service.encoders.picture import require_drawing
 from service.films.orders import orders_of
+from service.interpret_picture import picture_options
 from service.problems import located
 from service.schemas.film_models import PlaneIn, SlabIn, TrialIn
 
 SOURCES = {
     "merit of signs": "Sim, Acta Cryst. 12 (1959) 813; Woolfson, Acta Cryst. 9 (1956) 804",
 }
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Done:
+    """A stack against its orders."""
+
+    orders: FilmOrders
+    stack: Stack
+    found: Refined | None
+    observed: CoefficientSet
+    profile: Field
+    rest: Field
 
 
 def trial(request: TrialIn, limits: Limits) -> Report:
@@ -40,28 +55,9 @@ def trial(request: TrialIn, limits: Limits) -> Report:
     Problem
         Pointing to the place in the body.
     """
-    orders = orders_of(request.orders, ("orders",))
-    renamed: dict[str, tuple[str | int, ...]] = {"parameters": ("refine",), "B": ("b_iso",), "orders": ("orders",)}
-    parts = [_part(one, ("parts", place)) for place, one in enumerate(request.parts)]
-    with located(renamed=renamed):
-        stack = Stack.of(
-            orders.period,
-            parts,
-            symmetry=request.symmetry,
-            probe=request.probe,
-            background=request.background,
-            B=request.b_iso,
-            scale=request.scale,
-            unit=None if request.orders.unit == "arbitrary" else request.orders.unit,
-        )
-        found: Refined | None = None
-        if request.refine:
-            bounds = {name: (pair[0], pair[1]) for name, pair in request.bounds.items()}
-            found = refine(stack, orders, request.refine, bounds=bounds)
-            stack = found.stack
-        observed = observed_set(found or stack, None if found else orders)
-        lacking = residual_set(found or stack, None if found else orders)
-    profile, rest = (_profile(one, request.samples) for one in (observed, lacking))
+    done = _done(request)
+    orders, stack, found, observed = done.orders, done.stack, done.found, done.observed
+    profile, rest = done.profile, done.rest
     tables = {
         "parameters": _parameters(found),
         "orders": _orders(stack, orders, observed),
@@ -86,13 +82,72 @@ def trial(request: TrialIn, limits: Limits) -> Report:
         "sources": SOURCES,
     }
     chosen = request.table if found is not None or request.table != "parameters" else "orders"
-    figures = () if found is None else (f"R = {found.r_factor:.4g}, χ² {found.chi_square:.4g} of {found.freedom}",)
     return Report(
         document=document,
         table=table_of(tables[chosen]),
-        told=(*figures, *document["applied"], *document["notes"]),
+        told=(*_figures(found), *document["applied"], *document["notes"]),
         further=(("orders", table_of(tables["orders"])),) if chosen != "orders" else (),
     )
+
+
+def trial_picture(request: TrialIn, limits: Limits, form: Literal["png", "svg"]) -> bytes:
+    """Measured against calculated amplitudes and both profiles on a page.
+
+    Raises
+    ------
+    Problem
+        501 where pictures cannot be drawn; else pointing to the place in the body.
+    """
+    require_drawing()
+    from service.pictures.trial import Trial, draw_trial
+
+    options = picture_options(request.picture)
+    done = _done(request)
+    orders = done.orders
+    page = Trial(
+        order=orders.order.astype(np.float64),
+        measured=orders.amplitude,
+        calculated=np.abs(calculated(done.stack, orders.order)),
+        sigma=orders.sigma,
+        unit=f"{orders.unit} · Å" if orders.scale == "absolute" else "arbitrary",
+        observed=done.profile,
+        residual=done.rest,
+        words=_figures(done.found),
+    )
+    with located("picture"):
+        return draw_trial(page, options, form)
+
+
+def _figures(found: Refined | None) -> tuple[str, ...]:
+    if found is None:
+        return ()
+    return (f"R = {found.r_factor:.4g}, χ² {found.chi_square:.4g} of {found.freedom}.",)
+
+
+def _done(request: TrialIn) -> _Done:
+    orders = orders_of(request.orders, ("orders",))
+    renamed: dict[str, tuple[str | int, ...]] = {"parameters": ("refine",), "B": ("b_iso",), "orders": ("orders",)}
+    parts = [_part(one, ("parts", place)) for place, one in enumerate(request.parts)]
+    with located(renamed=renamed):
+        stack = Stack.of(
+            orders.period,
+            parts,
+            symmetry=request.symmetry,
+            probe=request.probe,
+            background=request.background,
+            B=request.b_iso,
+            scale=request.scale,
+            unit=None if request.orders.unit == "arbitrary" else request.orders.unit,
+        )
+        found: Refined | None = None
+        if request.refine:
+            bounds = {name: (pair[0], pair[1]) for name, pair in request.bounds.items()}
+            found = refine(stack, orders, request.refine, bounds=bounds)
+            stack = found.stack
+        observed = observed_set(found or stack, None if found else orders)
+        lacking = residual_set(found or stack, None if found else orders)
+    profile, rest = (_profile(one, request.samples) for one in (observed, lacking))
+    return _Done(orders=orders, stack=stack, found=found, observed=observed, profile=profile, rest=rest)
 
 
 def _part(given: PlaneIn | SlabIn, place: tuple[str | int, ...]) -> Part:

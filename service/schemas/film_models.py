@@ -9,6 +9,7 @@ from pydantic import Field
 from service.schemas.base import Coordinate, Length, Strict
 from service.schemas.columns import NumberColumn
 from service.schemas.films import FilmRequestIn, OrientationIn
+from service.schemas.picture import PictureIn
 
 Name = Annotated[str, Field(min_length=1, max_length=60)]
 
@@ -78,6 +79,7 @@ class TrialIn(FilmRequestIn):
     )
     bounds: dict[str, Annotated[list[float], Field(min_length=2, max_length=2)]] = Field({}, max_length=50)
     samples: Annotated[int, Field(ge=16, le=100_000)] = Field(513, description="of the profiles")
+    picture: PictureIn | None = None
     table: Literal["parameters", "orders", "profile"] = Field(
         "parameters", description="which table is answered as CSV"
     )

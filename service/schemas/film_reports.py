@@ -161,6 +161,22 @@ class WidthsOut(BaseModel):
     models: list[WidthFitOut]
 
 
+class DampingOut(BaseModel):
+    """How fast intensities fall off with order: displacement, or disorder that adds up from layer to layer."""
+
+    u_squared: float = Field(description="mean square displacement along the normal, Å²")
+    u_squared_sigma: float
+    u: float | None
+    u_sigma: float | None
+    b: float = Field(description="8π² u², Å²")
+    b_sigma: float
+    cumulative: float | None = Field(description="σ of the spacing over the spacing that would alone damp as much")
+    orders: list[int]
+    expected: list[float] = Field(description="|F| that the fall lets expect")
+    assumptions: list[str]
+    notes: list[str]
+
+
 class FilmReport(ReportOut):
     """A film from its order table."""
 
@@ -182,6 +198,7 @@ class FilmReport(ReportOut):
     regions: list[FilmRegionOut]
     unmeasured: UnmeasuredOut | None
     widths: WidthsOut | None
+    damping: DampingOut | None
     sources: dict[str, str] = Field(description="published methods used")
 
 
