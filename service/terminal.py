@@ -8,7 +8,7 @@ import numpy as np
 
 from engine.arrays import FloatArray
 from engine.resolution.response import PointResponse
-from service.encoders.describe import Shown
+from service.encoders.describe import Shown, point_words
 
 COLUMNS = 64
 ROWS = 14
@@ -133,5 +133,4 @@ def _figures(shown: Shown) -> list[str]:
 def _point(response: PointResponse | None) -> str:
     if response is None:
         return ""
-    widths = " × ".join(f"{width:.3g}" for width in response.widths)
-    return f"; a point is {widths} Å wide at half height, ripples to {100 * response.ripple:.2g} %"
+    return f"; {point_words(response)}"

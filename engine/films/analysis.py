@@ -206,6 +206,7 @@ def analyse_film(
         notes=tuple(
             dict.fromkeys(
                 (
+                    *_unscaled(task, scale),
                     *scan.notes,
                     *_told(assignments, spacing, ranked, scale),
                     *_left_over(task, raw),

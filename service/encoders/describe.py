@@ -14,6 +14,7 @@ from engine.evaluate import Field
 from engine.fields import FieldKind
 from engine.quantities import Quantity, contour_levels
 from engine.resolution.change import Change
+from engine.resolution.coverage import Coverage
 from engine.resolution.response import PointResponse
 from engine.sampling import AffineGrid, Axis
 from engine.statistics import Statistics
@@ -41,6 +42,8 @@ class Shown:
         By terms that were not measured.
     response : PointResponse or None
         Of the coefficients summed; None where there is none or the answer does not tell it.
+    coverage : Coverage or None
+        How many of the possible terms were measured.
     advice : tuple of str
         Where request and data do not fit each other.
     """
@@ -52,6 +55,7 @@ class Shown:
     field: Field
     change: Change | None = None
     response: PointResponse | None = None
+    coverage: Coverage | None = None
     advice: tuple[str, ...] = ()
 
     @property
@@ -85,6 +89,7 @@ def describe(shown: Shown) -> dict[str, Any]:
                 "repeats_joined": tally.repeats_joined,
                 "zero_term": tally.zero_term,
             },
+            "coverage": None if shown.coverage is None else _coverage(shown.coverage),
             "resolution": None if resolution is None else _resolution(resolution, shown.response),
             "uncertainty": _uncertainty(field, shown.quantity),
             "unmeasured": None if shown.change is None else _change(shown.change),
@@ -95,6 +100,30 @@ def describe(shown: Shown) -> dict[str, Any]:
         "applied": list(field.applied),
         "notes": [*field.notes, *shown.advice],
     }
+
+
+def _coverage(found: Coverage) -> dict[str, Any]:
+    """Terms possible and present, one of each Friedel pair, and the lowest orders that are not there."""
+    return {
+        "d_min": found.d_min,
+        "possible": found.possible,
+        "present": found.present,
+        "without_phase": found.without_phase,
+        "missing": found.missing,
+        "fraction": found.fraction,
+        "estimated": found.estimated,
+        "region": found.region,
+        "lowest_absent": [
+            {"indices": row, "d": spacing}
+            for row, spacing in zip(found.gaps.tolist(), found.gap_spacings.tolist(), strict=True)
+        ],
+    }
+
+
+def point_words(response: PointResponse) -> str:
+    """Widths and ripple of a point in a line."""
+    widths = " × ".join(f"{width:.3g}" for width in response.widths)
+    return f"a point is {widths} Å wide at half height, ripples to {100 * response.ripple:.2g} %"
 
 
 def _resolution(limits: tuple[float, float], response: PointResponse | None) -> dict[str, Any]:

@@ -22,7 +22,7 @@ from engine.resolution.change import ChangeWork, perform_change
 from engine.resolution.coverage import coverage
 from engine.resolution.response import point_response
 from engine.synthesis import Progress
-from service.encoders.describe import SIGN_CONVENTION, Shown, columns, describe
+from service.encoders.describe import SIGN_CONVENTION, Shown, columns, describe, point_words
 from service.encoders.negotiation import PICTURE_FORMATS
 from service.encoders.picture import picture
 from service.pictures.options import PictureOptions
@@ -97,8 +97,9 @@ def _explained(told: Shown, wanted: Wanted, work: Work) -> Shown:
     except InputError:
         # A window or an average that leaves nothing of a point; the values are told all the same.
         response = None
-    words = advice(response, work.sampling, given.lattice, average=treatment.average, coverage=coverage(given))
-    return replace(told, change=change, response=response, advice=words)
+    covered = coverage(given)
+    words = advice(response, work.sampling, given.lattice, average=treatment.average, coverage=covered)
+    return replace(told, change=change, response=response, coverage=covered, advice=words)
 
 
 def _bytes(array: AnyArray) -> memoryview:
@@ -172,6 +173,7 @@ def _csv(told: Shown) -> bytes:
         f"field: {told.kind}; quantity: {told.quantity}; unit: {made.unit}",
         f"method: {'+'.join(made.methods)}; coefficients summed: {made.summed}",
         f"sign convention: {SIGN_CONVENTION}",
+        *([] if told.response is None else [f"resolution: {point_words(told.response)}"]),
         *([] if sigma is None else [f"uncertainty contains: {'; '.join(sigma.contains)}"]),
         *([] if sigma is None else [f"uncertainty omits: {'; '.join(sigma.omits)}"]),
         *([] if change is None else [f"unmeasured terms, rms change: {'; '.join(change.words)}"]),

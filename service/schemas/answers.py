@@ -61,6 +61,27 @@ class ResolutionOut(LimitsOut):
     point: PointOut | None
 
 
+class AbsentOut(BaseModel):
+    """A term of low order that is not in the sum."""
+
+    indices: list[int]
+    d: float = Field(description="Å")
+
+
+class CoverageOut(BaseModel):
+    """Terms possible and present down to d_min, one of each Friedel pair, the zero term aside."""
+
+    d_min: float
+    possible: int = Field(description="that symmetry does not forbid")
+    present: int = Field(description="with a phase")
+    without_phase: int
+    missing: int
+    fraction: float
+    estimated: bool = Field(description="whether `possible` comes from volumes")
+    region: str
+    lowest_absent: list[AbsentOut]
+
+
 class UnmeasuredOut(BaseModel):
     """What terms that were not measured could do; no part of the uncertainty."""
 
@@ -97,6 +118,7 @@ class SummaryOut(BaseModel):
     mean: float | dict[str, float]
     rms: float
     coefficients: CoefficientsOut
+    coverage: CoverageOut | None
     resolution: ResolutionOut | None
     uncertainty: UncertaintyOut | None
     unmeasured: UnmeasuredOut | None
