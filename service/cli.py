@@ -54,11 +54,13 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except Problem as problem:
         print(f"densityloom: {problem.detail}", file=sys.stderr)
         for place in problem.places[1:]:
-            print(f"  {place.pointer}: {place.reason}. {place.cure}.", file=sys.stderr)
+            print(f"  {place.pointer}: {place.reason}. {place.cure[:1].upper()}{place.cure[1:]}.", file=sys.stderr)
     except BrokenPipeError:
         # Whoever read our output has seen enough; nothing more may be written, not even at exit.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 0
+    except FileNotFoundError as fault:
+        print(f"densityloom: cannot open {fault.filename}: there is no such file or folder", file=sys.stderr)
     except (ValueError, OSError, EngineError) as fault:
         print(f"densityloom: {fault}", file=sys.stderr)
     except KeyboardInterrupt:

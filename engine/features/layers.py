@@ -229,6 +229,11 @@ def _least(value: float, name: str) -> float:
     return float(value)
 
 
+def _placed(line: Line, place: FloatArray) -> FloatArray:
+    """Places on the axis; what rounding leaves of the start is the start."""
+    return line.start + np.where(np.abs(place) < ROUNDING * line.length, 0.0, place)
+
+
 def _described(
     density: Density, line: Line, parts: Parts, made: LayerNumbers, joined: int, kind: str, level: float
 ) -> Layers:
@@ -248,9 +253,9 @@ def _described(
     overlapping = (parts.heights > level) & (depth.max(axis=0) > level + 0.5 * (parts.heights - level))
     errors = density.errors is not None
     return Layers(
-        position=line.start + numbers["position"],
+        position=_placed(line, numbers["position"]),
         position_sigma=sigma["position"],
-        centroid=line.start + numbers["centroid"],
+        centroid=_placed(line, numbers["centroid"]),
         centroid_sigma=sigma["centroid"],
         height=numbers["height"],
         height_sigma=sigma["height"],

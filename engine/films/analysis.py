@@ -172,6 +172,7 @@ def analyse_film(
     profile = _with_scale_errors(
         evaluate(coefficients, line, treatment, uncertainty=uncertain), raw, phase_deg, scale, task
     )
+    profile = _with_doubt(profile, ranked)
     found = layers(
         coefficients,
         line,
@@ -243,6 +244,15 @@ def _with_scale_errors(
         omits=omits,
     )
     return replace(profile, sigma=told)
+
+
+def _with_doubt(profile: Field, ranked: RankedSigns | None) -> Field:
+    """Say with σ that signs are open, where they are."""
+    if profile.sigma is None or ranked is None or ranked.decided:
+        return profile
+    named = ", ".join(map(str, ranked.in_doubt)) or "none by itself"
+    words = f"signs in doubt (orders {named}): the σ's hold for the signs that are shown"
+    return replace(profile, sigma=replace(profile.sigma, omits=(words, *profile.sigma.omits)))
 
 
 def _with_mean(task: FilmTask, spacing: Spacing) -> FilmTask:

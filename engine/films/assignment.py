@@ -186,8 +186,9 @@ def _errors(scan: Scan, q: FloatArray, place: IntArray, tolerance: float | None)
     else:
         bend = np.minimum(CRITICAL_SQUARE[scan.radiation] / (2 * q), 0.1 * gap)
         words = (
-            f"allowed for: a shift of all lines by {float(np.median(shift / slope)):.2g} {scan.unit} "
-            f"and refraction with q_c² of {CRITICAL_SQUARE[scan.radiation]:g} Å⁻² (standard deviations)"
+            "in numbering the lines, allowed for: a shift of all lines by "
+            f"{float(np.median(shift / slope)):.2g} {scan.unit} and refraction with q_c² of "
+            f"{CRITICAL_SQUARE[scan.radiation]:g} Å⁻² (standard deviations)"
         )
     sigma = scan.q_sigma
     if sigma is not None:

@@ -374,15 +374,15 @@ def _assumptions(orders: FilmOrders, facts: Sequence[Fact]) -> tuple[str, ...]:
     found = []
     if any(isinstance(fact, KnownDensity | KnownTotal) for fact in facts):
         found += [
-            "the phases are right",
-            f"regions are taken from the series as it is, cut at order {orders.order[-1]}: what termination does to "
-            "them is not in the uncertainty",
-            "the period and the limits of the regions are exact",
+            "scale: the phases used are supposed to be right; a wrong sign makes it wrong",
+            f"scale: regions are taken from the series as it is, cut at order {orders.order[-1]}: what termination "
+            "does to them is not in the uncertainty",
+            "scale: the period and the limits of the regions are taken as exact",
         ]
     found.append(
-        "the errors of the amplitudes are in the uncertainty"
+        "scale: the errors of the amplitudes are in its uncertainty"
         if orders.sigma is not None
-        else "the amplitudes are exact: none of their errors were given"
+        else "scale: the amplitudes are taken as exact, since none of their errors were given"
     )
     if orders.scale == "absolute":
         found.append("the scale that the amplitudes had before is replaced")

@@ -135,7 +135,7 @@ class Scan:
             wavelength=length,
             radiation=radiation,
             period=known,
-            notes=_notes(counts),
+            notes=(*_notes(counts), *_doubts(kind, position, length, radiation)),
         )
 
     @property
@@ -268,6 +268,16 @@ def _flags(values: ArrayLike | None, size: int) -> BoolArray:
     if flags.dtype != np.bool_ or flags.shape != (size,):
         raise InputError("saturated", "is not one truth value a line", f"give {size} of true or false")
     return flags.copy()
+
+
+def _doubts(kind: PositionKind, position: FloatArray, wavelength: float | None, radiation: Probe) -> tuple[str, ...]:
+    """Units that may have been mistaken; nothing is refused for it."""
+    found = []
+    if kind == "two_theta" and position.size > 1 and float(position.max()) < 1.0:
+        found.append("All 2θ lie below 1°: if they are radians, give degrees.")
+    if wavelength is not None and radiation == "xray" and wavelength < 0.2:
+        found.append(f"A wavelength of {wavelength:g} Å is unusually short: if it is in nm, give Å.")
+    return tuple(found)
 
 
 def _notes(intensity: FloatArray | None) -> tuple[str, ...]:

@@ -113,6 +113,7 @@ def _tables(made: FilmAnalysis) -> dict[str, dict[str, Any]]:
     errors = {} if sigma is None else dict(zip(made.orders.order.tolist(), sigma.tolist(), strict=True))
     used = [order if keep else 0 for order, keep in zip(lines.order.tolist(), lines.used.tolist(), strict=True)]
     ranked = made.ranked
+    doubtful = set() if ranked is None or ranked.decided else set(ranked.in_doubt)
     return {
         "profile": {
             "distance_angstrom": along,
@@ -133,7 +134,10 @@ def _tables(made: FilmAnalysis) -> dict[str, dict[str, Any]]:
             "amplitude": [scaled.get(order) for order in used],
             "amplitude_sigma": [errors.get(order) for order in used] if errors else None,
             "phase_deg": [_finite(phase[order]) if order in phase else None for order in used],
-            "flags": [" ".join(flags) for flags in lines.flags],
+            "flags": [
+                ", ".join((*flags, "sign in doubt") if order in doubtful else flags)
+                for order, flags in zip(used, lines.flags, strict=True)
+            ],
         },
         "layers": layer_columns(made.layers),
         "signs": {}

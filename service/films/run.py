@@ -94,10 +94,10 @@ def film_run(request: FilmRunIn, limits: Limits) -> Report:
     _check_names(request)
     made, joint = _along(request, limits)
     values = [member.value for member in request.members]
-    columns: dict[str, Any] = {"value": values, **_figures(made)}
+    columns: dict[str, Any] = {"value": values, **_figures(made, joint)}
     documents = [film_report(one, request.table).document for one in made]
     verdict = () if joint is None else (joint.verdict, *joint.notes)
-    notes = list(dict.fromkeys((*verdict, *(note for one in documents for note in one["notes"]))))
+    notes = [*verdict, *_notes([one["notes"] for one in documents], values, request.variable_unit)]
     document = {
         "product": "film_run",
         "variable": {"name": request.variable, "unit": request.variable_unit, "values": values},
@@ -220,12 +220,31 @@ def _worded(request: FilmTaskIn, scan: ScanIn, place: tuple[str | int, ...]) -> 
         raise type(fault)(path, reason, cure, rows) from fault
 
 
-def _figures(made: list[FilmAnalysis]) -> dict[str, Any]:
+def _notes(every: list[list[str]], values: list[float], unit: str) -> list[str]:
+    """Notes of all films once, those of some with the film that they are of."""
+    shared = [note for note in every[0] if all(note in notes for notes in every)]
+    own = [
+        f"at {value:g} {unit}".rstrip() + f": {note}"
+        for notes, value in zip(every, values, strict=True)
+        for note in notes
+        if note not in shared
+    ]
+    return [*shared, *own]
+
+
+def _figures(made: list[FilmAnalysis], joint: JointSigns | None) -> dict[str, Any]:
     """One row a film: period, mean, the highest layers, regions; not a number where there is none."""
     columns: dict[str, Any] = {
         "period": [one.spacing.period for one in made],
         "period_sigma": [_number(one.spacing.period_sigma) for one in made],
-        "decided": [None if one.ranked is None else one.ranked.decided for one in made],
+        "decided": [
+            bool(joint.decided[number].all())
+            if joint is not None
+            else None
+            if one.ranked is None
+            else one.ranked.decided
+            for number, one in enumerate(made)
+        ],
         "mean": [_number(None if one.scale is None else one.scale.mean) for one in made],
         "layers": [one.layers.count for one in made],
     }

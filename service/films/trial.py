@@ -9,6 +9,7 @@ import numpy as np
 
 from engine.coefficients import CoefficientSet
 from engine.evaluate import Field, evaluate
+from engine.features.integrals import integrated_unit
 from engine.films.orders import FilmOrders
 from engine.films.trial import (
     Part,
@@ -109,7 +110,7 @@ def trial_picture(request: TrialIn, limits: Limits, form: Literal["png", "svg"])
         measured=orders.amplitude,
         calculated=np.abs(calculated(done.stack, orders.order)),
         sigma=orders.sigma,
-        unit=f"{orders.unit} · Å" if orders.scale == "absolute" else "arbitrary",
+        unit=integrated_unit(orders.unit, 1) if orders.scale == "absolute" else "arbitrary",
         observed=done.profile,
         residual=done.rest,
         words=_figures(done.found),

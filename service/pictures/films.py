@@ -11,6 +11,8 @@ from matplotlib.axes import Axes
 from matplotlib.ticker import MaxNLocator
 
 from engine.errors import InputError
+from engine.features.integrals import integrated_unit
+from engine.fields import PHASES_DECIDE
 from engine.films.analysis import FilmAnalysis
 from service.pictures.canvas import Form, Sheet, plain, set_ticks, set_value_label, settings
 from service.pictures.captions import Caption, number
@@ -163,7 +165,7 @@ def _amplitudes(axes: Axes, made: FilmAnalysis, sheet: Sheet, height: float) -> 
         axes.errorbar(orders.order, signed, orders.sigma, fmt="none", ecolor=theme.ink, elinewidth=0.8, capsize=2)
     axes.axhline(0, color=theme.ink, linewidth=0.5)
     axes.set_xlabel("order" + (", pale: sign in doubt" if doubtful else ""))
-    unit = "arbitrary" if orders.scale == "arbitrary" else f"{orders.unit} · Å"
+    unit = integrated_unit(orders.unit, 1)
     _label_values(axes, sheet, "F", unit, height)
     axes.xaxis.set_major_locator(MaxNLocator(integer=True))
     _plain(axes)
@@ -226,7 +228,7 @@ def _caption(made: FilmAnalysis, options: PictureOptions) -> Caption:
     told = [_sentence(one) for one in needed]
     # On a small page the curves need the room; the notes are in every other form of the answer.
     further = [_sentence(note) for note in made.notes] if options.inches[1] >= LEAST_HEIGHT else []
-    return Caption(tuple(told), tuple(note for note in further if note not in told))
+    return Caption(tuple(told), tuple(note for note in further if note not in (*told, PHASES_DECIDE)))
 
 
 def _sentence(words: str) -> str:

@@ -11,6 +11,7 @@ from matplotlib.ticker import MaxNLocator
 
 from engine.arrays import FloatArray
 from engine.evaluate import Field
+from engine.fields import PHASES_DECIDE
 from service.pictures.canvas import Form, Sheet, settings
 from service.pictures.captions import Caption, with_unit
 from service.pictures.options import PictureOptions
@@ -57,7 +58,8 @@ def draw_trial(made: Trial, options: PictureOptions, form: Form) -> bytes:
     """
     phases = "Phases are the model's: a wrong model gives a wrong profile that looks as sharp."
     with settings(options):
-        sheet = Sheet(options, Caption((*made.words, phases), made.observed.notes))
+        notes = tuple(note for note in made.observed.notes if note != PHASES_DECIDE)
+        sheet = Sheet(options, Caption((*made.words, phases), notes))
         left, low = sheet.left + 5.2 * sheet.em, sheet.bottom + 3.0 * sheet.em
         width, height, gap = sheet.right - left - 0.8 * sheet.em, sheet.top - low, 3.6 * sheet.em
         tall = SHARE * (height - gap)

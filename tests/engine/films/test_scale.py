@@ -289,7 +289,7 @@ def test_words_and_notes():
     absolute = scale_by_facts(found.apply(film()), phases(), facts, unit=UNIT)
     assert any("replaced" in words for words in absolute.assumptions)
     weighed = scale_by_facts(film(sigma=0.01 * np.ones(8)), phases(), facts, unit=UNIT)
-    assert any("are in the uncertainty" in words for words in weighed.assumptions)
+    assert any("are in its uncertainty" in words for words in weighed.assumptions)
 
 
 def flat(sigma_given=0.0, sigma=None, regions=(WATER, CHAINS), **more):
