@@ -39,6 +39,7 @@ SUMMARIES = {
     "film": "A film from a scan's order table to its layer profile and layer table",
     "film_run": "Films along a run, each analysed alike",
     "film_swelling": "Signs of one layer from several periods, with its continuous transform",
+    "film_contrast": "Signs of one stack from several contrasts at one period",
     "film_trial": "A trial stack against measured amplitudes",
     INSPECT: "Summary of a file of reflections",
 }
@@ -129,6 +130,19 @@ _SWELLING = {
     ],
     "orientation": {"kind": "excess", "sign": "positive"},
 }
+_CONTRAST = {
+    "sets": [
+        {
+            "contrast": share,
+            "period": 16.2,
+            "order": [1, 2, 3],
+            "amplitude": amplitude,
+            "sigma": [0.2, 0.2, 0.1],
+        }
+        for share, amplitude in ((0.0, [21.1, 11.0, 1.8]), (0.4, [16.2, 15.2, 1.4]), (1.0, [8.7, 21.2, 6.4]))
+    ],
+    "exchange": "edge",
+}
 EXAMPLES: dict[str, dict[str, Any]] = {
     "profile": {"set": _FILM, "from": [0], "to": [1], "samples": 128},
     "slice": {"set": _CRYSTAL, "plane": [0, 0, 1], "offset": 4.35, "width": 12, "height": 12, "spacing": 0.1},
@@ -170,6 +184,7 @@ EXAMPLES: dict[str, dict[str, Any]] = {
         **_FILM_TASK,
     },
     "film_swelling": _SWELLING,
+    "film_contrast": _CONTRAST,
     "film_trial": _TRIAL,
 }
 

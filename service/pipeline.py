@@ -27,11 +27,12 @@ from service.encoders.report import report_csv, report_json
 from service.encoders.stack import write_stack
 from service.encoders.summary import summary_document
 from service.encoders.write import Wanted, write
+from service.films.contrast import contrast
 from service.films.run import film, film_picture, film_run, film_run_picture
 from service.films.swelling import swelling
 from service.films.trial import trial, trial_picture
 from service.problems import Problem, at, located
-from service.schemas.film_models import SwellingIn, TrialIn
+from service.schemas.film_models import ContrastIn, SwellingIn, TrialIn
 from service.schemas.films import FilmIn, FilmRequestIn, FilmRunIn
 from service.schemas.products import DrawnIn, ProductIn, UnmeasuredIn
 from service.schemas.requests import InspectIn, Request
@@ -237,6 +238,8 @@ def film_report(
         return film_run(request, limits)
     if isinstance(request, SwellingIn):
         return swelling(request, limits)
+    if isinstance(request, ContrastIn):
+        return contrast(request)
     if isinstance(request, TrialIn):
         return trial(request, limits)
     return film(cast("FilmIn", request), limits)

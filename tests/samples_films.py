@@ -18,6 +18,8 @@ WATER = 0.334
 RUN = {10.0: 16.2, 35.0: 17.4, 60.0: 18.8, 85.0: 20.6}
 """Relative humidity, %, and period, Å."""
 ORDERS = 7
+SHARES = (0.08, 0.35, 0.7, 1.0)
+"""Of heavy water."""
 CORRECTIONS = [{"kind": "lorentz", "geometry": "film_part_of_arc"}, {"kind": "polarisation"}]
 
 
@@ -114,6 +116,12 @@ def requests(invented: str) -> dict[str, Any]:
             "sets": [_amplitudes(length, 10 + number) for number, length in enumerate(RUN.values())],
             "orientation": {"kind": "excess", "sign": "positive"},
         },
+        "coating_contrast.json": {
+            "product": "film_contrast",
+            "remark": invented + "Neutrons at 10 % humidity in mixtures of light and heavy water: signs by contrast.",
+            "sets": [_contrast(share, 20 + number) for number, share in enumerate(SHARES)],
+            "exchange": "edge",
+        },
         "coating_trial.json": {
             "product": "film_trial",
             "remark": invented + "A trial sheet against the amplitudes at 60 % humidity, refined.",
@@ -126,6 +134,28 @@ def requests(invented: str) -> dict[str, Any]:
             "background": WATER,
             "refine": ["middle.strength", "oxygen.strength", "oxygen.position", "sheet.density"],
         },
+    }
+
+
+def neutron(order: NDArray[np.float64], share: float) -> NDArray[np.float64]:
+    """F of the coating at 10 % humidity, a slab with rough edges and a sheet of water about z = d/2; 1e-6 / Å."""
+    q = 2 * np.pi * order / RUN[10.0]
+    sheet = 8.8 * np.sin(3.2 * q) / q * np.exp(-((0.4 * q) ** 2) / 2)
+    return np.asarray(sheet + share * 13.0 * np.exp(-((0.8 * q) ** 2) / 2) * (-1.0) ** order)
+
+
+def _contrast(share: float, seed: int) -> dict[str, Any]:
+    rng = np.random.default_rng(seed)
+    order = np.arange(1, ORDERS + 1)
+    true = np.abs(neutron(order.astype(float), share))
+    sigma = 0.01 * true + 0.05
+    return {
+        "contrast": share,
+        "period": RUN[10.0],
+        "order": order.tolist(),
+        "amplitude": np.abs(true + sigma * rng.normal(size=ORDERS)).round(4).tolist(),
+        "sigma": sigma.round(4).tolist(),
+        "unit": "10⁻⁶ Å⁻²",
     }
 
 

@@ -30,6 +30,7 @@ FILM_ADDRESSES = {
     "film": "/films/analysis",
     "film_run": "/films/run",
     "film_swelling": "/films/swelling",
+    "film_contrast": "/films/contrast",
     "film_trial": "/films/trial",
 }
 ADDRESSES = {

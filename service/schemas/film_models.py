@@ -1,4 +1,4 @@
-"""Films: one layer at several periods, and trial stacks."""
+"""Films: one layer at several periods or contrasts, and trial stacks."""
 
 from __future__ import annotations
 
@@ -36,6 +36,29 @@ class SwellingIn(FilmRequestIn):
     scales: Literal["free", "common"] | None = Field(None, description="common where all sets are absolute")
     relative_sigma: float | None = Field(None, gt=0, description="σ/|F| of sets without σ")
     samples: Annotated[int, Field(ge=16, le=100_000)] = Field(256, description="of the transform and the profiles")
+
+
+class ContrastSetIn(OrdersIn):
+    """Amplitudes of the film at one contrast."""
+
+    contrast: float = Field(description="x, such as the share of heavy water or of the heavier ion")
+
+
+class ContrastIn(FilmRequestIn):
+    """Signs of one symmetric stack from several contrasts at one period: amplitudes are linear in the contrast."""
+
+    product: Literal["film_contrast"] | None = None
+    sets: list[ContrastSetIn] = Field(min_length=1, max_length=50, description="all on one scale")
+    exchange: Literal["centre", "edge"] | None = Field(
+        None, description="where the matter that scatters more with x sits, as one sheet: about z = 0 or about z = d/2"
+    )
+    slope_sign: NumberColumn | None = Field(
+        None, description="instead of `exchange`: sign of dF/dx of l = 1 to the highest order, 0 where unknown"
+    )
+    relative_sigma: float | None = Field(None, gt=0, description="σ/|F| of sets without σ")
+    model_error: float = Field(
+        0.005, ge=0, lt=1, description="added to each σ in quadrature, over the rms amplitude of its set"
+    )
 
 
 class PlaneIn(Strict):
@@ -85,4 +108,8 @@ class TrialIn(FilmRequestIn):
     )
 
 
-MODELS: dict[str, type[FilmRequestIn]] = {"film_swelling": SwellingIn, "film_trial": TrialIn}
+MODELS: dict[str, type[FilmRequestIn]] = {
+    "film_swelling": SwellingIn,
+    "film_contrast": ContrastIn,
+    "film_trial": TrialIn,
+}

@@ -281,6 +281,49 @@ class SwellingReport(JointSignsOut):
     product: str
 
 
+class ContrastOrderOut(BaseModel):
+    """One order at one contrast."""
+
+    set: int
+    contrast: float
+    order: int
+    amplitude: float
+    sign: int = Field(description="of the best line; where not `decided` at least its common sign is open")
+    decided: bool
+    margin: float = Field(description="rise of χ² with the sign reversed")
+    fitted: float
+    residual: float
+
+
+class ContrastLineOut(BaseModel):
+    """F = constant + slope x of one order."""
+
+    order: int
+    constant: float
+    constant_sigma: float
+    slope: float
+    slope_sigma: float
+    correlation: float = Field(description="of constant and slope")
+    chi_squared: float
+    degrees: int
+    relative_margin: float = Field(description="rise of χ² with another place for the change of sign")
+    relative_decided: bool
+
+
+class ContrastReport(BaseModel):
+    """Signs of one stack from several contrasts."""
+
+    product: str
+    period: float
+    settled: bool
+    verdict: str
+    orders: list[ContrastOrderOut]
+    lines: list[ContrastLineOut]
+    unused: list[int] = Field(description="orders that fewer than three contrasts hold")
+    notes: list[str]
+    sources: dict[str, str]
+
+
 class FilmRunReport(BaseModel):
     """Films along a run."""
 
@@ -355,5 +398,6 @@ FILM_REPORTS: dict[str, type[BaseModel]] = {
     "film": FilmReport,
     "film_run": FilmRunReport,
     "film_swelling": SwellingReport,
+    "film_contrast": ContrastReport,
     "film_trial": TrialReport,
 }

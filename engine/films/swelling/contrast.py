@@ -4,7 +4,8 @@ Where a share x of the exchangeable matter scatters differently (heavy water for
 amplitude of each order is linear in x: F_l(x) = A_l + x B_l, B_l the transform of the exchange alone. Only |F| is
 measured; a straight line crosses zero at most once, so with the contrasts in ascending x the signs of an order
 change at most once, and all choices are tried. The common sign of an order stays open but for what is known of B_l:
-exchange in one sheet about the centre of the cell makes every low order's B_l positive, about its edge (−1)^l.
+exchange in one sheet about the centre of the cell makes every low order's B_l positive, about its edge (−1)^l
+(Worcester & Franks, J. Mol. Biol. 100 (1976) 359; Franks & Lieb, J. Mol. Biol. 133 (1979) 469).
 """
 
 from __future__ import annotations

@@ -6,7 +6,7 @@ import pytest
 from pydantic import ValidationError
 
 from service.openapi import EXAMPLES
-from service.schemas.film_models import MODELS, PlaneIn, SlabIn, SwellingIn, TrialIn
+from service.schemas.film_models import MODELS, ContrastIn, PlaneIn, SlabIn, SwellingIn, TrialIn
 
 
 @pytest.mark.parametrize("product", sorted(MODELS))
@@ -36,6 +36,22 @@ def test_parts_are_told_apart_by_their_kind():
 def test_bad_series(members):
     with pytest.raises(ValidationError):
         SwellingIn.model_validate({**EXAMPLES["film_swelling"], **members})
+
+
+@pytest.mark.parametrize(
+    "members",
+    [
+        {"sets": []},
+        {"sets": [{"period": 16.0, "order": [1], "amplitude": [1.0]}]},
+        {"exchange": "side"},
+        {"model_error": 1.0},
+        {"relative_sigma": 0.0},
+        {"colour": 1},
+    ],
+)
+def test_bad_contrasts(members):
+    with pytest.raises(ValidationError):
+        ContrastIn.model_validate({**EXAMPLES["film_contrast"], **members})
 
 
 @pytest.mark.parametrize(
