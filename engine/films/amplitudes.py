@@ -96,30 +96,6 @@ class OrderTable:
         return replace(made, applied=self.applied)
 
 
-def film_amplitudes(
-    scan: Scan,
-    orders: ArrayLike,
-    spacing: Spacing,
-    *,
-    corrections: Sequence[Correction] = (),
-    rule: AmplitudeRule = "bayesian",
-    negative: NegativeRule = "exclude",
-    symmetric: bool = True,
-    keep_saturated: bool = False,
-) -> FilmOrders:
-    """|F_l| of the numbered lines, on an arbitrary scale; arguments and errors as ``order_table``."""
-    return order_table(
-        scan,
-        orders,
-        spacing,
-        corrections=corrections,
-        rule=rule,
-        negative=negative,
-        symmetric=symmetric,
-        keep_saturated=keep_saturated,
-    ).film()
-
-
 def order_table(
     scan: Scan,
     orders: ArrayLike,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from typing import Any
 
@@ -67,3 +68,8 @@ def rows(columns: dict[str, Any]) -> list[dict[str, Any]]:
 def table_of(columns: dict[str, Any]) -> tuple[Column, ...]:
     """Columns as a table, without those that do not exist."""
     return tuple((name, column) for name, column in columns.items() if column is not None)
+
+
+def finite(value: float | None) -> float | None:
+    """The number, or None where it is absent, endless or not a number: JSON has none of these."""
+    return None if value is None or not math.isfinite(value) else value

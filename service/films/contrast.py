@@ -95,6 +95,6 @@ def _verdict(columns: dict[str, Any]) -> str:
     open_ones = np.unique(columns["order"][~columns["decided"]])
     if open_ones.size == 0:
         return "All signs are decided."
-    if open_ones.size == np.unique(columns["order"]).size and not columns["decided"].any():
+    if not columns["decided"].any():
         return "No sign is decided."
     return f"Signs are not decided at every contrast for order {', '.join(map(str, open_ones.tolist()))}."

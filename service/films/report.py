@@ -4,14 +4,12 @@ from __future__ import annotations
 
 from typing import Any
 
-import numpy as np
-
 from engine.films.analysis import FilmAnalysis
 from engine.films.damping import Damping
 from engine.films.scale import FilmScale
 from engine.films.signs import RankedSigns
 from engine.films.widths import WidthComparison, WidthFit
-from service.analyses.common import heading, rows, table_of, told
+from service.analyses.common import finite, heading, rows, table_of, told
 from service.analyses.layers import layer_columns, layers_members
 from service.analyses.report import Column, Report
 
@@ -62,7 +60,7 @@ def film_report(made: FilmAnalysis, table: str = "profile", product: str = "film
         "point": None
         if made.response is None
         else {
-            "width": _finite(float(made.response.widths[0])),
+            "width": finite(float(made.response.widths[0])),
             "ripple": made.response.ripple,
             "unit": "Å",
         },
@@ -133,7 +131,7 @@ def _tables(made: FilmAnalysis) -> dict[str, dict[str, Any]]:
             "factor": lines.factor,
             "amplitude": [scaled.get(order) for order in used],
             "amplitude_sigma": [errors.get(order) for order in used] if errors else None,
-            "phase_deg": [_finite(phase[order]) if order in phase else None for order in used],
+            "phase_deg": [finite(phase[order]) if order in phase else None for order in used],
             "flags": [
                 ", ".join((*flags, "sign in doubt") if order in doubtful else flags)
                 for order, flags in zip(used, lines.flags, strict=True)
@@ -196,15 +194,15 @@ def _signs(ranked: RankedSigns, rank: int) -> dict[str, Any]:
         "looked_at": ranked.looked_at,
         "criteria": list(ranked.names),
         "orders": ranked.order.tolist(),
-        "order_margin": [_finite(value) for value in ranked.order_margin.tolist()],
-        "order_support": [_finite(value) for value in ranked.order_support.tolist()],
+        "order_margin": [finite(value) for value in ranked.order_margin.tolist()],
+        "order_support": [finite(value) for value in ranked.order_support.tolist()],
         "sets": [
             {
                 "rank": number + 1,
                 "signs": ranked.signs[number].tolist(),
                 "score": float(ranked.scores[number]),
                 "parts": ranked.parts[number].tolist(),
-                "margin": _finite(float(ranked.margins[number])),
+                "margin": finite(float(ranked.margins[number])),
                 "support": float(ranked.support[number]),
                 "profile": ranked.profiles[number].tolist() if number < len(ranked.profiles) else None,
             }
@@ -267,7 +265,7 @@ def _width_fit(one: WidthFit) -> dict[str, Any]:
         "model": one.model,
         "thickness": one.thickness,
         "thickness_sigma": one.thickness_sigma,
-        "thickness_least": _finite(one.thickness_least),
+        "thickness_least": finite(one.thickness_least),
         "layers": one.layers,
         "layers_sigma": one.layers_sigma,
         "disorder": one.disorder,
@@ -301,10 +299,6 @@ def _headlines(made: FilmAnalysis) -> list[str]:
     if made.widths is not None:
         lines.append(made.widths.words)
     return lines
-
-
-def _finite(value: float) -> float | None:
-    return value if np.isfinite(value) else None
 
 
 def profile_columns(made: FilmAnalysis) -> tuple[Column, ...]:

@@ -6,13 +6,11 @@ from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from typing import Any, Literal
 
-import numpy as np
-
 from engine.errors import InputError
 from engine.films.amplitudes import OrderTable
 from engine.films.analysis import FilmAnalysis, analyse_film, measured
 from engine.films.swelling import JointSigns, joint_signs
-from service.analyses.common import rows, table_of
+from service.analyses.common import finite, rows, table_of
 from service.analyses.report import Limits, Report
 from service.encoders.picture import require_drawing
 from service.films import interpret
@@ -236,7 +234,7 @@ def _figures(made: list[FilmAnalysis], joint: JointSigns | None) -> dict[str, An
     """One row a film: period, mean, the highest layers, regions; not a number where there is none."""
     columns: dict[str, Any] = {
         "period": [one.spacing.period for one in made],
-        "period_sigma": [_number(one.spacing.period_sigma) for one in made],
+        "period_sigma": [finite(one.spacing.period_sigma) for one in made],
         "decided": [
             bool(joint.decided[number].all())
             if joint is not None
@@ -245,17 +243,13 @@ def _figures(made: list[FilmAnalysis], joint: JointSigns | None) -> dict[str, An
             else one.ranked.decided
             for number, one in enumerate(made)
         ],
-        "mean": [_number(None if one.scale is None else one.scale.mean) for one in made],
+        "mean": [finite(None if one.scale is None else one.scale.mean) for one in made],
         "layers": [one.layers.count for one in made],
     }
     for number, region in enumerate(made[0].task.regions):
         found = [one.integrals for one in made]
-        columns[region.name] = [_number(None if one is None else float(one.values[number])) for one in found]
+        columns[region.name] = [finite(None if one is None else float(one.values[number])) for one in found]
         columns[f"{region.name}_sigma"] = [
-            _number(None if one is None or one.sigma is None else float(one.sigma[number])) for one in found
+            finite(None if one is None or one.sigma is None else float(one.sigma[number])) for one in found
         ]
     return columns
-
-
-def _number(value: float | None) -> float | None:
-    return None if value is None or not np.isfinite(value) else value

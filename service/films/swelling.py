@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from typing import Any, Literal
 
 import numpy as np
@@ -17,7 +16,7 @@ from engine.films.swelling import (
     never_negative,
     total,
 )
-from service.analyses.common import rows, table_of
+from service.analyses.common import finite, rows, table_of
 from service.analyses.report import Limits, Report
 from service.films.orders import orders_of
 from service.problems import at, located
@@ -104,7 +103,7 @@ def _columns(found: JointSigns) -> dict[str, Any]:
         "amplitude": np.concatenate([one.amplitude for one in found.orders]),
         "sign": np.concatenate(found.signs),
         "decided": np.concatenate(found.decided),
-        "margin": [_finite(value) for value in np.concatenate(found.margin).tolist()],
+        "margin": [finite(value) for value in np.concatenate(found.margin).tolist()],
         "merit": np.concatenate(found.merit),
         "fitted": np.concatenate(found.fitted),
         "residual": np.concatenate(found.residual),
@@ -136,7 +135,3 @@ def orientation_of(given: OrientationIn, place: tuple[str | int, ...] = ("orient
         if given.kind == "never_negative":
             return never_negative(given.value or 0.0)
     return UNDECIDED
-
-
-def _finite(value: float) -> float | None:
-    return value if math.isfinite(value) else None

@@ -23,7 +23,7 @@ from engine.films.trial import (
     residual_set,
 )
 from engine.sampling import lattice_line
-from service.analyses.common import rows, table_of
+from service.analyses.common import finite, rows, table_of
 from service.analyses.report import Limits, Report
 from service.encoders.picture import require_drawing
 from service.films.orders import orders_of
@@ -179,7 +179,7 @@ def _parameters(found: Refined | None) -> dict[str, Any]:
     return {
         "parameter": list(found.names),
         "value": found.values,
-        "sigma": [_finite(value) for value in found.sigma.tolist()],
+        "sigma": [finite(value) for value in found.sigma.tolist()],
         "at_bound": found.at_bound,
     }
 
@@ -219,8 +219,4 @@ def _refined(found: Refined) -> dict[str, Any]:
 
 
 def _table(values: np.ndarray[tuple[int, ...], np.dtype[np.float64]]) -> list[list[float | None]]:
-    return [[_finite(value) for value in row] for row in values.tolist()]
-
-
-def _finite(value: float) -> float | None:
-    return value if np.isfinite(value) else None
+    return [[finite(value) for value in row] for row in values.tolist()]

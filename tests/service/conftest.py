@@ -7,6 +7,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 
 import httpx
+import psutil
 import pytest
 
 from tests.serving import Served, serving
@@ -32,6 +33,11 @@ def alone(**settings: object) -> Iterator[Served]:
                 patch.delenv(name)
         with serving(**settings) as served:
             yield served
+
+
+def worker_processes(served: Served) -> set[int]:
+    """The numbers of a service's worker processes."""
+    return {child.pid for child in psutil.Process(served.process.pid).children()}
 
 
 @pytest.fixture(scope="session")
@@ -69,3 +75,9 @@ def pytest_runtest_makereport(item, call):
             if isinstance(value, Served):
                 report.sections.append((f"log of {name}", value.log.read_text()[-4000:]))
     return report
+
+
+@pytest.fixture(scope="module")
+def workers(service: Served) -> set[int]:
+    """The worker processes before the tests of a module."""
+    return worker_processes(service)

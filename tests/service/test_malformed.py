@@ -9,12 +9,11 @@ import zipfile
 from typing import Any, NamedTuple
 
 import numpy as np
-import psutil
 import pytest
 
 from tests.service import bodies
 from tests.service.bodies import FORM, changed, film_form, without
-from tests.service.conftest import SMALL
+from tests.service.conftest import SMALL, worker_processes
 from tests.service.problem_shape import assert_problem
 
 JSON = "application/json"
@@ -388,12 +387,6 @@ def posted(client, row):
     return client.post(f"/v1/{row.product}", content=content, headers=headers)
 
 
-@pytest.fixture(scope="module")
-def workers(service):
-    """The worker processes before anything malformed arrives."""
-    return {child.pid for child in psutil.Process(service.process.pid).children()}
-
-
 def test_table_is_long_and_its_names_differ():
     names = [row.name for row in (*TABLE, *OVER_LIMIT)]
     assert len(set(names)) == len(names) >= 45
@@ -447,6 +440,6 @@ def test_places_named_are_counted(client):
 
 def test_service_has_come_through_unharmed(service, client, workers):
     """After the whole table: the same workers, and a right answer."""
-    assert {child.pid for child in psutil.Process(service.process.pid).children()} == workers
+    assert worker_processes(service) == workers
     answer = client.post("/v1/profile", json=PROFILE)
     np.testing.assert_allclose(answer.json()["values"], bodies.film_profile(np.linspace(0, 1, 17)), rtol=0, atol=1e-12)

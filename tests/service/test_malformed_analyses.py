@@ -7,13 +7,12 @@ from __future__ import annotations
 
 import json
 
-import psutil
 import pytest
 
 from tests.service import bodies
 from tests.service.analyses.asked import CRYSTAL, FILM, GOOD, LATER
 from tests.service.bodies import FORM, changed, form, without
-from tests.service.conftest import SMALL
+from tests.service.conftest import SMALL, worker_processes
 from tests.service.problem_shape import assert_problem
 from tests.service.series_bodies import SERIES, SLICES
 
@@ -139,10 +138,10 @@ FORMS = [
 @pytest.fixture(scope="module", autouse=True)
 def _same_workers_before_and_after(small_service):
     """No request may cost a worker its life."""
-    found = {child.pid for child in psutil.Process(small_service.process.pid).children()}
+    found = worker_processes(small_service)
     assert len(found) == SMALL["compute_workers"]
     yield
-    assert {child.pid for child in psutil.Process(small_service.process.pid).children()} == found
+    assert worker_processes(small_service) == found
 
 
 @pytest.mark.parametrize(

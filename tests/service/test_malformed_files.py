@@ -5,12 +5,11 @@ from __future__ import annotations
 import math
 import random
 
-import psutil
 import pytest
 
 from tests.service import bodies
 from tests.service.bodies import FORM, changed
-from tests.service.conftest import SMALL
+from tests.service.conftest import SMALL, worker_processes
 from tests.service.problem_shape import assert_problem
 from tests.service.raw_files import AMPLITUDES, CELL, CIF, GRID, TABLE, WITHOUT_CELL, archive, sent, with_set
 from tests.service.test_malformed import JSON, LONG, Row, declared, posted, text
@@ -277,12 +276,6 @@ OVER_LIMIT = [
 ]
 
 
-@pytest.fixture(scope="module")
-def workers(service):
-    """The worker processes before anything malformed arrives."""
-    return {child.pid for child in psutil.Process(service.process.pid).children()}
-
-
 def test_names_differ():
     names = [row.name for row in (*TABLES, *OVER_LIMIT)]
     assert len(set(names)) == len(names) >= 80
@@ -364,7 +357,7 @@ def spoilt(file: bytes, chance: random.Random) -> bytes:
 def test_spoilt_files(small_service, small_client, seed):
     """Any answer will do but a 500, or a summary with a number that is none."""
     chance = random.Random(seed)
-    worker = {child.pid for child in psutil.Process(small_service.process.pid).children()}
+    worker = worker_processes(small_service)
     statuses = set()
     for _ in range(60):
         file = chance.choice([CIF.encode(), TABLE.encode(), AMPLITUDES.encode(), archive(TABLE)])
@@ -379,11 +372,11 @@ def test_spoilt_files(small_service, small_client, seed):
             assert answer.status_code in (400, 422), (body, answer.text)
             assert len(answer.content) < SMALL["max_body_bytes"] // 2
     assert statuses >= {200, 422}
-    assert {child.pid for child in psutil.Process(small_service.process.pid).children()} == worker
+    assert worker_processes(small_service) == worker
 
 
 def test_service_has_come_through_unharmed(service, client, workers):
-    assert {child.pid for child in psutil.Process(service.process.pid).children()} == workers
+    assert worker_processes(service) == workers
     answer = client.post("/v1/sets/inspect", content=CIF.encode(), headers={"Content-Type": "chemical/x-cif"})
     assert answer.json()["group"] == "P 21 21 21"
     assert client.post("/v1/profile", json=bodies.PROFILE, headers={"Accept": JSON}).status_code == 200

@@ -10,11 +10,11 @@ import json
 import math
 import random
 
-import psutil
 import pytest
 
 from service.schemas.products import PRODUCTS
 from tests.service import bodies
+from tests.service.conftest import worker_processes
 
 SEEDS = range(12)
 ROUNDS = 40
@@ -75,7 +75,7 @@ def holes(value):
 @pytest.mark.parametrize("seed", SEEDS)
 def test_spoilt_requests(small_service, small_client, seed):
     chance = random.Random(seed)
-    workers = {child.pid for child in psutil.Process(small_service.process.pid).children()}
+    workers = worker_processes(small_service)
     requests = [*bodies.GOOD.items(), ("slice", bodies.PLANE), ("grid", bodies.BOX)]
     statuses = set()
     for _ in range(ROUNDS):
@@ -89,4 +89,4 @@ def test_spoilt_requests(small_service, small_client, seed):
             assert not holes(told["values"]), (product, body)
             assert not holes({name: told["summary"][name] for name in ("minimum", "maximum", "mean", "rms")})
     assert statuses >= {200, 422}
-    assert {child.pid for child in psutil.Process(small_service.process.pid).children()} == workers
+    assert worker_processes(small_service) == workers

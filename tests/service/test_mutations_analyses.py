@@ -5,12 +5,12 @@ from __future__ import annotations
 import json
 import random
 
-import psutil
 import pytest
 
 from service.schemas.reports import REPORTS
 from tests.service import bodies
 from tests.service.analyses.asked import FEW, FILM, GOOD, LATER
+from tests.service.conftest import worker_processes
 from tests.service.series_bodies import SERIES, SLICES
 from tests.service.test_mutations import holes, spoilt
 
@@ -69,7 +69,7 @@ REQUESTS = [
 @pytest.mark.parametrize("seed", SEEDS)
 def test_spoilt_requests(small_service, small_client, seed):
     chance = random.Random(1000 + seed)
-    workers = {child.pid for child in psutil.Process(small_service.process.pid).children()}
+    workers = worker_processes(small_service)
     statuses = set()
     for _ in range(ROUNDS):
         product, body = chance.choice(REQUESTS)
@@ -86,4 +86,4 @@ def test_spoilt_requests(small_service, small_client, seed):
             told = answer.json()
             assert not holes([told[name] for name in ("values", "uncertainty", "unmeasured") if told.get(name)]), body
     assert statuses >= {200, 422}
-    assert {child.pid for child in psutil.Process(small_service.process.pid).children()} == workers
+    assert worker_processes(small_service) == workers

@@ -10,7 +10,7 @@ from scipy import integrate
 
 from engine.amplitudes.corrections import FilmAbsorption, Footprint, Lorentz, Multiplicity, Polarisation
 from engine.errors import InputError
-from engine.films.amplitudes import film_amplitudes, order_table, overlapping
+from engine.films.amplitudes import order_table, overlapping
 from engine.films.scans import Scan
 from engine.films.spacing import fit_spacing
 
@@ -54,7 +54,7 @@ def test_planted_amplitudes_come_back_through_all_corrections():
     spacing = fit_spacing(scan, orders)
     # A posterior mean lies below the root by about (σ/I)² of it.
     for rule, tolerance in (("root", 1e-8), ("bayesian", 2e-4)):
-        film = film_amplitudes(scan, orders, spacing, corrections=CORRECTIONS, rule=rule)
+        film = order_table(scan, orders, spacing, corrections=CORRECTIONS, rule=rule).film()
         assert film.order.tolist() == orders
         np.testing.assert_allclose(film.amplitude, [90, 40, 25, 12, 3], rtol=tolerance)
         # σ_F/F is half of σ_I/I.
@@ -92,7 +92,7 @@ def test_weak_and_negative_orders_are_posterior_means(symmetric):
     q = 2 * np.pi * np.arange(1, 5) / PERIOD
     intensity, sigma = np.array([400.0, 30.0, 2.0, -3.0]), np.array([5.0, 4.0, 3.0, 2.5])
     scan = Scan.of(q=q, intensity=intensity, intensity_sigma=sigma)
-    film = film_amplitudes(scan, [1, 2, 3, 4], fit_spacing(scan, [1, 2, 3, 4]), symmetric=symmetric)
+    film = order_table(scan, [1, 2, 3, 4], fit_spacing(scan, [1, 2, 3, 4]), symmetric=symmetric).film()
     mean = intensity.mean()
     for row in range(4):
 
@@ -128,17 +128,17 @@ def test_root_leaves_negatives_out_or_refuses_them():
     np.testing.assert_allclose(table.film().amplitude, np.sqrt([50, 20, 4, 9]))
     assert any("without an amplitude: 3" in words for words in table.applied)
     with pytest.raises(InputError, match="has no root"):
-        film_amplitudes(scan, orders, spacing, rule="root", negative="refuse")
+        order_table(scan, orders, spacing, rule="root", negative="refuse").film()
 
 
 def test_root_will_do_without_sigmas():
     scan = Scan.of(q=2 * np.pi * np.array([1, 2]) / PERIOD, intensity=[9.0, 4.0])
     spacing = fit_spacing(scan, [1, 2])
-    film = film_amplitudes(scan, [1, 2], spacing, rule="root")
+    film = order_table(scan, [1, 2], spacing, rule="root").film()
     assert film.amplitude.tolist() == [3.0, 2.0]
     assert film.sigma is None
     with pytest.raises(InputError, match="intensity_sigma: is absent"):
-        film_amplitudes(scan, [1, 2], spacing)
+        order_table(scan, [1, 2], spacing).film()
 
 
 def test_saturated_lines_stay_in_the_table_and_out_of_the_film_unless_asked():
@@ -240,7 +240,7 @@ def test_bad_requests_are_refused():
     ]
     for used, numbers, fitted, more, reason in cases:
         with pytest.raises(InputError, match=reason):
-            film_amplitudes(used, numbers, fitted, **more)
+            order_table(used, numbers, fitted, **more).film()
 
 
 def test_backscattering_cannot_be_corrected():
@@ -248,4 +248,4 @@ def test_backscattering_cannot_be_corrected():
     scan = Scan.of(q=[2 * np.pi / period], intensity=[1.0], intensity_sigma=[0.1], order=[1], wavelength=CU)
     spacing = fit_spacing(scan, [1])
     with pytest.raises(InputError, match="cannot be undone at order 1"):
-        film_amplitudes(scan, [1], spacing, corrections=(Lorentz("rotation"),))
+        order_table(scan, [1], spacing, corrections=(Lorentz("rotation"),)).film()

@@ -3,7 +3,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from service.analyses.common import heading, rows, table_of, told
+from service.analyses.common import finite, heading, rows, table_of, told
 from tests.service import bodies
 
 SET = bodies.coefficients(bodies.FILM)
@@ -54,3 +54,10 @@ def test_resolution_is_that_of_the_terms_with_a_phase():
     given = bodies.coefficients({**bodies.FILM, "phase_deg": [0, 180, 0, None]})
     document = heading("x", given, unit="", contains=(), omits=(), applied=(), notes=())
     assert document["resolution"]["d_min"] == pytest.approx(bodies.PERIOD / 3)
+
+
+@pytest.mark.parametrize(
+    ("value", "told"), [(None, None), (float("inf"), None), (-float("inf"), None), (float("nan"), None), (-2.5, -2.5)]
+)
+def test_what_json_cannot_write_is_null(value, told):
+    assert finite(value) == told

@@ -17,7 +17,7 @@ import psutil
 import pytest
 
 from tests.service import bodies
-from tests.service.conftest import alone
+from tests.service.conftest import alone, worker_processes
 from tests.service.problem_shape import assert_problem
 
 HEAVY = json.dumps(bodies.heavy_grid()).encode()
@@ -30,10 +30,6 @@ def narrow():
     """One worker, no queue, little patience."""
     with alone(**bodies.HEAVY_LIMITS, queue=0, request_seconds=LIMIT) as served:
         yield served
-
-
-def workers(served):
-    return [child.pid for child in psutil.Process(served.process.pid).children()]
 
 
 def ended(pid):
@@ -77,7 +73,7 @@ def under_way(served):
 def test_worker_killed_during_a_request_costs_that_request(narrow):
     with under_way(narrow) as future:
         time.sleep(0.3)
-        os.kill(workers(narrow)[0], signal.SIGKILL)
+        os.kill(*worker_processes(narrow), signal.SIGKILL)
         assert_problem(future.result(), 500, kind="internal")
     assert_computes(narrow)
     assert "a worker died with code -9" in narrow.log.read_text()
@@ -85,17 +81,17 @@ def test_worker_killed_during_a_request_costs_that_request(narrow):
 
 def test_worker_killed_between_requests_costs_nothing(narrow):
     assert_computes(narrow)
-    victim = workers(narrow)[0]
+    (victim,) = worker_processes(narrow)
     os.kill(victim, signal.SIGKILL)
     until(lambda: ended(victim))
     assert_computes(narrow)
-    assert len(workers(narrow)) == 1
-    assert workers(narrow)[0] != victim
+    assert len(worker_processes(narrow)) == 1
+    assert worker_processes(narrow) != {victim}
 
 
 def test_too_slow_is_504_and_ends_the_work(narrow):
     assert_computes(narrow)
-    before = workers(narrow)
+    before = worker_processes(narrow)
     begin = time.monotonic()
     document = assert_problem(heavy(narrow), 504, kind="timeout")
     assert LIMIT <= time.monotonic() - begin < LIMIT + 3
@@ -116,7 +112,7 @@ def test_full_queue_is_503_with_retry_after(narrow):
 
 def test_client_that_leaves_has_its_computation_ended(narrow):
     assert_computes(narrow)
-    before = workers(narrow)
+    before = worker_processes(narrow)
     head = (
         "POST /v1/grid?format=npy HTTP/1.1\r\nHost: here\r\nContent-Type: application/json\r\n"
         f"Content-Length: {len(HEAVY)}\r\n\r\n"
@@ -171,7 +167,7 @@ def test_event_loop_answers_while_a_million_rows_are_read(service, client):
 @pytest.mark.skipif(not Path("/proc/self/fd").exists(), reason="descriptors are counted in /proc")
 def test_no_descriptor_leaks(narrow):
     def descriptors():
-        pids = [narrow.process.pid, *workers(narrow)]
+        pids = [narrow.process.pid, *sorted(worker_processes(narrow))]
         return [len(list(Path(f"/proc/{pid}/fd").iterdir())) for pid in pids]
 
     address = int(narrow.address.rpartition(":")[2])
@@ -200,7 +196,7 @@ def test_no_descriptor_leaks(narrow):
 def test_workers_end_with_their_server():
     """Even with one that is killed and can end nothing itself."""
     with alone(compute_workers=1) as served:
-        pids = workers(served)
+        pids = worker_processes(served)
         assert len(pids) == 1
         served.process.kill()
         until(lambda: all(map(ended, pids)))
