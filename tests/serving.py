@@ -40,15 +40,20 @@ class Served:
 
 
 @contextmanager
-def serving(**settings: object) -> Iterator[Served]:
-    """Start the service with settings by their names (``queue=0``), and end it afterwards."""
+def serving(*arguments: str, **settings: object) -> Iterator[Served]:
+    """Start the service with arguments of its command and settings by their names (``queue=0``), and end it afterwards.
+
+    Its store is in a folder that ends with it, unless the settings name another.
+    """
+    folder = tempfile.TemporaryDirectory()
+    settings = {"data_dir": Path(folder.name) / "data", **settings}
     environment = {f"DENSITYLOOM_{name.upper()}": str(value) for name, value in settings.items()}
     with socket.socket() as probe:
         probe.bind(("127.0.0.1", 0))
         port = probe.getsockname()[1]
-    command = [sys.executable, "-m", "service.cli", "serve", "--port", str(port)]
-    with tempfile.TemporaryDirectory() as folder:
-        log = Path(folder) / "service.log"
+    command = [sys.executable, "-m", "service.cli", "serve", "--port", str(port), *arguments]
+    with folder:
+        log = Path(folder.name) / "service.log"
         begin = time.perf_counter()
         with log.open("wb") as sink:
             process = subprocess.Popen(command, stdout=sink, stderr=sink, env={**os.environ, **environment})
