@@ -1,0 +1,1 @@
+"""Answers about stored sets: computed once, kept in memory, compressed where it pays."""
