@@ -213,6 +213,50 @@ class CoefficientSet:
         beyond = self.tally.beyond_resolution + int(np.count_nonzero(~kept))
         return replace(chosen, tally=replace(self.tally, beyond_resolution=beyond))
 
+    def trusting(self, *, least_merit: float | None = None, largest_sigma_deg: float | None = None) -> CoefficientSet:
+        """With phases that are less certain taken as unknown; the zero term keeps its own.
+
+        Parameters
+        ----------
+        least_merit : float, optional
+            Figure of merit from which on a phase is trusted.
+        largest_sigma_deg : float, optional
+            Standard uncertainty up to which it is, degrees.
+
+        Raises
+        ------
+        InputError
+            The set has no such column, or no phase would be left.
+        """
+        doubted = np.zeros(self.count, dtype=bool)
+        words = []
+        if least_merit is not None:
+            if self.merit is None:
+                raise InputError("least_merit", "is given, and the set has no figures of merit", "leave it out")
+            doubted |= self.merit < least_merit
+            words.append(f"a figure of merit below {least_merit:g}")
+        if largest_sigma_deg is not None:
+            if self.phase_sigma is None:
+                raise InputError(
+                    "largest_sigma_deg", "is given, and the set has no uncertainties of phases", "leave it out"
+                )
+            doubted |= self.phase_sigma > np.deg2rad(largest_sigma_deg)
+            words.append(f"an uncertainty above {largest_sigma_deg:g}°")
+        doubted &= self.phase_known & self.indices.any(axis=1)
+        if not doubted.any():
+            return self
+        known = self.phase_known & ~doubted
+        if not known[self.indices.any(axis=1)].any():
+            raise InputError((), f"leaves no phase: all have {' or '.join(words)}", "trust more of them")
+        count = int(np.count_nonzero(doubted))
+        told = f"phases of {count} coefficients taken as unknown for {' or '.join(words)}"
+        return replace(
+            self,
+            values=np.where(doubted, np.abs(self.values), self.values),
+            phase_known=known,
+            history=(*self.history, told),
+        )
+
     def resolution(self) -> tuple[float, float] | None:
         """Smallest and largest spacing d held (Å), the zero term aside; None without any."""
         others = self.indices[self.indices.any(axis=1)]

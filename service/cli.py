@@ -3,25 +3,23 @@
 from __future__ import annotations
 
 import argparse
-import ipaddress
 import os
 import signal
-import socket
 import sys
 from collections.abc import Sequence
+from contextlib import closing
 from importlib.metadata import version
 from pathlib import Path
 from typing import Any
 
 import orjson
-import uvicorn
 from tqdm import tqdm
 
 from engine.errors import EngineError
 from engine.evaluate import Work
 from engine.synthesis import Progress
-from service import intake, pipeline
-from service.encoders.negotiation import PICTURE_FORMATS, ROW_FORMATS, formats_of
+from service import cli_keys, cli_serve, intake, pipeline
+from service.encoders.negotiation import MEDIA_TYPES, formats_of
 from service.encoders.report import report_csv, report_json
 from service.encoders.stack import write_stack
 from service.parts import Part
@@ -31,10 +29,12 @@ from service.schemas.films import FilmRequestIn
 from service.schemas.products import ProductIn
 from service.schemas.requests import INSPECT, InspectIn
 from service.schemas.series import SeriesIn
+from service.schemas.store import KeepIn
 from service.schemas.treatment import SetRequestIn
 from service.settings import Settings, load_settings
 from service.spool import Spool
 from service.stacks import stack
+from service.store.shelf import Shelf
 from service.terminal import render
 from service.terminal_report import render_report
 from service.terminal_stack import render_stack
@@ -74,11 +74,8 @@ def _parser() -> argparse.ArgumentParser:
     parser.add_argument("--version", action="version", version=f"densityloom {version('densityloom')}")
     actions = parser.add_subparsers(required=True, metavar="ACTION")
 
-    serve = actions.add_parser("serve", help="run the REST service")
-    serve.add_argument("--host", default="127.0.0.1", help="address to listen on (default: this machine only)")
-    serve.add_argument("--port", type=int, default=8420)
-    serve.add_argument("--workers", type=int, default=1, help="server processes; each has its own computing workers")
-    serve.set_defaults(action=_serve)
+    cli_serve.add(actions)
+    cli_keys.add(actions)
 
     run = actions.add_parser("run", help="compute one request without a server")
     run.add_argument("request", type=Path, help="JSON file; its member product names what is wanted")
@@ -90,7 +87,7 @@ def _parser() -> argparse.ArgumentParser:
     run.add_argument(
         "--out",
         type=Path,
-        help=f"file to write, by its ending ({', '.join((*ROW_FORMATS, *PICTURE_FORMATS))}); else show the result",
+        help=f"file to write, by its ending ({', '.join(MEDIA_TYPES)}); else show the result",
     )
     run.add_argument("--threads", type=int, default=_cores(), help="default: all cores")
     run.set_defaults(action=_run)
@@ -108,36 +105,6 @@ def _cores() -> int:
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
-def _serve(options: argparse.Namespace) -> int:
-    load_settings()
-    if not _is_loopback(options.host):
-        print(
-            f"densityloom: listening on {options.host}: anyone who can reach it can have work computed. "
-            "Put a proxy that asks for credentials before it.",
-            file=sys.stderr,
-        )
-    uvicorn.run(
-        "service.app:create_app",
-        factory=True,
-        host=options.host,
-        port=options.port,
-        workers=options.workers,
-        # Of the parsers this one bounds the size of a header.
-        http="h11",
-        server_header=False,
-        timeout_graceful_shutdown=10,
-    )
-    return 0
-
-
-def _is_loopback(host: str) -> bool:
-    try:
-        return ipaddress.ip_address(host).is_loopback
-    except ValueError:
-        found = socket.getaddrinfo(host, None)
-        return all(ipaddress.ip_address(entry[4][0]).is_loopback for entry in found)
-
-
 def _run(options: argparse.Namespace) -> int:
     # A batch system ends its jobs so; our unfinished file must not outlive it either.
     signal.signal(signal.SIGTERM, signal.default_int_handler)
@@ -146,9 +113,12 @@ def _run(options: argparse.Namespace) -> int:
         raise ValueError("--threads: give at least 1")
     document = intake.decode(options.request.read_bytes())
     files = {name: part for name in intake.FILES if (part := _file(options, name)) is not None}
-    product, request = intake.check(None, document, files, max_body_bytes=settings.max_body_bytes)
+    with closing(Shelf(settings)) as shelf:
+        product, request = intake.check(None, document, files, max_body_bytes=settings.max_body_bytes, shelf=shelf)
     if isinstance(request, InspectIn):
         raise ValueError(f"{options.request.name} asks for an inspection: use densityloom inspect")
+    if isinstance(request, KeepIn):
+        raise ValueError(f"{options.request.name} is for the store of a service: POST it to /v1/sets")
     form = _form(product, options.out)
     if isinstance(request, FilmRequestIn):
         return _film(request, form, options, settings)

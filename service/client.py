@@ -3,12 +3,14 @@
 with Client("http://127.0.0.1:8420") as client:
     result = client.compute("profile", {"set": {...}, "from": [0], "to": [1], "samples": 512})
     result.values, result.axes[0], result.metadata["unit"]
+    identity = client.keep({...}, name="film KL-2")["id"]
+    same = client.fetch(identity, "profile", {"from": [0], "to": [1], "samples": 512})
 """
 
 from __future__ import annotations
 
 import io
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from types import TracebackType
 from typing import Any, Self
@@ -77,14 +79,19 @@ class Client:
     Parameters
     ----------
     base_url : str
+    key : str, optional
+        An API key, where the service asks for one.
     timeout : float
         Seconds to wait for an answer.
     http : httpx.Client, optional
-        An HTTP client of the caller's own, for proxies, credentials or tests.
+        An HTTP client of the caller's own, for proxies or tests.
     """
 
-    def __init__(self, base_url: str, *, timeout: float = 300.0, http: httpx.Client | None = None) -> None:
+    def __init__(
+        self, base_url: str, *, key: str | None = None, timeout: float = 300.0, http: httpx.Client | None = None
+    ) -> None:
         self._http = http or httpx.Client(base_url=base_url, timeout=timeout)
+        self._headers = {} if key is None else {"Authorization": f"Bearer {key}"}
 
     def compute(
         self, product: str, request: Mapping[str, Any], columns: Mapping[str, ArrayLike] | None = None
@@ -132,11 +139,68 @@ class Client:
         """Have a profile, slice or grid drawn, as image/png or image/svg+xml; else as `compute`."""
         return self._answer(product, request, columns, media_type).content
 
+    def keep(
+        self,
+        given: Mapping[str, Any],
+        columns: Mapping[str, ArrayLike] | None = None,
+        *,
+        name: str | None = None,
+        tags: Sequence[str] = (),
+    ) -> dict[str, Any]:
+        """Have a set kept; `given` is the member ``set`` of a request, else as `compute`.
+
+        Returns
+        -------
+        dict
+            The set's record with its ``id``, and ``summary``. The same set again is the same id.
+        """
+        request = {"set": dict(given), **({} if name is None else {"name": name}), "tags": list(tags)}
+        made: dict[str, Any] = self._answer("sets", request, columns, "application/json").json()
+        return made
+
+    def sets(self, *, search: str = "", tags: Sequence[str] = ()) -> Iterator[dict[str, Any]]:
+        """Records of the sets that are kept, newest first; those with a text in their names and with all tags."""
+        query: dict[str, Any] = {"limit": 200, "search": search, "tag": list(tags)}
+        while True:
+            page = self._get("/v1/sets", query, "application/json").json()
+            yield from page["sets"]
+            if page["next"] is None:
+                return
+            query["after"] = page["next"]
+
+    def columns(self, identity: str) -> dict[str, NDArray[Any]]:
+        """Columns of a kept set, bit for bit; of a file of reflections use the address itself."""
+        content = self._get(f"/v1/sets/{identity}/columns", {}, NPZ).content
+        with np.load(io.BytesIO(content), allow_pickle=False) as archive:
+            return {column: archive[column] for column in archive.files}
+
+    def fetch(self, identity: str, product: str, members: Mapping[str, Any]) -> Result:
+        """Get one product of a kept set; `members` are those of a request, else as `compute`."""
+        return _result(self._get(f"/v1/sets/{identity}/{product}", _query(members), NPZ).content)
+
+    def fetch_report(self, identity: str, analysis: str, members: Mapping[str, Any]) -> dict[str, Any]:
+        """Get one analysis of a kept set; else as `fetch`."""
+        address = f"/v1/sets/{identity}/{analysis}"
+        made: dict[str, Any] = self._get(address, _query(members), "application/json").json()
+        return made
+
+    def forget(self, identity: str) -> None:
+        """Have a kept set deleted."""
+        answer = self._http.delete(f"/v1/sets/{identity}")
+        if answer.is_error:
+            raise _error(answer)
+
+    def _get(self, address: str, query: Mapping[str, Any], accept: str) -> httpx.Response:
+        answer = self._http.get(address, params=dict(query), headers={"Accept": accept})
+        if answer.is_error:
+            raise _error(answer)
+        return answer
+
     def _answer(
         self, product: str, request: Mapping[str, Any], columns: Mapping[str, ArrayLike] | None, accept: str
     ) -> httpx.Response:
         body = orjson.dumps(dict(request), option=orjson.OPT_SERIALIZE_NUMPY)
-        headers = {"Accept": accept}
+        headers = {**self._headers, "Accept": accept}
         if columns is None:
             headers["Content-Type"] = "application/json"
             answer = self._http.post(f"/v1/{product}", content=body, headers=headers)
@@ -164,6 +228,14 @@ class Client:
         self, kind: type[BaseException] | None, fault: BaseException | None, trace: TracebackType | None
     ) -> None:
         self.close()
+
+
+def _query(members: Mapping[str, Any]) -> dict[str, str]:
+    """Members as a query: texts as they are, the rest as JSON."""
+    return {
+        name: value if isinstance(value, str) else orjson.dumps(value, option=orjson.OPT_SERIALIZE_NUMPY).decode()
+        for name, value in members.items()
+    }
 
 
 def _error(answer: httpx.Response) -> ServiceError:

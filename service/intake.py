@@ -10,12 +10,15 @@ multipart/form-data
     with a laboratory's file, which is prepared as ``set.preparation`` says.
 
 The second set of a combination or a comparison comes in the same way, as ``with_columns`` or
-``with_reflections``. An inspection takes a file of reflections as the whole body too.
+``with_reflections``. An inspection, and a set to be kept, take a file of reflections as the whole body too.
+
+A set of the store is named by ``set_id`` in place of the member ``set``, and by an object with ``set_id``
+alone where a second set stands.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -28,9 +31,10 @@ from engine.readers import read_delimited, read_npz
 from service.forms import split
 from service.parts import Part
 from service.problems import Problem, at, from_validation
-from service.schemas.coefficient_set import COLUMN_NAMES
+from service.schemas.coefficient_set import COLUMN_NAMES, StoredSetIn
 from service.schemas.films import SCAN_COLUMNS, SCANS
-from service.schemas.requests import INSPECT, REQUESTS, Request
+from service.schemas.requests import INSPECT, KEEP, REQUESTS, Request
+from service.schemas.treatment import SetRequestIn
 
 JSON = "application/json"
 MULTIPART = "multipart/form-data"
@@ -44,13 +48,31 @@ UNPACKED_RATIO = 8
 """An archive may unpack to this many times the longest body; columns hardly compress further."""
 
 
-def read(product: str | None, content_type: str, body: bytes, *, max_body_bytes: int) -> tuple[str, Request]:
+Shelf = Callable[[str], StoredSetIn]
+FILE_ALONE: dict[str, dict[str, Any]] = {INSPECT: {"set": {}}, KEEP: {"set": {"values": "structure_factor"}}}
+"""Requests that a file of reflections makes by itself; such files hold structure factors."""
+NO_MEMBERS: Mapping[str, Any] = {}
+
+
+def read(
+    product: str | None,
+    content_type: str,
+    body: bytes,
+    *,
+    max_body_bytes: int,
+    shelf: Shelf | None = None,
+    members: Mapping[str, Any] = NO_MEMBERS,
+) -> tuple[str, Request]:
     """Parse and check a request.
 
     Parameters
     ----------
     product : str or None
         What the address asks for; None: the request itself says so.
+    shelf : callable, optional
+        Hands out sets of the store by their ids.
+    members : mapping
+        Members of the request that came with the address.
 
     Raises
     ------
@@ -58,18 +80,22 @@ def read(product: str | None, content_type: str, body: bytes, *, max_body_bytes:
         415, 400 or 422, naming the place.
     """
     media_type = content_type.split(";")[0].strip().lower()
+    files: Mapping[str, Part] = {}
     if media_type == JSON:
-        return check(product, decode(body), {}, max_body_bytes=max_body_bytes)
-    if media_type == MULTIPART:
-        request, files = _parts(content_type, body, product)
-        return check(product, request, files, max_body_bytes=max_body_bytes)
-    if product == INSPECT and media_type in FILE_TYPES:
-        files = {"reflections": Part(media_type, body)}
-        return check(product, {"set": {}}, files, max_body_bytes=max_body_bytes)
-    send = f"{JSON}, or {MULTIPART} with the parts request ({JSON}) and columns ({CSV} or {NPZ})"
-    if product == INSPECT:
-        send = f"the file as {', '.join(FILE_TYPES)}, or as the part reflections of {MULTIPART}"
-    raise Problem("unsupported-media-type", f"The body is {media_type[:60] or 'of no stated type'}; send {send}.")
+        document = decode(body)
+    elif media_type == MULTIPART:
+        document, files = _parts(content_type, body, product)
+    elif product in FILE_ALONE and media_type in FILE_TYPES:
+        document, files = FILE_ALONE[product], {"reflections": Part(media_type, body)}
+    else:
+        send = f"{JSON}, or {MULTIPART} with the parts request ({JSON}) and columns ({CSV} or {NPZ})"
+        if product in FILE_ALONE:
+            send = f"the file as {', '.join(FILE_TYPES)}, or as the part reflections of {MULTIPART}"
+        raise Problem("unsupported-media-type", f"The body is {media_type[:60] or 'of no stated type'}; send {send}.")
+    twice = sorted(set(members) & set(document))
+    if twice:
+        raise at((twice[0],), "is given in the body and again in the address", "give it once")
+    return check(product, {**document, **members}, files, max_body_bytes=max_body_bytes, shelf=shelf)
 
 
 def decode(body: bytes) -> dict[str, Any]:
@@ -99,6 +125,7 @@ def check(
     files: Mapping[str, Part],
     *,
     max_body_bytes: int,
+    shelf: Shelf | None = None,
 ) -> tuple[str, Request]:
     """Check a request against the schema of its product, joined with what was sent beside it.
 
@@ -119,6 +146,8 @@ def check(
         product = named
     elif named is not None and named != product:
         raise at(("product",), f"differs from the address, which asks for {product}", "make the two agree")
+    if issubclass(REQUESTS[product], SetRequestIn):
+        document = _fetched(document, shelf)
     for prefix in ("", "with_"):
         found: dict[str, NDArray[np.float64] | Part] = {
             name: files[prefix + name] for name in ("reflections", "reference") if prefix + name in files
@@ -135,6 +164,33 @@ def check(
         return product, REQUESTS[product].model_validate(document)
     except ValidationError as fault:
         raise from_validation(fault) from fault
+
+
+def _fetched(document: dict[str, Any], shelf: Shelf | None) -> dict[str, Any]:
+    """The document with sets of the store where it names them."""
+    if "set_id" in document:
+        if "set" in document:
+            raise at(("set_id",), "is given beside a set", "give one of the two")
+        stored = _stored(document["set_id"], ("set_id",), shelf)
+        document = {"set": stored, **{name: value for name, value in document.items() if name != "set_id"}}
+    for place in (("combination", "with"), ("combination", "third"), ("with",)):
+        *outer, last = place
+        holder: Any = document
+        for name in outer:
+            holder = holder.get(name) if isinstance(holder, dict) else None
+        named = holder.get(last) if isinstance(holder, dict) else None
+        if isinstance(named, dict) and set(named) == {"set_id"}:
+            whole: Any = {**holder, last: _stored(named["set_id"], (*place, "set_id"), shelf)}
+            document = {**document, outer[0]: whole} if outer else whole
+    return document
+
+
+def _stored(identity: object, place: tuple[str, ...], shelf: Shelf | None) -> StoredSetIn:
+    if not isinstance(identity, str):
+        raise at(place, "is not text", "give the id of a set of the store")
+    if shelf is None:
+        raise at(place, "names a set of the store, and there is none here", "give the set itself")
+    return shelf(identity)
 
 
 def _place(prefix: str, document: dict[str, Any]) -> tuple[str, ...]:
@@ -202,7 +258,7 @@ def _parts(content_type: str, body: bytes, product: str | None) -> tuple[dict[st
         )
     files = {name: part for name, part in parts.items() if name != "request"}
     if "request" not in parts:
-        if product != INSPECT:
+        if product not in FILE_ALONE:
             raise Problem("malformed-body", "The form has no part request; send it as JSON.")
-        return {"set": {}}, files
+        return FILE_ALONE[product], files
     return decode(parts["request"].data), files

@@ -16,7 +16,7 @@ from engine.symmetry import Group, expand
 from engine.symmetry.invariance import related
 from service.interpret_file import prepared, symmetry_group
 from service.problems import at, located
-from service.schemas.coefficient_set import COLUMN_NAMES, INDEX_NAMES, Cell, CoefficientSetIn
+from service.schemas.coefficient_set import COLUMN_NAMES, INDEX_NAMES, Cell, CoefficientSetIn, StoredSetIn
 from service.schemas.treatment import SetRequestIn
 
 LARGEST = 1e70
@@ -32,7 +32,20 @@ def one_set(request: SetRequestIn, given: CoefficientSetIn, *, max_coefficients:
     Problem
         Pointing to the place in the body, as if the set were the member ``set``.
     """
-    missing = request.missing_phase
+    made = whole_set(given, request.missing_phase, max_coefficients=max_coefficients)
+    with located("resolution"):
+        made = made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
+    with located("trust"):
+        return made.trusting(
+            least_merit=request.trust.least_merit, largest_sigma_deg=request.trust.largest_sigma_deg
+        )
+
+
+def whole_set(given: CoefficientSetIn, missing: MissingPhase, *, max_coefficients: int) -> CoefficientSet:
+    """A set expanded by its symmetry, not yet cut; raises as `one_set`. A stored one is interpreted once."""
+    stored = given if isinstance(given, StoredSetIn) else None
+    if stored is not None and (kept := stored.kept(missing)) is not None:
+        return kept
     read = _of_columns if given.reflections is None else _of_file
     made = read(given, missing, max_coefficients)
     largest = max(float(np.abs(column).max(initial=0.0)) for column in (made.values, made.sigma) if column is not None)
@@ -42,8 +55,9 @@ def one_set(request: SetRequestIn, given: CoefficientSetIn, *, max_coefficients:
             f"holds values beyond {LARGEST:g} in the unit of the density, whose powers overflow",
             "state the columns in a larger unit",
         )
-    with located("resolution"):
-        return made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
+    if stored is not None:
+        stored.keep(missing, made)
+    return made
 
 
 def lattice_of(cell: Cell) -> Lattice:

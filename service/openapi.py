@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any, Literal
 
 from fastapi import FastAPI
@@ -9,6 +10,7 @@ from fastapi.openapi.utils import get_openapi
 from pydantic import BaseModel
 from pydantic.json_schema import models_json_schema
 
+from service.access.scopes import is_open, scope_needed
 from service.encoders.negotiation import MEDIA_TYPES, formats_of
 from service.intake import CSV, FILE_TYPES, FILES, JSON, MULTIPART, NPZ
 from service.parts import Part
@@ -19,10 +21,12 @@ from service.schemas.film_models import MODELS
 from service.schemas.film_reports import FILM_REPORTS
 from service.schemas.films import SCANS
 from service.schemas.reports import REPORTS
-from service.schemas.requests import INSPECT, REQUESTS, SERIES
+from service.schemas.requests import INSPECT, KEEP, REQUESTS, SERIES
+from service.schemas.store import KeptOut, ListOut
 from service.schemas.summary import SummaryAnswer
+from service.schemas.treatment import SetRequestIn
 
-_SCHEMAS = "#/components/schemas/"
+SCHEMAS = "#/components/schemas/"
 
 SUMMARIES = {
     "profile": "Values along a line",
@@ -34,6 +38,7 @@ SUMMARIES = {
     "integrals": "Integrals over slabs, lines, boxes and balls",
     "layers": "Layers of a profile: position, height, width, area",
     "statistics": "Moments and histogram of a field",
+    "features": "What stands out: extrema, moments, layers of a stack",
     "windows": "What termination windows do to a point and to a step",
     "compare": "Agreement of two densities on one cell",
     "film": "A film from a scan's order table to its layer profile and layer table",
@@ -42,6 +47,7 @@ SUMMARIES = {
     "film_contrast": "Signs of one stack from several contrasts at one period",
     "film_trial": "A trial stack against measured amplitudes",
     INSPECT: "Summary of a file of reflections",
+    KEEP: "Keep a set",
 }
 
 DESCRIPTION = """Send Fourier coefficients, get the density they stand for, n(r) = Σ n_G exp(iG·r), on a line, a
@@ -170,6 +176,7 @@ EXAMPLES: dict[str, dict[str, Any]] = {
     },
     "layers": {"set": _MEASURED_FILM, "from": [0], "to": [1]},
     "statistics": {"set": _CRYSTAL, "bins": 32},
+    "features": {"set": _MEASURED_FILM},
     "windows": {"set": _FILM},
     "compare": {"set": _FILM, "with": {**_FILM, "amplitude": [12.4, 40.8, 8.1, 23.3]}},
     "film": {"scan": _SCAN, **_FILM_TASK},
@@ -186,17 +193,21 @@ EXAMPLES: dict[str, dict[str, Any]] = {
     "film_swelling": _SWELLING,
     "film_contrast": _CONTRAST,
     "film_trial": _TRIAL,
+    KEEP: {"set": _MEASURED_FILM, "name": "film KL-2, 40 % humidity", "tags": ["invented", "film"]},
 }
 
 
 def operation(product: str) -> dict[str, Any]:
     """What FastAPI is told of the endpoint of a product."""
-    schema = {"$ref": _SCHEMAS + REQUESTS[product].__name__}
+    schema = {"$ref": SCHEMAS + REQUESTS[product].__name__}
     return {
         "operation_id": product,
         "summary": SUMMARIES[product],
         "description": f"{REQUESTS[product].__doc__} The answer's form is chosen by `Accept` or `?format=`.",
-        "responses": {200: {"description": "The answer", "content": _answers(product)}, **_problems()},
+        "responses": {
+            200: {"description": "The answer", "content": answers(product)},
+            **problems(_problems_of(product)),
+        },
         "openapi_extra": {
             "parameters": [
                 {
@@ -207,23 +218,32 @@ def operation(product: str) -> dict[str, Any]:
                     "schema": {"type": "string", "enum": list(formats_of(product))},
                 }
             ],
-            "requestBody": {"required": True, "content": _bodies(product, schema)},
+            "requestBody": {"required": True, "content": bodies(product, schema)},
         },
     }
 
 
-def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
+def bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
     """The request body in each media type."""
     binary = {"type": "string", "format": "binary"}
     request = {"type": "object", "description": "the request without columns in its set"}
-    named = (
-        ("reflections", "reference") if product == INSPECT else [one for one in FILES if not one.endswith("columns")]
-    )
+    of_one = ("reflections", "reference")
+    named = of_one if product in (INSPECT, KEEP) else [one for one in FILES if not one.endswith("columns")]
     properties: dict[str, Any] = {"request": request, **dict.fromkeys(named, binary)}
     encoding: dict[str, Any] = {
         "request": {"contentType": JSON},
         **{name: {"contentType": ", ".join(FILE_TYPES)} for name in named},
     }
+    if product == KEEP:
+        form = {"type": "object", "properties": {**properties, "columns": binary}}
+        encoding["columns"] = {"contentType": f"{CSV}, {NPZ}"}
+        whole = {media_type: {"schema": binary} for media_type in FILE_TYPES}
+        examples = {"small": {"summary": "A small film", "value": EXAMPLES[KEEP]}}
+        return {
+            JSON: {"schema": schema, "examples": examples},
+            MULTIPART: {"schema": form, "encoding": encoding},
+            **whole,
+        }
     if product in MODELS:
         return {
             JSON: {"schema": schema, "examples": {"small": {"summary": "A small film", "value": EXAMPLES[product]}}}
@@ -256,7 +276,8 @@ def _bodies(product: str, schema: dict[str, str]) -> dict[str, Any]:
     }
 
 
-def _answers(product: str) -> dict[str, Any]:
+def answers(product: str) -> dict[str, Any]:
+    """The answer of a product in each media type."""
     content: dict[str, Any] = {}
     for name in formats_of(product):
         schema: dict[str, Any] = {"type": "string", "format": "binary"}
@@ -268,25 +289,58 @@ def _answers(product: str) -> dict[str, Any]:
                 **FILM_REPORTS,
             }
             answer = reports.get(product, Answer)
-            schema = {"$ref": _SCHEMAS + answer.__name__}
+            schema = {"$ref": SCHEMAS + answer.__name__}
         elif name in ("csv", "svg"):
             schema = {"type": "string"}
         content[MEDIA_TYPES[name].split(";")[0]] = {"schema": schema}
     return content
 
 
-def _problems() -> dict[int | str, dict[str, Any]]:
-    content = {PROBLEM: {"schema": {"$ref": _SCHEMAS + ProblemDocument.__name__}}}
-    kinds = ("malformed-body", "not-acceptable", "body-too-large", "unsupported-media-type", "invalid-request")
+POST_PROBLEMS = (
+    "malformed-body",
+    "not-acceptable",
+    "body-too-large",
+    "unsupported-media-type",
+    "invalid-request",
+    "internal",
+    "busy",
+    "timeout",
+    "not-installed",
+)
+
+
+GUARD_PROBLEMS = (
+    "unauthorized",
+    "forbidden",
+    "misdirected",
+    "rate-limited",
+    "overloaded",
+    "internal",
+)
+"""What any address may answer before its own work begins."""
+BODY_PROBLEMS = ("body-too-slow",)
+
+
+def _problems_of(product: str) -> tuple[str, ...]:
+    """Kinds of problem of the endpoint of a product."""
+    if issubclass(REQUESTS[product], SetRequestIn):
+        # A body may name a set of the store.
+        return (*POST_PROBLEMS, "not-found")
+    return POST_PROBLEMS
+
+
+def problems(kinds: Sequence[str]) -> dict[int | str, dict[str, Any]]:
+    """Answers that are problems of these kinds."""
+    content = {PROBLEM: {"schema": {"$ref": SCHEMAS + ProblemDocument.__name__}}}
     found: dict[int | str, dict[str, Any]] = {}
-    for kind in (*kinds, "internal", "busy", "timeout", "not-installed"):
+    for kind in kinds:
         status, title = TITLES[kind]
         found[status] = {"description": title, "content": content}
     return found
 
 
-def install(app: FastAPI) -> None:
-    """Make the app answer /openapi.json with our models among the components."""
+def install(app: FastAPI, *, keys: bool) -> None:
+    """Make the app answer /openapi.json with our models among the components; `keys`: whether it asks for keys."""
 
     def document() -> dict[str, Any]:
         if app.openapi_schema is None:
@@ -302,14 +356,34 @@ def install(app: FastAPI) -> None:
                 (Answer, "serialization"),
                 (StackAnswer, "serialization"),
                 (SummaryAnswer, "serialization"),
+                (KeptOut, "serialization"),
+                (ListOut, "serialization"),
                 *((model, "serialization") for model in (*REPORTS.values(), *FILM_REPORTS.values())),
                 (ProblemDocument, "serialization"),
             ]
-            _, schemas = models_json_schema(models, ref_template=_SCHEMAS + "{model}")
+            _, schemas = models_json_schema(models, ref_template=SCHEMAS + "{model}")
             # A file is a part of a form, never JSON.
             schemas["$defs"].pop(Part.__name__, None)
             made.setdefault("components", {}).setdefault("schemas", {}).update(schemas["$defs"])
+            _secure(made, keys=keys)
             app.openapi_schema = made
         return app.openapi_schema
 
     app.openapi = document  # type: ignore[method-assign]
+
+
+def _secure(document: dict[str, Any], *, keys: bool) -> None:
+    """Say of every address which key it asks for, and what the guard may answer."""
+    document["components"]["securitySchemes"] = {
+        "key": {"type": "http", "scheme": "bearer", "description": "an API key; `densityloom keys create` makes one"}
+    }
+    for path, operations in document["paths"].items():
+        if is_open(path):
+            continue
+        for method, operation in operations.items():
+            needed = scope_needed(method.upper(), path)
+            # Roles of a scheme are allowed by OpenAPI 3.1; {} says that none is needed.
+            operation["security"] = [{"key": [needed] if needed else []}, *([] if keys else [{}])]
+            kinds = (*GUARD_PROBLEMS, *(BODY_PROBLEMS if "requestBody" in operation else ()))
+            for status, answer in problems(kinds).items():
+                operation["responses"].setdefault(str(status), answer)

@@ -12,8 +12,17 @@ from service.schemas.requests import KEEP, REQUESTS
 from service.schemas.store import KeptOut, ListOut
 
 _BINARY = {"schema": {"type": "string", "format": "binary"}}
-_STORE = ("internal", "store-unavailable")
-GET_PROBLEMS = ("not-found", "not-acceptable", "invalid-request", "internal", "busy", "timeout", "not-installed")
+_STORE = ("malformed-request", "internal", "store-unavailable")
+GET_PROBLEMS = (
+    "malformed-request",
+    "not-found",
+    "not-acceptable",
+    "invalid-request",
+    "internal",
+    "busy",
+    "timeout",
+    "not-installed",
+)
 
 
 def _json(model: type) -> dict[str, Any]:

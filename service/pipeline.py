@@ -13,17 +13,20 @@ import orjson
 from engine.coefficients import CoefficientSet
 from engine.evaluate import Field, Work, prepare
 from engine.preparation import summarize_set
+from engine.preview import preview
 from engine.resolution.change import ChangeWork, prepare_change
 from engine.resolution.envelope import Envelope
+from engine.sampling import AffineGrid, Sampling
 from engine.scattering import composition
 from engine.synthesis import Demand, Progress
 from service import interpret, interpret_combination, interpret_file, interpret_picture, interpret_set, stacks
 from service.analyses.report import Limits, Report
 from service.analyses.run import analyse as analysis
 from service.encoders.describe import Shown
-from service.encoders.negotiation import PICTURE_FORMATS
+from service.encoders.negotiation import PICTURE_FORMATS, SAMPLE_FORMATS
 from service.encoders.picture import require_drawing
 from service.encoders.report import report_csv, report_json
+from service.encoders.samples import samples_header
 from service.encoders.stack import write_stack
 from service.encoders.summary import summary_document
 from service.encoders.write import Wanted, write
@@ -31,15 +34,19 @@ from service.films.contrast import contrast
 from service.films.run import film, film_picture, film_run, film_run_picture
 from service.films.swelling import swelling
 from service.films.trial import trial, trial_picture
+from service.keep import parcel
 from service.problems import Problem, at, located
 from service.schemas.film_models import ContrastIn, SwellingIn, TrialIn
 from service.schemas.films import FilmIn, FilmRequestIn, FilmRunIn
-from service.schemas.products import DrawnIn, ProductIn, UnmeasuredIn
+from service.schemas.products import DrawnIn, GridIn, ProductIn, UnmeasuredIn
 from service.schemas.requests import InspectIn, Request
 from service.schemas.series import SeriesIn
+from service.schemas.store import KeepIn
 from service.schemas.treatment import SetRequestIn
 from service.settings import Settings
 from service.spool import Spool
+from service.store.parcel import pack
+from service.surface import asked_surface, write_surface
 
 Watch = Callable[[Work], Progress | None]
 """Told of the work before it starts; answers with what wants to know of its progress."""
@@ -59,6 +66,14 @@ class Done:
     @property
     def field(self) -> Field:
         return self.shown.field
+
+
+@dataclass(frozen=True, slots=True)
+class Told:
+    """What goes beside an answer: the seconds it took, and headers that belong to its form."""
+
+    seconds: float
+    headers: dict[str, str]
 
 
 def run(
@@ -82,12 +97,13 @@ def run(
     """
     if request.uncertainty and request.quantity != "value":
         raise at(("uncertainty",), f"is asked for beside the quantity {request.quantity}", "ask for one of the two")
-    if (request.uncertainty or request.unmeasured is not None) and form == "npy":
+    if (request.uncertainty or request.unmeasured is not None) and form in ("npy", *SAMPLE_FORMATS):
         raise Problem(
             "not-acceptable",
-            "A .npy holds one array: ask for application/x-npz, which holds values and what goes beside them, or for "
-            "the quantity sigma.",
+            f"The form {form} holds one array: ask for application/x-npz, which holds values and what goes beside "
+            "them, or for the quantity sigma.",
         )
+    surface = asked_surface(request, form)
     drawn = None
     if form in PICTURE_FORMATS:
         require_drawing()
@@ -95,6 +111,8 @@ def run(
     begin = time.perf_counter()
     coefficients = interpret_combination.coefficient_set(request, max_coefficients=settings.max_coefficients)
     sampling = interpret.samples(request, coefficients.lattice)
+    if isinstance(request, GridIn) and request.preview is not None:
+        coefficients, sampling = _preview(request, request.preview, coefficients, sampling)
     samples = math.prod(sampling.shape)
     if samples > settings.max_samples:
         raise at(
@@ -113,6 +131,21 @@ def run(
         "samples": (_place_of_size(request),),
         "sigma": ("set", "sigma"),
     }
+    if surface is not None:
+        shown = write_surface(
+            request,
+            surface,
+            coefficients,
+            sampling,
+            treatment,
+            demand,
+            form,
+            spool,
+            max_bytes=settings.max_memory_bytes,
+            renamed=renamed,
+            watch=watch,
+        )
+        return Done(shown, time.perf_counter() - begin)
     with located(renamed=renamed):
         work = prepare(
             coefficients,
@@ -142,6 +175,16 @@ def run(
             "state the columns in a larger unit, or ask for double precision",
         )
     return Done(shown, time.perf_counter() - begin)
+
+
+def _preview(
+    request: GridIn, most: int, coefficients: CoefficientSet, sampling: Sampling
+) -> tuple[CoefficientSet, AffineGrid]:
+    """A low-resolution first version of the whole cell."""
+    if request.edges is not None or not isinstance(sampling, AffineGrid):
+        raise at(("preview",), "is asked for of a box", "ask for the whole cell, or leave it out")
+    with located():
+        return preview(coefficients, sampling, most)
 
 
 def _change(request: ProductIn, asked: UnmeasuredIn, work: Work, settings: Settings) -> ChangeWork:
@@ -263,13 +306,18 @@ def answer(
     settings: Settings,
     *,
     threads: int,
-) -> float:
-    """Answer any request into the spool; returns the seconds it took."""
+) -> Told:
+    """Answer any request into the spool."""
     begin = time.perf_counter()
-    if isinstance(request, InspectIn):
+    headers: dict[str, str] = {}
+    if isinstance(request, KeepIn):
+        pack(parcel(request, settings), spool)
+    elif isinstance(request, InspectIn):
         spool.append(orjson.dumps(inspect(request, settings)))
     elif isinstance(request, ProductIn):
-        run(product, request, form, spool, settings, threads=threads)
+        done = run(product, request, form, spool, settings, threads=threads)
+        if form in SAMPLE_FORMATS:
+            headers = samples_header(done.shown, form)
     elif isinstance(request, SeriesIn):
         spool.append(write_stack(stacks.stack(request, settings, form, threads=threads), form, request, settings))
     elif isinstance(request, FilmRequestIn):
@@ -277,7 +325,7 @@ def answer(
     else:
         report = analyse(product, request, settings, threads=threads)
         spool.append(report_json(report) if form == "json" else report_csv(report))
-    return time.perf_counter() - begin
+    return Told(time.perf_counter() - begin, headers)
 
 
 def _place_of_size(request: ProductIn) -> str:

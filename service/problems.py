@@ -22,14 +22,23 @@ LONGEST_PART = 80
 TITLES = {
     "invalid-request": (422, "The request cannot be carried out as it stands"),
     "malformed-body": (400, "The body cannot be read"),
+    "malformed-request": (400, "The request cannot be read"),
     "too-costly": (422, "The work asked for exceeds a limit"),
     "body-too-large": (413, "The body exceeds the limit"),
     "unsupported-media-type": (415, "The body's media type is not understood"),
     "not-acceptable": (406, "No acceptable form of answer"),
     "not-installed": (501, "This needs an optional package that is not installed"),
+    "unauthorized": (401, "This address asks for an API key"),
+    "forbidden": (403, "The request is not allowed"),
     "not-found": (404, "There is nothing at this address"),
     "method-not-allowed": (405, "This address does not answer that method"),
+    "body-too-slow": (408, "The body came too slowly"),
+    "misdirected": (421, "The service does not answer under this name"),
+    "rate-limited": (429, "More was asked for than one client may ask for"),
     "busy": (503, "All workers are busy"),
+    "overloaded": (503, "The service carries as much as it may"),
+    "store-unavailable": (503, "The store cannot be used"),
+    "store-full": (507, "The store has no room"),
     "not-ready": (503, "The service is not ready"),
     "timeout": (504, "The computation took too long"),
     "internal": (500, "The service failed"),
@@ -170,8 +179,13 @@ def below(*place: str | int) -> Iterator[None]:
 
 def from_validation(error: ValidationError) -> Problem:
     """A schema's complaints as places; the values at fault are never echoed."""
+    return from_complaints(error.errors(include_url=False, include_input=False))
+
+
+def from_complaints(complaints: Sequence[Mapping[str, Any]]) -> Problem:
+    """The same of complaints in the validation library's form, at least one."""
     found: dict[str, Place] = {}
-    for complaint in error.errors(include_url=False, include_input=False)[:ERRORS_NAMED]:
+    for complaint in complaints[:ERRORS_NAMED]:
         context = complaint.get("ctx", {})
         parts = [*complaint["loc"], *([context["row"]] if "row" in context else [])]
         if complaint["type"] != "extra_forbidden":

@@ -3,11 +3,17 @@
 from __future__ import annotations
 
 import os
+import re
+from pathlib import Path
+from typing import Literal
 
-from pydantic import Field
+import platformdirs
+from pydantic import Field, field_validator
 from pydantic_settings import BaseSettings, SettingsConfigDict
 
 PREFIX = "DENSITYLOOM_"
+_ORIGIN = re.compile(r"https?://(?:[a-z0-9_.-]+|\[[0-9a-f:.]+\])(?::[0-9]{1,5})?")
+_HOST = re.compile(r"[a-z0-9_.-]+|[0-9a-f:.]+")
 
 
 def _cores() -> int:
@@ -36,6 +42,81 @@ class Settings(BaseSettings):
     max_samples: int = Field(2**28, ge=1, description="samples of one answer")
     max_json_values: int = Field(5_000_000, ge=1, description="numbers in a JSON or CSV answer")
     max_memory_bytes: int = Field(2 * 2**30, ge=2**20, description="values and workspace of one request")
+    data_dir: Path = Field(
+        default_factory=lambda: platformdirs.user_data_path("densityloom", appauthor=False),
+        description="folder of the store's embedded database, on a local disk",
+    )
+    database_url: str | None = Field(None, description="PostgreSQL database for the store instead, postgresql://…")
+    max_sets: int = Field(10_000, ge=0, description="sets in the store; beyond it 507")
+    max_store_bytes: int = Field(10 * 2**30, ge=0, description="their bytes; beyond it 507")
+    cache_bytes: int = Field(
+        128 * 2**20, ge=0, description="answers about stored sets kept in memory, of each server process"
+    )
+    set_cache_bytes: int = Field(256 * 2**20, ge=0, description="stored sets kept ready, in each computing process")
+    require_keys: bool | None = Field(
+        None,
+        description="whether requests need an API key; unset: `densityloom serve` asks for none on this machine's own "
+        "address, and for one on any other",
+    )
+    allowed_hosts: str = Field(
+        "",
+        description="names, by commas, that the service may be called by without keys, besides this machine's own; "
+        "else 421",
+    )
+    cors_origins: str = Field(
+        "", description="origins, by commas, whose pages may use the service from a browser, https://…"
+    )
+    requests_per_minute: int = Field(
+        30_000,
+        ge=0,
+        description="of one key, or one address without a key, to each server process; beyond it 429; 0: no limit",
+    )
+    total_requests_per_minute: int = Field(
+        0, ge=0, description="of all together, to each server process; beyond it 429; 0: no limit"
+    )
+    concurrent_per_key: int = Field(
+        12,
+        ge=1,
+        description="requests of one key, or of one other machine without a key, that are computed or wait for it; "
+        "beyond it 429",
+    )
+    max_inflight_bytes: int = Field(
+        4 * 2**30, ge=2**20, description="bodies on their way in and answers on their way out; beyond it 503"
+    )
+    body_seconds: float = Field(
+        60.0, gt=0, le=86_400, description="grace for a body, which must then come at 64 KiB/s or faster; else 408"
+    )
+    send_seconds: float = Field(
+        60.0, gt=0, le=86_400, description="longest that a client may take for one MiB of its answer; else it is cut"
+    )
+    stop_seconds: float = Field(
+        10.0, ge=0, le=3600, description="time to finish what is under way when the service is told to stop"
+    )
+    log_format: Literal["auto", "json", "text"] = Field(
+        "auto", description="of the log on standard error; auto: text on a terminal, else JSON"
+    )
+    log_level: Literal["debug", "info", "warning", "error"] = Field("info", description="least that is logged")
+
+    @field_validator("cors_origins")
+    @classmethod
+    def _origins(cls, text: str) -> str:
+        for one in listed(text):
+            if not _ORIGIN.fullmatch(one):
+                raise ValueError(f"{one[:80]!r} is no origin; give such as https://dashboard.example.org, by commas")
+        return text
+
+    @field_validator("allowed_hosts")
+    @classmethod
+    def _hosts(cls, text: str) -> str:
+        for one in listed(text):
+            if not _HOST.fullmatch(one):
+                raise ValueError(f"{one[:80]!r} is no name of a host; give such as density.example.org, without a port")
+        return text
+
+
+def listed(text: str) -> tuple[str, ...]:
+    """The items of a setting that holds several, in small letters."""
+    return tuple(item.strip().lower() for item in text.split(",") if item.strip())
 
 
 def load_settings() -> Settings:

@@ -18,13 +18,13 @@ from service.analyses.common import OF_SET, heading, rows, table_of, told
 from service.analyses.report import Column, Limits, Report
 from service.encoders.describe import FRACTIONAL_NAMES
 from service.problems import at, located
-from service.schemas.analyses import ExtremaIn, RegionIn
+from service.schemas.analyses import RegionIn, SoughtIn
 from service.schemas.base import Coordinates
 
 AXES = ("x", "y", "z")
 
 
-def extrema(request: ExtremaIn, coefficients: CoefficientSet, limits: Limits) -> Report:
+def extrema(request: SoughtIn, coefficients: CoefficientSet, limits: Limits) -> Report:
     """Find extrema and what lies between them.
 
     Raises
@@ -167,7 +167,7 @@ def _table(made: Extrema) -> tuple[tuple[str, Any], ...]:
     return table_of(columns | {"multiplicity": made.multiplicity, "site_order": made.site_order})
 
 
-def _distances(request: ExtremaIn, made: Extrema, limits: Limits) -> list[dict[str, Any]]:
+def _distances(request: SoughtIn, made: Extrema, limits: Limits) -> list[dict[str, Any]]:
     found: list[dict[str, Any]] = []
     if request.distances:
         numbers = _numbers(request.distances, made.count, "distances")
@@ -198,7 +198,7 @@ def _listed(made: Any) -> list[dict[str, Any]]:  # noqa: ANN401
     )
 
 
-def _angles(request: ExtremaIn, made: Extrema) -> list[dict[str, Any]]:
+def _angles(request: SoughtIn, made: Extrema) -> list[dict[str, Any]]:
     if not request.angles:
         return []
     numbers = _numbers(request.angles, made.count, "angles")

@@ -8,6 +8,7 @@ from typing import Any
 from engine.coefficients import CoefficientSet
 from service.analyses.compare import compare
 from service.analyses.extrema import extrema
+from service.analyses.features import features
 from service.analyses.integrals import integrals
 from service.analyses.layers import layers
 from service.analyses.report import Limits, Report
@@ -20,6 +21,7 @@ _ANALYSERS: dict[str, Callable[[Any, CoefficientSet, Limits], Report]] = {
     "integrals": integrals,
     "layers": layers,
     "statistics": statistics,
+    "features": features,
     "windows": windows,
     "compare": compare,
 }

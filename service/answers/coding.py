@@ -10,9 +10,13 @@ CODINGS = ("zstd", "gzip")
 """In the order in which they are chosen between equals."""
 SMALLEST = 1024
 """Bytes below which coding gains nothing."""
-TEXTS = ("application/json", "text/csv", "image/svg+xml", "model/gltf-binary", "application/x-samples-u8")
+TEXTS = (
+    *("application/json", "text/csv", "image/svg+xml", "model/gltf-binary"),
+    *("application/x-samples-u8", "application/x-samples-u16"),
+    *("text/html", "text/css", "text/javascript"),
+)
 """Media types that shrink; binary64 and binary32 maps do not (7 %), pictures are compressed already."""
-ZSTD_LEVEL = 3
+ZSTD_LEVEL = 1
 GZIP_LEVEL = 5
 
 

@@ -89,7 +89,7 @@ def describe(shown: Shown) -> dict[str, Any]:
                 "repeats_joined": tally.repeats_joined,
                 "zero_term": tally.zero_term,
             },
-            "coverage": None if shown.coverage is None else _coverage(shown.coverage),
+            "coverage": None if shown.coverage is None else described_coverage(shown.coverage),
             "resolution": None if resolution is None else _resolution(resolution, shown.response),
             "uncertainty": _uncertainty(field, shown.quantity),
             "unmeasured": None if shown.change is None else _change(shown.change),
@@ -102,7 +102,7 @@ def describe(shown: Shown) -> dict[str, Any]:
     }
 
 
-def _coverage(found: Coverage) -> dict[str, Any]:
+def described_coverage(found: Coverage) -> dict[str, Any]:
     """Terms possible and present, one of each Friedel pair, and the lowest orders that are not there."""
     return {
         "d_min": found.d_min,

@@ -14,6 +14,10 @@ ROW_FORMATS = (*ARRAY_FORMATS, "csv")
 """Profiles and points are rows and may be had as CSV too."""
 PICTURE_FORMATS = ("png", "svg")
 """Profiles, slices and grids may be had as pictures."""
+SAMPLE_FORMATS = ("f32", "u16", "u8")
+"""And without wrapping, for a browser."""
+SURFACE_FORMAT = "glb"
+"""A grid may be had as the mesh of a surface."""
 REPORT_FORMATS = ("json", "csv")
 """An analysis answers a document, or its main table."""
 
@@ -24,6 +28,10 @@ MEDIA_TYPES = {
     "csv": "text/csv; charset=utf-8",
     "png": "image/png",
     "svg": "image/svg+xml",
+    "glb": "model/gltf-binary",
+    "f32": "application/x-samples-f32",
+    "u16": "application/x-samples-u16",
+    "u8": "application/x-samples-u8",
 }
 
 
@@ -54,7 +62,8 @@ def formats_of(product: str) -> tuple[str, ...]:
     if product == "series":
         return ROW_FORMATS
     rows = ROW_FORMATS if product in ("profile", "points") else ARRAY_FORMATS
-    return rows if product == "points" else (*rows, *PICTURE_FORMATS)
+    mesh = (SURFACE_FORMAT,) if product == "grid" else ()
+    return rows if product == "points" else (*rows, *PICTURE_FORMATS, *mesh, *SAMPLE_FORMATS)
 
 
 def choose(product: str, accept: str | None, wanted: str | None) -> str:

@@ -23,8 +23,9 @@ from engine.resolution.coverage import coverage
 from engine.resolution.response import point_response
 from engine.synthesis import Progress
 from service.encoders.describe import SIGN_CONVENTION, Shown, columns, describe, point_words
-from service.encoders.negotiation import PICTURE_FORMATS
+from service.encoders.negotiation import PICTURE_FORMATS, SAMPLE_FORMATS
 from service.encoders.picture import picture
+from service.encoders.samples import samples
 from service.pictures.options import PictureOptions
 from service.spool import Spool
 
@@ -63,7 +64,10 @@ def write(wanted: Wanted, work: Work, form: str | None, spool: Spool, progress: 
         spool.append(_npy_header(made.values.shape, made.values.dtype))
         spool.append(_bytes(made.values))
         return _shown(wanted, work, made)
-    told = _explained(_shown(wanted, work, made), wanted, work)
+    if form in SAMPLE_FORMATS:
+        spool.append(_bytes(samples(made, form)))
+        return _shown(wanted, work, made)
+    told = explained(_shown(wanted, work, made), wanted, work)
     if form == "json":
         spool.append(_json(told))
     elif form == "npz":
@@ -85,7 +89,7 @@ def _shown(wanted: Wanted, work: Work, made: Field) -> Shown:
     )
 
 
-def _explained(told: Shown, wanted: Wanted, work: Work) -> Shown:
+def explained(told: Shown, wanted: Wanted, work: Work) -> Shown:
     """With what an array alone has no place for: unmeasured terms, resolution, advice."""
     change = None if wanted.change is None else perform_change(wanted.change)
     given, treatment = work.coefficients, work.treatment

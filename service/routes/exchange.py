@@ -80,19 +80,28 @@ async def _departure(request: Request) -> None:
         pass
 
 
-def streamed(product: str, form: str, answer: Answer) -> StreamingResponse:
+def streamed(product: str, form: str, answer: Answer) -> Response:
+    """An answer on its way to the client; its spool is closed."""
     view = answer.spool.view()
     answer.spool.close()
-
     headers = {
         **answer.headers,
-        "Content-Length": str(len(view)),
         "Vary": "Accept",
         "Server-Timing": f"compute;dur={1000 * answer.seconds:.1f}",
     }
     if form != "json":
         headers["Content-Disposition"] = f'attachment; filename="{product}.{form}"'
-    return StreamingResponse(chunks(view), media_type=MEDIA_TYPES[form], headers=headers)
+    return sent(view, MEDIA_TYPES[form], headers)
+
+
+def sent(view: memoryview, media_type: str, headers: dict[str, str], *, head: bool = False) -> Response:
+    """A body on its way to the client, in pieces where it is long; none of it is copied."""
+    headers = {**headers, "Content-Length": str(len(view))}
+    if head:
+        return Response(headers=headers, media_type=media_type)
+    if len(view) <= CHUNK:
+        return Response(view, media_type=media_type, headers=headers)
+    return StreamingResponse(chunks(view), media_type=media_type, headers=headers)
 
 
 async def chunks(view: memoryview) -> AsyncIterator[memoryview]:

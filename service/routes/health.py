@@ -9,7 +9,7 @@ from fastapi import APIRouter, Request
 from service.problems import Problem
 from service.schemas.health import Live, Ready
 
-LIBRARIES = ("numpy", "scipy", "finufft", "fastapi", "uvicorn", "pydantic")
+LIBRARIES = ("numpy", "scipy", "finufft", "fastapi", "uvicorn", "pydantic", "sqlalchemy")
 
 router = APIRouter(prefix="/health", tags=["health"])
 
@@ -30,5 +30,6 @@ async def ready(request: Request) -> Ready:
         status="ready",
         version=version("densityloom"),
         **pool.state(),
+        store=request.app.state.store.told(),
         libraries={name: version(name) for name in LIBRARIES},
     )

@@ -17,6 +17,7 @@ from service.routes.exchange import GONE, answering, received_body, unless_gone
 from service.schemas.requests import KEEP
 from service.schemas.store import MOST_TAGS, PRINTABLE, Tag
 from service.settings import Settings
+from service.store.known import Known
 from service.store.parcel import Parcel, unpack
 from service.store.records import Record, Sets
 from service.store.rows import columns_archive
@@ -29,7 +30,7 @@ MOST_LISTED = 500
 Identity = Annotated[str, Path(description="id of a set", json_schema_extra={"pattern": ID.pattern})]
 
 
-def router(pool: Pool, store: Callable[[], Store], settings: Settings) -> APIRouter:
+def router(pool: Pool, store: Callable[[], Store], known: Known, settings: Settings) -> APIRouter:
     """Endpoints over the store; what clients send is read behind the wall, like everything else."""
     made = APIRouter(prefix="/v1/sets", tags=["sets"])
 
@@ -86,7 +87,9 @@ def router(pool: Pool, store: Callable[[], Store], settings: Settings) -> APIRou
 
     @made.delete("/{identity}", status_code=204, response_class=Response, **looking("delete"))
     async def delete(identity: Identity) -> Response:
+        known.forget(identity)
         await _found(lambda one: store().sets.delete(one) or None, identity)
+        known.forget(identity)
         return Response(status_code=204)
 
     return made

@@ -2,30 +2,24 @@
 
 from __future__ import annotations
 
-import hashlib
 from collections.abc import Awaitable, Callable
-from importlib.metadata import version
 from typing import Annotated
 
-import orjson
 from fastapi import APIRouter, Path, Request, Response
-from fastapi.responses import StreamingResponse
-from pydantic import ValidationError
 from starlette.concurrency import run_in_threadpool
 
-from service import query
+from service.answers.asked import Asked, understand
 from service.answers.cache import Cache, Kept
-from service.answers.coding import choose_coding, encode
+from service.answers.coding import CODINGS, choose_coding, encode
 from service.answers.flights import Flights
-from service.encoders.negotiation import MEDIA_TYPES, choose
+from service.encoders.negotiation import MEDIA_TYPES
 from service.openapi_sets import stored_operation
-from service.problems import from_validation
 from service.routes.conditions import is_current
-from service.routes.exchange import GONE, answering, chunks, unless_gone
+from service.routes.exchange import GONE, answering, sent, unless_gone
 from service.schemas.analyses import ANALYSES
 from service.schemas.products import PRODUCTS
-from service.schemas.requests import REQUESTS
 from service.spool import Spool
+from service.store.known import Known
 from service.store.shelf import ID, no_such_set
 from service.store.store import Store
 from service.wall.pool import Job, Pool
@@ -38,59 +32,43 @@ Identity = Annotated[str, Path(description="id of a set", json_schema_extra={"pa
 Endpoint = Callable[[Request, str], Awaitable[Response]]
 
 
-def router(pool: Pool, store: Callable[[], Store], cache: Cache) -> APIRouter:
+def router(pool: Pool, store: Callable[[], Store], known: Known, cache: Cache) -> APIRouter:
     """Endpoints over the store, a pool of workers and a cache of answers."""
     made = APIRouter(prefix="/v1/sets/{identity}", tags=["stored sets"])
     flights: Flights[Kept] = Flights()
     for product in BY_GET:
-        answering(made, f"/{product}", _endpoint(product, pool, store, cache, flights), stored_operation(product))
+        endpoint = _endpoint(product, pool, store, known, cache, flights)
+        answering(made, f"/{product}", endpoint, stored_operation(product))
     return made
 
 
-def _endpoint(product: str, pool: Pool, store: Callable[[], Store], cache: Cache, flights: Flights[Kept]) -> Endpoint:
+def _endpoint(
+    product: str, pool: Pool, store: Callable[[], Store], known: Known, cache: Cache, flights: Flights[Kept]
+) -> Endpoint:
     async def endpoint(request: Request, identity: Identity) -> Response:
-        pairs = [pair for pair in request.query_params.multi_items() if pair[0] != "format"]
-        form = choose(product, ",".join(request.headers.getlist("accept")), request.query_params.get("format"))
-        body = _checked(product, query.document(product, pairs), identity)
-        if not ID.fullmatch(identity) or await run_in_threadpool(store().sets.record, identity) is None:
+        asked = understand(product, identity, request.url.query, ",".join(request.headers.getlist("accept")))
+        if not ID.fullmatch(identity) or not await known.has(store().sets, identity):
             raise no_such_set(identity)
-        key = _key(product, form, body)
-        accepted = ",".join(request.headers.getlist("accept-encoding"))
         held = request.headers.get("if-none-match")
-        # Known before anything is computed, in any coding that the client may hold it in.
-        for coding in (None, "zstd", "gzip"):
-            if held is not None and held.strip() != "*" and is_current(held, _tag(key, coding)):
-                return Response(status_code=304, headers=_headers(_tag(key, coding)))
-        answer = cache.get(key)
+        if held is not None and held.strip() != "*":
+            # Known before anything is computed, in any coding that the client may hold it in.
+            for coding in (None, *CODINGS):
+                if is_current(held, tag := _tag(asked.key, coding)):
+                    return Response(status_code=304, headers=_headers(tag))
+        answer = cache.get(asked.key)
         if answer is None:
 
             async def compute() -> Kept:
-                made = await _computed(pool, product, form, body)
-                cache.put(key, made)
+                made = await _computed(pool, asked)
+                cache.put(asked.key, made)
                 return made
 
-            shared = await unless_gone(request, flights.share(key, compute))
-            if shared is None:
+            answer = await unless_gone(request, flights.share(asked.key, compute))
+            if answer is None:
                 return Response(status_code=GONE)
-            answer = shared
-        return await _response(request, product, form, key, answer, cache, accepted)
+        return await _response(request, asked, answer, cache)
 
     return endpoint
-
-
-def _checked(product: str, document: dict[str, object], identity: str) -> bytes:
-    """The request as a worker gets it, once its schema has passed it."""
-    try:
-        REQUESTS[product].model_validate({**document, "set": query.PLACEHOLDER})
-    except ValidationError as fault:
-        raise from_validation(fault) from fault
-    return orjson.dumps({**document, "set_id": identity}, option=orjson.OPT_SORT_KEYS)
-
-
-def _key(product: str, form: str, body: bytes) -> str:
-    """Names an answer: the set, the request, the form, and the release that computes it."""
-    named = orjson.dumps([product, form, version("densityloom")])
-    return hashlib.sha256(named + body).hexdigest()[:40]
 
 
 def _tag(key: str, coding: str | None) -> str:
@@ -106,32 +84,28 @@ def _headers(tag: str) -> dict[str, str]:
     }
 
 
-async def _computed(pool: Pool, product: str, form: str, body: bytes) -> Kept:
-    with Spool.unnamed() as sent:
-        sent.append(body)
-        answer = await pool.run(Job(product, "application/json", sent, form))
+async def _computed(pool: Pool, asked: Asked) -> Kept:
+    with Spool.unnamed() as body:
+        body.append(asked.body)
+        answer = await pool.run(Job(asked.product, "application/json", body, asked.form))
     with answer.spool as made:
-        return Kept(made.view(), MEDIA_TYPES[form], answer.headers, answer.seconds)
+        return Kept(made.view(), MEDIA_TYPES[asked.form], answer.headers, answer.seconds)
 
 
-async def _response(
-    request: Request, product: str, form: str, key: str, answer: Kept, cache: Cache, accepted: str
-) -> Response:
+async def _response(request: Request, asked: Asked, answer: Kept, cache: Cache) -> Response:
+    accepted = ",".join(request.headers.getlist("accept-encoding"))
     coding = choose_coding(accepted, answer.media_type, len(answer.body))
     view = answer.body
     headers = {
         **answer.headers,
-        **_headers(_tag(key, coding)),
+        **_headers(_tag(asked.key, coding)),
         "Server-Timing": f"compute;dur={1000 * answer.seconds:.1f}",
-        "Content-Disposition": f'inline; filename="{product}.{form}"',
+        "Content-Disposition": f'inline; filename="{asked.product}.{asked.form}"',
     }
     if coding is not None:
         if coding not in answer.coded:
             answer.coded[coding] = await run_in_threadpool(encode, answer.body, coding)
-            cache.put(key, answer)
+            cache.put(asked.key, answer)
         view = memoryview(answer.coded[coding])
         headers["Content-Encoding"] = coding
-    headers["Content-Length"] = str(len(view))
-    if request.method == "HEAD":
-        return Response(headers={**headers, "Content-Type": answer.media_type})
-    return StreamingResponse(chunks(view), media_type=answer.media_type, headers=headers)
+    return sent(view, answer.media_type, headers, head=request.method == "HEAD")

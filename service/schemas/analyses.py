@@ -7,7 +7,7 @@ from typing import Annotated, Literal
 from pydantic import Field
 
 from service.schemas.base import Coordinate, IndexVector, Length, Strict, Vector
-from service.schemas.coefficient_set import CoefficientSetIn
+from service.schemas.coefficient_set import CoefficientSetIn, or_stored
 from service.schemas.sampling import LineIn
 from service.schemas.treatment import SetRequestIn, TreatedIn, WindowIn
 
@@ -23,10 +23,9 @@ class RegionIn(Strict):
     radius: Length | None = Field(None, description="Å")
 
 
-class ExtremaIn(TreatedIn):
-    """Maxima, minima and saddle points of a density, refined on the series itself."""
+class SoughtIn(TreatedIn):
+    """Which extrema are sought, and what is measured between them."""
 
-    product: Literal["extrema"] | None = None
     kinds: list[Literal["maximum", "minimum", "saddle"]] = Field(["maximum"], min_length=1, max_length=3)
     region: RegionIn | None = Field(None, description="only extrema inside; default the whole cell")
     least_value: float | None = Field(None, description="only those of at least this value")
@@ -41,6 +40,12 @@ class ExtremaIn(TreatedIn):
     angles: list[Annotated[list[Number], Field(min_length=3, max_length=3)]] = Field(
         [], max_length=10_000, description="triples of extrema; the angle is at the second"
     )
+
+
+class ExtremaIn(SoughtIn):
+    """Maxima, minima and saddle points of a density, refined on the series itself."""
+
+    product: Literal["extrema"] | None = None
 
 
 class IntegralIn(Strict):
@@ -93,6 +98,12 @@ class StatisticsIn(TreatedIn):
     bins: Annotated[int, Field(ge=1, le=10_000)] = 64
 
 
+class FeaturesIn(SoughtIn):
+    """What stands out in a density: extrema, moments, and the layers of a layer stack, in one answer."""
+
+    product: Literal["features"] | None = None
+
+
 class WindowsIn(SetRequestIn):
     """What each termination window does to a point and to a step."""
 
@@ -104,7 +115,7 @@ class CompareIn(SetRequestIn):
     """How two densities on one cell agree."""
 
     product: Literal["compare"] | None = None
-    other: CoefficientSetIn = Field(alias="with", description="the second set")
+    other: CoefficientSetIn = Field(alias="with", description="the second set", json_schema_extra=or_stored)
     terms: Literal["all", "common"] = Field("all", description="the densities as they are, or their common terms alone")
     shells: Annotated[int, Field(ge=1, le=100)] | None = Field(None, description="of resolution; default 50 terms each")
 
@@ -114,6 +125,7 @@ ANALYSES: dict[str, type[SetRequestIn]] = {
     "integrals": IntegralsIn,
     "layers": LayersIn,
     "statistics": StatisticsIn,
+    "features": FeaturesIn,
     "windows": WindowsIn,
     "compare": CompareIn,
 }

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
+from typing import Annotated, Any, Literal
 
-from pydantic import Field
+import numpy as np
+from numpy.typing import NDArray
+from pydantic import Field, PrivateAttr
 
+from engine.coefficients import CoefficientSet
 from service.schemas.base import Strict
 from service.schemas.columns import IndexColumn, NumberColumn, PhaseColumn
 from service.schemas.preparation import PreparationIn, ReflectionsFile, SymmetryIn
@@ -13,6 +16,9 @@ from service.schemas.preparation import PreparationIn, ReflectionsFile, Symmetry
 INDEX_NAMES = ("h", "k", "l")
 COLUMN_NAMES = (*INDEX_NAMES, "amplitude", "phase_deg", "real", "imag", "sigma", "phase_sigma_deg", "merit")
 """Columns of a set, in JSON, in a table and in an archive alike."""
+
+
+STORED_ID = {"type": "string", "pattern": "^[0-9a-f]{64}$", "description": "id of a set of the store"}
 
 
 class Cell(Strict):
@@ -72,3 +78,46 @@ class CoefficientSetIn(ReflectionSetIn):
     scale_sigma: float = Field(
         0.0, ge=0, le=1, description="relative standard uncertainty of the scale that all columns share"
     )
+
+
+def or_stored(schema: dict[str, Any]) -> None:
+    """A member's schema, with what stands for a set of the store beside the set itself."""
+    named = {
+        "type": "object",
+        "description": "a set of the store",
+        "properties": {"set_id": STORED_ID},
+        "required": ["set_id"],
+        "additionalProperties": False,
+    }
+    choices = schema.pop("anyOf", None) or [{"$ref": schema.pop("$ref")}]
+    schema["anyOf"] = [*choices, named]
+
+
+class StoredSetIn(CoefficientSetIn):
+    """A set of the store, which stays the same, so that what is made of it can be kept with it."""
+
+    _made: dict[str, CoefficientSet] = PrivateAttr(default_factory=dict)
+
+    def kept(self, missing_phase: str) -> CoefficientSet | None:
+        """What was made of the set before, under the same rule for phases that are missing."""
+        return self._made.get(missing_phase)
+
+    def keep(self, missing_phase: str, made: CoefficientSet) -> None:
+        """Keep what was made of the set."""
+        self._made[missing_phase] = made
+
+    @property
+    def bytes_held(self) -> int:
+        """Bytes of the columns, and of what was made of them."""
+        own = 0
+        for name in COLUMN_NAMES:
+            column: NDArray[np.float64] | None = getattr(self, name)
+            own += 0 if column is None else column.nbytes
+        for part in (self.reflections, self.reference):
+            own += 0 if part is None else len(part.data)
+        return own + sum(_size(made) for made in self._made.values())
+
+
+def _size(made: CoefficientSet) -> int:
+    held = (made.indices, made.values, made.phase_known, made.sigma, made.phase_sigma, made.merit)
+    return sum(array.nbytes for array in held if array is not None)

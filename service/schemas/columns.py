@@ -18,6 +18,8 @@ def _column(value: Any, allowed: frozenset[type], wanted: str) -> NDArray[np.flo
         return value
     if not isinstance(value, list):
         raise PydanticCustomError("column", "is not an array", {"cure": f"give an array of {wanted}"})
+    if not value:
+        raise PydanticCustomError("column", "is empty", {"cure": f"give {wanted}, or leave it out"})
     # One pass in C finds the kinds of element; only a fault makes us look for its row.
     if not allowed.issuperset(map(type, value)):
         row = next(row for row, element in enumerate(value) if type(element) not in allowed)

@@ -7,7 +7,7 @@ from typing import Literal
 from pydantic import Field
 
 from service.schemas.base import Strict
-from service.schemas.coefficient_set import CoefficientSetIn
+from service.schemas.coefficient_set import CoefficientSetIn, or_stored
 
 
 class RelativeScaleIn(Strict):
@@ -30,7 +30,7 @@ class CombinationIn(Strict):
     difference: first − k·second. average: the mean of both, k·second taken."""
 
     kind: Literal["difference", "average"]
-    other: CoefficientSetIn = Field(alias="with", description="the second set")
+    other: CoefficientSetIn = Field(alias="with", description="the second set", json_schema_extra=or_stored)
     scale: RelativeScaleIn = Field(
         description="never guessed: say as_given where the second is on the scale of the first"
     )
@@ -38,7 +38,9 @@ class CombinationIn(Strict):
         "own",
         description="own: complex coefficients are combined; else amplitudes, all with the phases of one set",
     )
-    third: CoefficientSetIn | None = Field(None, description="the set whose phases are taken, with phases third")
+    third: CoefficientSetIn | None = Field(
+        None, description="the set whose phases are taken, with phases third", json_schema_extra=or_stored
+    )
     missing: Literal["omit", "zero_first", "zero_second", "zero_both"] = Field(
         "omit", description="difference: terms that one set lacks are left out, or taken as zero in the set named"
     )

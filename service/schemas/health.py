@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Literal
 
-from pydantic import BaseModel, ConfigDict
+from pydantic import BaseModel, ConfigDict, Field
 
 
 class Live(BaseModel):
@@ -28,6 +28,7 @@ class Ready(BaseModel):
                     "workers": 2,
                     "busy": 0,
                     "waiting": 0,
+                    "store": "SQLite 3.53.4 (pysqlite3), write-ahead log, every commit synchronised",
                     "libraries": {"numpy": "2.4.6", "finufft": "2.5.1"},
                 }
             ]
@@ -39,4 +40,5 @@ class Ready(BaseModel):
     workers: int
     busy: int
     waiting: int
+    store: str = Field(description="the database under the stored sets, and how it keeps what is committed")
     libraries: dict[str, str]

@@ -9,6 +9,7 @@ from pydantic import Field
 from service.schemas.base import Strict
 from service.schemas.picture import PictureIn
 from service.schemas.sampling import FreePointsIn, PlaneIn, SampledLineIn, VolumeIn
+from service.schemas.surface import SurfaceIn
 from service.schemas.treatment import TreatedIn
 
 
@@ -60,6 +61,15 @@ class SliceIn(PlaneIn, DrawnIn):
 
 class GridIn(VolumeIn, DrawnIn):
     """Values in the whole cell by `shape` or `spacing`; or in a box by origin, edges and shape."""
+
+    surface: SurfaceIn | None = Field(None, description="the surface to make a mesh of, as model/gltf-binary alone")
+    preview: int | None = Field(
+        None,
+        ge=8,
+        le=2**31,
+        description="whole cell: answer a low-resolution first version of at most so many samples, from the terms of "
+        "large spacing alone; the answer says which",
+    )
 
 
 class PointsIn(FreePointsIn, ProductIn):

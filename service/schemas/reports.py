@@ -178,6 +178,14 @@ class StatisticsReport(ReportOut):
     histogram: HistogramOut
 
 
+class FeaturesReport(ReportOut):
+    """Extrema, layers and moments of one density, each as its own address answers it."""
+
+    extrema: ExtremaReport
+    layers: LayersReport | None = Field(description="of a layer stack, over one period")
+    statistics: StatisticsReport
+
+
 class WindowOut(BaseModel):
     """What one window does."""
 
@@ -236,6 +244,7 @@ REPORTS: dict[str, type[ReportOut]] = {
     "integrals": IntegralsReport,
     "layers": LayersReport,
     "statistics": StatisticsReport,
+    "features": FeaturesReport,
     "windows": WindowsReport,
     "compare": CompareReport,
 }

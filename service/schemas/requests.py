@@ -13,9 +13,11 @@ from service.schemas.film_models import MODELS
 from service.schemas.films import SCANS, FilmRequestIn
 from service.schemas.products import PRODUCTS
 from service.schemas.series import SeriesIn
+from service.schemas.store import KeepIn
 from service.schemas.treatment import SetRequestIn
 
 INSPECT = "inspect"
+KEEP = "keep"
 
 
 class InspectIn(Strict):
@@ -28,11 +30,12 @@ class InspectIn(Strict):
 
 SERIES = "series"
 FILMS: dict[str, type[FilmRequestIn]] = {**SCANS, **MODELS}
-Request = SetRequestIn | FilmRequestIn | InspectIn
-REQUESTS: dict[str, type[SetRequestIn] | type[FilmRequestIn] | type[InspectIn]] = {
+Request = SetRequestIn | FilmRequestIn | InspectIn | KeepIn
+REQUESTS: dict[str, type[SetRequestIn] | type[FilmRequestIn] | type[InspectIn] | type[KeepIn]] = {
     **PRODUCTS,
     SERIES: SeriesIn,
     **ANALYSES,
     **FILMS,
     INSPECT: InspectIn,
+    KEEP: KeepIn,
 }

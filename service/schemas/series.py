@@ -46,13 +46,16 @@ class SeriesIn(TreatedIn):
     @classmethod
     def _completed(cls, data: Any) -> Any:  # noqa: ANN401
         """Members with what they share."""
-        if not isinstance(data, dict) or not isinstance(data.get("set"), dict):
+        if not isinstance(data, dict) or not isinstance(data.get("members"), list):
             return data
-        members = data.get("members")
-        if not isinstance(members, list):
+        members, shared = data["members"], data.get("set")
+        if isinstance(shared, CoefficientSetIn):
+            # A set of the store: checked already, and no text any more.
+            shared = {name: getattr(shared, name) for name in shared.model_fields_set}
+        if not isinstance(shared, dict):
             return data
         whole = [
-            {**one, "set": {**data["set"], **one["set"]}}
+            {**one, "set": {**shared, **one["set"]}}
             if isinstance(one, dict) and isinstance(one.get("set"), dict)
             else one
             for one in members

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from typing import Any, Literal
 
-from pydantic import Field, model_validator
+from pydantic import ConfigDict, Field, model_validator
 
 from service.schemas.base import Coordinates, IndexVector, Length, Strict, Vector
-from service.schemas.coefficient_set import CoefficientSetIn
+from service.schemas.coefficient_set import STORED_ID, CoefficientSetIn
 from service.schemas.combination import CombinationIn
 
 
@@ -23,6 +23,13 @@ class ResolutionIn(Strict):
 
     d_min: float | None = Field(None, gt=0, description="Å")
     d_max: float | None = Field(None, gt=0, description="Å")
+
+
+class TrustIn(Strict):
+    """Which phases are trusted; the others are taken as unknown, and counted so."""
+
+    least_merit: float | None = Field(None, ge=0, le=1, description="figure of merit from which on")
+    largest_sigma_deg: float | None = Field(None, gt=0, description="standard uncertainty up to which, degrees")
 
 
 class AverageIn(Strict):
@@ -46,13 +53,27 @@ class AverageIn(Strict):
         return {"kind": "lateral"} if data == "lateral" else data
 
 
+def _with_short_form(schema: dict[str, Any]) -> None:
+    schema["anyOf"] = [*schema["anyOf"], {"const": "lateral", "type": "string"}]
+
+
+def _set_or_id(schema: dict[str, Any]) -> None:
+    """The set itself, or the id of one of the store: resolved before the request is checked."""
+    schema["properties"]["set_id"] = STORED_ID
+    schema["required"] = [name for name in schema["required"] if name != "set"]
+    schema["oneOf"] = [{"required": ["set"]}, {"required": ["set_id"]}]
+
+
 class SetRequestIn(Strict):
     """What all requests about a coefficient set have in common."""
+
+    model_config = ConfigDict(json_schema_extra=_set_or_id)
 
     remark: str | None = Field(None, max_length=2000, description="for people; the service does not read it")
     set: CoefficientSetIn
     combination: CombinationIn | None = Field(None, description="combines the set with a second one")
     resolution: ResolutionIn = ResolutionIn()
+    trust: TrustIn = Field(TrustIn(), description="which phases are believed")
     missing_phase: Literal["omit", "refuse"] = Field(
         "omit", description="coefficients without phase: leave out and count, or refuse the request"
     )
@@ -67,7 +88,7 @@ class TreatedIn(SetRequestIn):
     field: Literal["density", "gradient", "gradient_magnitude", "laplacian", "autocorrelation", "response"] = "density"
     window: WindowIn = WindowIn()
     sharpen: float = Field(0.0, description="B of a factor exp(+B s²), Å²; negative smooths")
-    average: AverageIn | None = None
+    average: AverageIn | None = Field(None, json_schema_extra=_with_short_form)
     apply_merit: bool = Field(False, description="multiply each coefficient by its figure of merit")
     self_term: float = Field(
         0.0,

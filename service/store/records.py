@@ -167,6 +167,11 @@ class Sets:
         with self._database.reading() as connection:
             return _used(connection)
 
+    def holds(self, identity: str) -> bool:
+        """Whether there is a set of that id."""
+        with self._database.reading() as connection:
+            return connection.execute(select(SETS.c.number).where(SETS.c.id == identity)).first() is not None
+
     def record(self, identity: str) -> Record | None:
         """What is listed of a set; None where there is none of that id."""
         with self._database.reading() as connection:

@@ -37,7 +37,7 @@ class Shelf:
         """
         sets = self._opened() if ID.fullmatch(identity) else None
         # Looked for each time: one that was deleted is no longer answered for.
-        if sets is None or sets.record(identity) is None:
+        if sets is None or not sets.holds(identity):
             self._ready.pop(identity, None)
             raise no_such_set(identity)
         if identity not in self._ready:

@@ -11,8 +11,11 @@ import sys
 import time
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import suppress
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from typing import Any
 
+from service.guard.record import CURRENT_ID
+from service.guard.shares import Shares
 from service.problems import Problem
 from service.settings import Settings
 from service.spool import Spool
@@ -26,12 +29,14 @@ START_SECONDS = 60.0
 
 @dataclass(frozen=True, slots=True)
 class Job:
-    """A request as it came: its product, the media type and bytes of its body, the form of answer wanted."""
+    """A request as it came: its product, the media type and bytes of its body, the form of answer wanted, and
+    members of the request that came with the address."""
 
     product: str
     content_type: str
     body: Spool
     form: str
+    members: dict[str, Any] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,6 +45,7 @@ class Answer:
 
     spool: Spool
     seconds: float
+    headers: dict[str, str]
 
 
 class Pool:
@@ -53,6 +59,8 @@ class Pool:
         self._waiting = 0
         self._busy = 0
         self._seconds = 1.0
+        self.computed = 0
+        self._shares = Shares(settings.concurrent_per_key)
 
     async def start(self) -> None:
         """Start all workers and wait until they report."""
@@ -79,9 +87,13 @@ class Pool:
         Raises
         ------
         Problem
-            What the worker found wrong; 503 when the queue is full, 504 when time is up, 500 when
-            the worker died.
+            What the worker found wrong; 503 when the queue is full, 429 when the client has as much
+            under way as it may, 504 when time is up, 500 when the worker died.
         """
+        with self._shares.held():
+            return await self._run(job)
+
+    async def _run(self, job: Job) -> Answer:
         if self._free.empty() and self._waiting >= self._settings.queue:
             wait = max(1, round(self._seconds * (self._waiting + 1) / len(self._workers)))
             raise Problem("busy", f"All workers are busy; try again in {wait} s.", headers={"Retry-After": str(wait)})
@@ -91,9 +103,10 @@ class Pool:
         finally:
             self._waiting -= 1
         self._busy += 1
-        work = asyncio.get_running_loop().run_in_executor(self._threads, worker.call, job)
+        work = asyncio.get_running_loop().run_in_executor(self._threads, worker.call, job, CURRENT_ID.get())
         try:
             answer = await asyncio.shield(work)
+            self.computed += 1
             # A running mean of what a request takes, for Retry-After.
             self._seconds += 0.2 * (answer.seconds - self._seconds)
             return answer
@@ -149,8 +162,8 @@ class _Worker:
             self.end()
             raise
 
-    def call(self, job: Job) -> Answer:
-        """Have one job computed, in a new process if the last one has died."""
+    def call(self, job: Job, request_id: str | None = None) -> Answer:
+        """Have one job computed, in a new process if the last one has died; `request_id` is for its log."""
         if self._process is None or self._process.poll() is not None or self._channel is None:
             self.end()
             self.start()
@@ -161,7 +174,13 @@ class _Worker:
         deadline = time.monotonic() + limit
         channel.settimeout(limit)
         try:
-            head = {"product": job.product, "content_type": job.content_type, "form": job.form}
+            head = {
+                "product": job.product,
+                "content_type": job.content_type,
+                "form": job.form,
+                "members": job.members,
+                "request_id": request_id,
+            }
             wire.send(channel, head, [job.body.descriptor])
             message, descriptors = wire.receive(channel)
         except TimeoutError as fault:
@@ -180,7 +199,7 @@ class _Worker:
         if "problem" in message:
             spool.close()
             raise Problem.from_message(message["problem"])
-        return Answer(spool, float(message["seconds"]))
+        return Answer(spool, float(message["seconds"]), message["headers"])
 
     def kill(self) -> None:
         """End the process from any thread; a call under way fails."""

@@ -16,9 +16,12 @@ from pathlib import Path
 from typing import Any
 
 from service import intake, pipeline
+from service.guard import logs
+from service.guard.record import CURRENT_ID
 from service.problems import Problem
 from service.settings import Settings
 from service.spool import Spool
+from service.store.shelf import Shelf
 from service.wall import wire
 
 log = logging.getLogger("densityloom.worker")
@@ -26,34 +29,43 @@ log = logging.getLogger("densityloom.worker")
 
 def main() -> None:
     """Serve the channel until the server closes it."""
-    # An interrupt from a terminal reaches the whole group; the server decides when to end us.
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
-    logging.basicConfig(stream=sys.stderr, format="%(levelname)s %(name)s %(message)s")
+    # An interrupt from a terminal, or a supervisor's request to end, reaches the whole group; the server decides
+    # when to end us.
+    for number in (signal.SIGINT, signal.SIGTERM):
+        signal.signal(number, signal.SIG_IGN)
     channel = socket.socket(fileno=int(sys.argv[1]))
     settings = Settings.model_validate_json(sys.stdin.buffer.read())
+    logs.configure(settings)
     _bound_memory(settings)
+    shelf = Shelf(settings)
     wire.send(channel, {"ready": os.getpid()})
     while True:
         try:
             message, descriptors = wire.receive(channel)
         except wire.Closed:
             return
+        CURRENT_ID.set(message.get("request_id"))
         with Spool(descriptors[0]) as body:
-            answer, made = _serve(message, body, settings)
+            answer, made = _serve(message, body, shelf, settings)
         with made:
             wire.send(channel, answer, [made.descriptor])
 
 
-def _serve(message: dict[str, Any], body: Spool, settings: Settings) -> tuple[dict[str, Any], Spool]:
+def _serve(message: dict[str, Any], body: Spool, shelf: Shelf, settings: Settings) -> tuple[dict[str, Any], Spool]:
     """One request; a fault that nobody foresaw is logged here and told without detail."""
     made = Spool.unnamed()
     try:
         data = bytes(body.view())
         product, request = intake.read(
-            message["product"], message["content_type"], data, max_body_bytes=settings.max_body_bytes
+            message["product"],
+            message["content_type"],
+            data,
+            max_body_bytes=settings.max_body_bytes,
+            shelf=shelf,
+            members=message["members"],
         )
         del data
-        seconds = pipeline.answer(product, request, message["form"], made, settings, threads=settings.compute_threads)
+        told = pipeline.answer(product, request, message["form"], made, settings, threads=settings.compute_threads)
     except Problem as problem:
         return _refusal(problem), made
     except MemoryError:
@@ -63,7 +75,7 @@ def _serve(message: dict[str, Any], body: Spool, settings: Settings) -> tuple[di
     except Exception:  # the wall's purpose: whatever happens, the client gets an answer
         log.exception("a request failed")
         return _refusal(Problem("internal", "The computation failed; the fault has been logged.")), made
-    return {"seconds": seconds, "size": made.size}, made
+    return {"seconds": told.seconds, "headers": told.headers, "size": made.size}, made
 
 
 def _refusal(problem: Problem) -> dict[str, Any]:

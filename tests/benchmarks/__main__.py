@@ -1,10 +1,10 @@
-"""Print the figures: ``python -m tests.benchmarks [accuracy|grids|slices|sigma|signs|http …]``, all by default."""
+"""Print the figures: ``python -m tests.benchmarks [accuracy|grids|slices|sigma|signs|http|load …]``, all by default."""
 
 from __future__ import annotations
 
 import sys
 
-from tests.benchmarks import accuracy, grids, http, sigma, signs, slices
+from tests.benchmarks import accuracy, grids, http, load, sigma, signs, slices
 from tests.benchmarks.machine import describe
 
 PARTS = {
@@ -14,6 +14,7 @@ PARTS = {
     "sigma": sigma.main,
     "signs": signs.main,
     "http": http.main,
+    "load": load.main,
 }
 
 

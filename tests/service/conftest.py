@@ -25,13 +25,13 @@ SMALL = {
 
 
 @contextmanager
-def alone(**settings: object) -> Iterator[Served]:
-    """A service with these settings and none of the developer's."""
+def alone(*arguments: str, **settings: object) -> Iterator[Served]:
+    """A service with these arguments and settings, and none of the developer's."""
     with pytest.MonkeyPatch.context() as patch:
         for name in list(os.environ):
             if name.upper().startswith("DENSITYLOOM_"):
                 patch.delenv(name)
-        with serving(**settings) as served:
+        with serving(*arguments, **settings) as served:
             yield served
 
 

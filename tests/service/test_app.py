@@ -11,7 +11,7 @@ from service.app import create_app
 from service.settings import Settings
 from tests.service.problem_shape import assert_problem
 
-SETTINGS = Settings(compute_workers=1)
+SETTINGS = Settings(compute_workers=1, require_keys=False)
 
 
 def asked(app, method, address, **options):
@@ -19,13 +19,13 @@ def asked(app, method, address, **options):
 
     async def ask():
         transport = httpx.ASGITransport(app, raise_app_exceptions=False)
-        async with httpx.AsyncClient(transport=transport, base_url="http://here") as client:
+        async with httpx.AsyncClient(transport=transport, base_url="http://127.0.0.1") as client:
             return await client.request(method, address, **options)
 
     return asyncio.run(ask())
 
 
-@pytest.mark.parametrize("address", ["/", "/v1", "/v1/profiles", "/v2/profile", "/docs/vendor/none.js", "/%00"])
+@pytest.mark.parametrize("address", ["/nothing", "/v1", "/v1/profiles", "/v2/profile", "/docs/vendor/none.js", "/%00"])
 def test_unknown_address(client, address):
     assert_problem(client.get(address), 404, kind="not-found")
 
@@ -102,7 +102,7 @@ def test_workers_live_as_long_as_the_app():
             process = pool._workers[0]._process
             assert process.poll() is None
             transport = httpx.ASGITransport(app)
-            async with httpx.AsyncClient(transport=transport, base_url="http://here") as client:
+            async with httpx.AsyncClient(transport=transport, base_url="http://127.0.0.1") as client:
                 ready = (await client.get("/health/ready")).json()
             assert (ready["workers"], ready["busy"], ready["waiting"]) == (1, 0, 0)
         assert process.poll() is not None

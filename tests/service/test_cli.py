@@ -196,7 +196,7 @@ def test_run_of_an_inspection_names_the_right_command(run, tmp_path):
     [
         (NAMED["profile"], ["--out", "out.txt"], "--out: a profile is written as json, npy"),
         (NAMED["profile"], ["--out", "out"], "--out: a profile is written as"),
-        (NAMED["grid"], ["--out", "out.csv"], "--out: a grid is written as json, npy, npz, png, svg, not .csv"),
+        (NAMED["grid"], ["--out", "out.csv"], "--out: a grid is written as json, npy, npz, png, svg, glb"),
         (NAMED["profile"], ["--out", "no/such/folder/out.npy"], "there is no such file or folder"),
         (NAMED["profile"], ["--columns", "table.txt"], "--columns: table.txt does not end in .csv or .npz"),
         (NAMED["profile"], ["--columns", "table.csv"], "there is no such file or folder"),
@@ -345,27 +345,6 @@ def test_unknown_setting_is_refused_at_start(monkeypatch, capsys, action):
     monkeypatch.setenv("DENSITYLOOM_MAX_BODY", "1")
     assert main(action) == 2
     assert "unknown setting DENSITYLOOM_MAX_BODY" in capsys.readouterr().err
-
-
-@pytest.mark.parametrize(
-    ("host", "warned"),
-    [("127.0.0.1", False), ("::1", False), ("localhost", False), ("0.0.0.0", True), ("192.0.2.7", True)],
-)
-def test_listening_beyond_this_machine_is_warned_of(monkeypatch, capsys, host, warned):
-    started = []
-    monkeypatch.setattr(uvicorn, "run", lambda *_, **options: started.append(options))
-    assert main(["serve", "--host", host, "--port", "8421", "--workers", "3"]) == 0
-    assert ("anyone who can reach it" in capsys.readouterr().err) is warned
-    (options,) = started
-    assert (options["host"], options["port"], options["workers"]) == (host, 8421, 3)
-
-
-def test_serve_on_a_taken_port_ends_with_a_message(service):
-    port = service.address.rpartition(":")[2]
-    command = [sys.executable, "-m", "service.cli", "serve", "--port", port]
-    done = subprocess.run(command, capture_output=True, text=True, timeout=60, check=False)
-    assert done.returncode != 0
-    assert "address already in use" in done.stderr
 
 
 @pytest.fixture

@@ -139,3 +139,52 @@ def test_series_come_with_their_variable(connected):
     assert made.values.shape == made.uncertainty.shape == (3, 17)
     np.testing.assert_allclose(made.axes[0], np.linspace(0, bodies.PERIOD, 17))
     assert made.metadata["variable"]["unit"] == "K"
+
+
+def test_a_kept_set_gives_the_same_numbers(connected):
+    columns = {name: np.array(column, dtype=float) for name, column in bodies.table_of(bodies.CRYSTAL).items()}
+    record = connected.keep(bodies.bare({"set": bodies.CRYSTAL})["set"], columns, name="client's", tags=["a", "b"])
+    assert connected.keep(bodies.CRYSTAL)["id"] == record["id"]
+    assert record["tags"] == ["a", "b"]
+    identity = record["id"]
+    request = {name: value for name, value in bodies.GRID.items() if name != "set"}
+    request |= {"window": {"kind": "lanczos"}, "field": "laplacian"}
+    result = connected.fetch(identity, "grid", request)
+    np.testing.assert_array_equal(result.values, connected.compute("grid", {**request, "set": bodies.CRYSTAL}).values)
+    np.testing.assert_array_equal(result.values, connected.compute("grid", {**request, "set_id": identity}).values)
+    found = connected.fetch_report(identity, "statistics", {"bins": 7})
+    assert found == connected.report("statistics", {"set": bodies.CRYSTAL, "bins": 7})
+    for name, column in connected.columns(identity).items():
+        np.testing.assert_array_equal(column, columns[name])
+    connected.forget(identity)
+    with pytest.raises(ServiceError) as caught:
+        connected.fetch(identity, "grid", request)
+    assert caught.value.status == 404
+    with pytest.raises(ServiceError):
+        connected.forget(identity)
+
+
+def test_kept_sets_are_listed_to_the_last(connected):
+    kept = [connected.keep({**bodies.FILM, "mean": 100.0 + number}, tags=["listed"])["id"] for number in range(203)]
+    assert [one["id"] for one in connected.sets(tags=["listed"])] == kept[::-1]
+    assert not list(connected.sets(search="nothing such"))
+    for identity in kept:
+        connected.forget(identity)
+
+
+@pytest.mark.parametrize("key", [None, "dl_0_0"])
+def test_key_travels_with_every_request(key):
+    sent = []
+
+    def answer(request):
+        sent.append(request.headers.get("authorization"))
+        return httpx.Response(401, json={"title": "no"})
+
+    http = httpx.Client(transport=httpx.MockTransport(answer), base_url="http://here")
+    with Client("", key=key, http=http) as client:
+        for columns in (None, {"l": [1]}):
+            with pytest.raises(ServiceError):
+                client.compute("profile", bodies.PROFILE, columns)
+        with pytest.raises(ServiceError):
+            client.report("layers", bodies.PROFILE)
+    assert sent == [key and f"Bearer {key}"] * 3

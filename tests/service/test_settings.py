@@ -3,7 +3,7 @@ from __future__ import annotations
 import pytest
 from pydantic import ValidationError
 
-from service.settings import PREFIX, Settings, load_settings
+from service.settings import PREFIX, Settings, listed, load_settings
 
 GOOD = {
     "compute_workers": 3,
@@ -15,6 +15,18 @@ GOOD = {
     "max_samples": 8,
     "max_json_values": 9,
     "max_memory_bytes": 2**21,
+    "require_keys": True,
+    "allowed_hosts": "density.example.org,::1",
+    "cors_origins": "https://dashboard.example.org, http://localhost:8000",
+    "requests_per_minute": 0,
+    "total_requests_per_minute": 600,
+    "concurrent_per_key": 3,
+    "max_inflight_bytes": 2**24,
+    "body_seconds": 1.5,
+    "send_seconds": 2.5,
+    "stop_seconds": 0.0,
+    "log_format": "json",
+    "log_level": "debug",
 }
 BAD = {
     "compute_workers": ["0", "-1", "two", "1.5", ""],
@@ -26,6 +38,18 @@ BAD = {
     "max_samples": ["0"],
     "max_json_values": ["0"],
     "max_memory_bytes": ["1000", "-1"],
+    "require_keys": ["", "perhaps", "2"],
+    "allowed_hosts": ["density.example.org:80", "http://density.example.org", "*"],
+    "cors_origins": ["*", "dashboard.example.org", "https://dashboard.example.org/", "ftp://a.b", "null"],
+    "requests_per_minute": ["-1", "1.5"],
+    "total_requests_per_minute": ["-1", "many"],
+    "concurrent_per_key": ["0"],
+    "max_inflight_bytes": ["1000"],
+    "body_seconds": ["0", "inf"],
+    "send_seconds": ["0", "nan"],
+    "stop_seconds": ["-1", "1e9"],
+    "log_format": ["xml", ""],
+    "log_level": ["loud", "INFO"],
 }
 
 
@@ -83,3 +107,8 @@ def test_settings_do_not_change_and_have_descriptions():
 def test_settings_reach_a_worker_whole():
     loaded = load_settings()
     assert Settings.model_validate_json(loaded.model_dump_json()) == loaded
+
+
+def test_items_of_a_list():
+    assert listed("") == listed(" , ") == ()
+    assert listed(" https://A.example , b") == ("https://a.example", "b")

@@ -55,6 +55,7 @@ GOOD: dict[str, dict[str, Any]] = {
     "integrals": {"set": CRYSTAL, "regions": REGIONS},
     "layers": {"set": FILM, "along": [1]},
     "statistics": {"set": CRYSTAL, "bins": 12},
+    "features": {"set": FILM, "kinds": ["maximum", "minimum"], "within": 9.0},
     "windows": {"set": CRYSTAL},
     "compare": {"set": FILM, "with": LATER},
 }

@@ -5,6 +5,7 @@ from importlib.metadata import version
 import psutil
 
 from service.routes.health import LIBRARIES
+from service.store.sqlite import library
 
 
 def test_live(client):
@@ -19,6 +20,7 @@ def test_ready(service, client):
         "workers": 2,
         "busy": 0,
         "waiting": 0,
+        "store": library().told(),
         "libraries": {name: version(name) for name in LIBRARIES},
     }
     assert len(psutil.Process(service.process.pid).children()) == 2

@@ -114,7 +114,7 @@ def test_client_that_leaves_has_its_computation_ended(narrow):
     assert_computes(narrow)
     before = worker_processes(narrow)
     head = (
-        "POST /v1/grid?format=npy HTTP/1.1\r\nHost: here\r\nContent-Type: application/json\r\n"
+        "POST /v1/grid?format=npy HTTP/1.1\r\nHost: localhost\r\nContent-Type: application/json\r\n"
         f"Content-Length: {len(HEAVY)}\r\n\r\n"
     )
     with socket.create_connection(("127.0.0.1", int(narrow.address.rpartition(":")[2]))) as raw:
@@ -129,7 +129,7 @@ def test_client_that_leaves_has_its_computation_ended(narrow):
 
 def test_client_that_leaves_in_the_middle_of_its_body_leaves_no_trace(narrow):
     head = (
-        "POST /v1/grid HTTP/1.1\r\nHost: here\r\nContent-Type: application/json\r\n"
+        "POST /v1/grid HTTP/1.1\r\nHost: localhost\r\nContent-Type: application/json\r\n"
         "X-Marked: half\r\nContent-Length: 1000\r\n\r\nhalf a body"
     )
     with socket.create_connection(("127.0.0.1", int(narrow.address.rpartition(":")[2]))) as raw:
@@ -183,7 +183,7 @@ def test_no_descriptor_leaks(narrow):
             sent = bodies.film_form(("text/csv", bodies.as_csv(bodies.table_of(bodies.FILM))))
             assert one.post("/v1/profile", content=sent, headers={"Content-Type": bodies.FORM}).status_code == 200
             with socket.create_connection(("127.0.0.1", address)) as raw:
-                raw.sendall(b"POST /v1/grid HTTP/1.1\r\nHost: here\r\nContent-Length: 9\r\n\r\n{")
+                raw.sendall(b"POST /v1/grid HTTP/1.1\r\nHost: localhost\r\nContent-Length: 9\r\n\r\n{")
 
         round_of_requests()
         before = descriptors()

@@ -5,6 +5,7 @@ import json
 import resource
 import subprocess
 import sys
+from contextlib import closing
 
 import numpy as np
 import pytest
@@ -14,16 +15,19 @@ from service import pipeline
 from service.problems import Problem
 from service.settings import Settings
 from service.spool import Spool
+from service.store.parcel import unpack
+from service.store.shelf import Shelf
 from service.wall import worker
 from tests.service import bodies
 
 
-def served(product, body, form="json", settings=None, media_type="application/json"):
+def served(product, body, form="json", settings=None, media_type="application/json", members=None):
     """What a worker answers: the message, and the bytes of the answer."""
     with Spool.unnamed() as spool:
         spool.append(body if isinstance(body, bytes) else json.dumps(body).encode())
-        asked = {"product": product, "content_type": media_type, "form": form}
-        message, made = worker._serve(asked, spool, settings or Settings(compute_threads=1))
+        asked = {"product": product, "content_type": media_type, "form": form, "members": members or {}}
+        with closing(Shelf(settings or Settings(compute_threads=1))) as shelf:
+            message, made = worker._serve(asked, spool, shelf, settings or Settings(compute_threads=1))
     with made:
         return message, bytes(made.view())
 
@@ -90,3 +94,16 @@ def test_tighter_bound_from_outside_is_kept(monkeypatch):
     monkeypatch.setattr(resource, "setrlimit", lambda _, limits: told.append(limits))
     worker._bound_memory(Settings())
     assert told in ([(2**30, 2**30)], [])
+
+
+def test_members_that_came_with_the_address_are_of_the_request():
+    message, content = served("keep", {"set": bodies.FILM}, members={"name": "film KL-2"})
+    assert message["headers"] == {}
+    assert unpack(memoryview(content)).labels.name == "film KL-2"
+    message, _ = served("keep", {"set": bodies.FILM, "name": "x"}, members={"name": "y"})
+    assert "given in the body and again in the address" in message["problem"]["detail"]
+
+
+def test_headers_that_belong_to_a_form_travel_with_the_answer():
+    message, content = served("profile", bodies.PROFILE, "f32")
+    assert json.loads(message["headers"]["Samples-Description"])["shape"] == [len(content) // 4]

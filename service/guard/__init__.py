@@ -1,0 +1,1 @@
+"""What stands around the service: who is asking, how much, from where; and what is told of it."""
