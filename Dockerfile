@@ -10,7 +10,11 @@ RUN python -m venv /opt/densityloom \
 
 FROM python:3.11-slim-bookworm
 COPY --from=build /opt/densityloom /opt/densityloom
-# Nothing is written at run time: the root may be read-only (docker run --read-only).
+# Nothing but the store is written at run time: the root may be read-only (docker run --read-only), and the store
+# wants a volume: -v densityloom:/var/lib/densityloom. Without one sets cannot be kept; all else works.
+RUN mkdir /var/lib/densityloom && chown 10001:10001 /var/lib/densityloom
+VOLUME /var/lib/densityloom
+ENV DENSITYLOOM_DATA_DIR=/var/lib/densityloom
 # The library that draws wants a place for its list of fonts: memory, which is writable all the same.
 ENV PATH=/opt/densityloom/bin:$PATH PYTHONDONTWRITEBYTECODE=1 PYTHONUNBUFFERED=1 MPLCONFIGDIR=/dev/shm/densityloom
 USER 10001:10001

@@ -36,9 +36,7 @@ def one_set(request: SetRequestIn, given: CoefficientSetIn, *, max_coefficients:
     with located("resolution"):
         made = made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
     with located("trust"):
-        return made.trusting(
-            least_merit=request.trust.least_merit, largest_sigma_deg=request.trust.largest_sigma_deg
-        )
+        return made.trusting(least_merit=request.trust.least_merit, largest_sigma_deg=request.trust.largest_sigma_deg)
 
 
 def whole_set(given: CoefficientSetIn, missing: MissingPhase, *, max_coefficients: int) -> CoefficientSet:

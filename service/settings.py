@@ -97,6 +97,20 @@ class Settings(BaseSettings):
     )
     log_level: Literal["debug", "info", "warning", "error"] = Field("info", description="least that is logged")
 
+    @field_validator("data_dir", mode="before")
+    @classmethod
+    def _folder(cls, given: object) -> object:
+        if given == "":
+            raise ValueError("is empty; name a folder")
+        return given
+
+    @field_validator("database_url")
+    @classmethod
+    def _server(cls, text: str | None) -> str | None:
+        if text is not None and not text.startswith("postgresql://"):
+            raise ValueError("is no address of a PostgreSQL database; give postgresql://user@host:port/name")
+        return text
+
     @field_validator("cors_origins")
     @classmethod
     def _origins(cls, text: str) -> str:

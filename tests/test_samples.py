@@ -14,6 +14,7 @@ import pytest
 
 from service.routes.compute import ADDRESSES
 from service.schemas.products import PRODUCTS
+from service.schemas.requests import KEEP
 from tests.samples import FOLDER, build, texts
 from tests.serving import serving
 
@@ -43,8 +44,9 @@ PARTS = {
 }
 """Files that go with a request: the part's name, the file, its media type."""
 REQUESTS = {name: json.loads((FOLDER / name).read_text()) for name in FILES}
-DENSITIES = [name for name in FILES if REQUESTS[name]["product"] in PRODUCTS]
-REPORTED = [name for name in FILES if name not in DENSITIES and not name.startswith("inspect")]
+SURFACES = [name for name in FILES if "surface" in REQUESTS[name]]
+DENSITIES = [name for name in FILES if REQUESTS[name]["product"] in PRODUCTS and name not in SURFACES]
+REPORTED = [name for name in FILES if name not in (*DENSITIES, *SURFACES) and not name.startswith("inspect")]
 FIGURES = {
     match["name"]: (match["pointer"], float(match["value"]))
     for match in re.finditer(
@@ -58,14 +60,14 @@ def answered(served, name):
     """A sample's JSON answer."""
     request = (FOLDER / name).read_bytes()
     product = json.loads(request)["product"]
-    address = ADDRESSES[product].removeprefix("/")
+    address = "sets" if product == KEEP else ADDRESSES[product].removeprefix("/")
     body = {"content": request, "headers": {"Content-Type": "application/json"}}
     if name in PARTS:
         part, file, media_type = PARTS[name]
         files = {"request": ("r", request, "application/json"), part: (file, (FOLDER / file).read_bytes(), media_type)}
         body = {"files": files}
     answer = httpx.post(f"{served.address}/v1/{address}", **body)
-    assert answer.status_code == 200, answer.text
+    assert answer.status_code in (200, 201), answer.text
     return answer.json()
 
 
@@ -135,6 +137,9 @@ def test_curl_lines_work(served, line, tmp_path):
         if kind in (".png", ".svg"):
             assert content.startswith(b"\x89PNG" if kind == ".png" else b"<?xml")
             return
+        if kind == ".glb":
+            assert content.startswith(b"glTF")
+            return
         loaded = np.load(written[0])
         values = loaded if kind == ".npy" else loaded["values"]
         assert np.isfinite(values).all()
@@ -192,3 +197,17 @@ def test_silicon_bond_is_many_sigma(served):
     assert value / sigma > 40
     # On the threefold axis with its mirrors and inversion the related errors add up.
     assert sigma > 1.5 * answer["uncertainty"][1]
+
+
+def test_the_surface_is_the_one_that_is_told_of(served):
+    """Area and volume of the README, from the file's own words; they are compared with known bodies elsewhere."""
+    (name,) = SURFACES
+    request = (FOLDER / name).read_bytes()
+    headers = {"Content-Type": "application/json", "Accept": "model/gltf-binary"}
+    content = httpx.post(f"{served.address}/v1/grid", content=request, headers=headers).content
+    length = int.from_bytes(content[12:16], "little")
+    told = json.loads(content[20 : 20 + length])["asset"]["extras"]
+    (line,) = (line for line in README.splitlines() if line.startswith(f"| `{name}`"))
+    area, volume = (float(word) for word in re.findall(r"([\d.]+) Å[²³]", line))
+    assert told["area"] == pytest.approx(area, rel=2e-3)
+    assert told["volume"] == pytest.approx(volume, rel=2e-3)

@@ -22,6 +22,8 @@ REPAIRED = {(3, 44): 6, (3, 50): 7}
 """Branches that got the repair, and from which patch on."""
 BUSY_SECONDS = 20.0
 """How long a transaction waits for another one's lock."""
+CONNECTIONS = 40
+"""Threads of the server that may ask at once; a connection is opened when it is first needed."""
 WRITING = "writing"
 """Execution option of a connection whose transactions write."""
 
@@ -84,7 +86,14 @@ def library() -> Library:
 
 def open_engine(path: str, used: Library) -> Engine:
     """An engine whose every commit is on the disk before it returns."""
-    engine = create_engine(f"sqlite:///{path}", module=used.module, connect_args={"timeout": BUSY_SECONDS})
+    # As many connections as there are threads that ask: to open one takes longer than most questions do.
+    engine = create_engine(
+        f"sqlite:///{path}",
+        module=used.module,
+        connect_args={"timeout": BUSY_SECONDS},
+        pool_size=CONNECTIONS,
+        max_overflow=0,
+    )
 
     @event.listens_for(engine, "connect")
     def _prepare(connection: Any, _: object) -> None:  # noqa: ANN401

@@ -45,13 +45,15 @@ local base, sets, number = os.getenv("LOAD_SET"), "/v1/sets", 0
 local body = io.open(os.getenv("LOAD_BODY")):read("*a")
 local kept = io.open(os.getenv("LOAD_KEPT")):read("*a")
 local json = { ["Content-Type"] = "application/json" }
+local line = "/profile?from=0,0,0&to=0,0,1&uncertainty=true&samples="
 local plane = "/slice?plane=0,0,1&width=16&height=16&spacing=0.0625&format=u16&offset="
 request = function()
   number = number + 1
   local kind = number % 20
   if kind < 8 then return wrk.format("GET", base .. plane .. (number % 50) / 10) end
-  if kind < 12 then return wrk.format("GET", base .. plane .. string.format("%.6f", 1e-6 * (number * 7919 % 9000000))) end
-  if kind < 14 then return wrk.format("GET", base .. "/profile?from=0,0,0&to=0,0,1&uncertainty=true&samples=" .. 200 + number % 300) end
+  local fresh = string.format("%.6f", 1e-6 * (number * 7919 % 9000000))
+  if kind < 12 then return wrk.format("GET", base .. plane .. fresh) end
+  if kind < 14 then return wrk.format("GET", base .. line .. 200 + number % 300) end
   if kind == 14 then return wrk.format("GET", sets .. "?limit=20&search=TM") end
   if kind == 15 then return wrk.format("GET", base) end
   if kind == 16 then return wrk.format("POST", "/v1/points", json, body) end
@@ -207,6 +209,5 @@ def _sustained(address: str, process: int, base: str, given: dict[str, object]) 
     first, last = (sum(some) / len(some) for some in (held[part : 2 * part] or held, held[-part:]))
     print(f"Mixed load, 8 connections, {spent:.0f} s: {told['requests']:,} requests, {told['faults']} faults,")
     print(f"  {told['rate']:.0f} requests/s, p50 {told['median']:.2f} ms, p99 {told['most']:.1f} ms")
-    print(
-        f"  memory of all processes, MiB: {first:.0f} in the second fifth, {last:.0f} in the last, {max(held):.0f} at most"
-    )
+    print(f"  memory of all processes, MiB: {first:.0f} in the second fifth of the time, {last:.0f} in the last,")
+    print(f"  {max(held):.0f} at most")

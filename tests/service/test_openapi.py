@@ -165,7 +165,7 @@ def test_bodies_are_described_as_strictly_as_they_are_checked():
 @pytest.mark.parametrize("product", PRODUCTS)
 def test_errors_are_described(product):
     responses = OPERATIONS["post", f"/v1/{product}"]["responses"]
-    assert set(map(int, responses)) == {200, *GUARDED, 400, 406, 413, 415, 422, 500, 501, 503, 504}
+    assert set(map(int, responses)) == {200, *GUARDED, 400, 404, 406, 413, 415, 422, 500, 501, 503, 504}
     for status, response in responses.items():
         if int(status) != 200:
             assert list(response["content"]) == ["application/problem+json"]

@@ -1,5 +1,7 @@
 from __future__ import annotations
 
+from pathlib import Path
+
 import pytest
 from pydantic import ValidationError
 
@@ -15,6 +17,12 @@ GOOD = {
     "max_samples": 8,
     "max_json_values": 9,
     "max_memory_bytes": 2**21,
+    "data_dir": Path("/somewhere/else"),
+    "database_url": "postgresql://densityloom@localhost:5433/sets",
+    "max_sets": 0,
+    "max_store_bytes": 10,
+    "cache_bytes": 0,
+    "set_cache_bytes": 11,
     "require_keys": True,
     "allowed_hosts": "density.example.org,::1",
     "cors_origins": "https://dashboard.example.org, http://localhost:8000",
@@ -38,6 +46,12 @@ BAD = {
     "max_samples": ["0"],
     "max_json_values": ["0"],
     "max_memory_bytes": ["1000", "-1"],
+    "data_dir": [""],
+    "database_url": ["", "sqlite:///x.db", "mysql://localhost/x", "localhost"],
+    "max_sets": ["-1"],
+    "max_store_bytes": ["-1", "much"],
+    "cache_bytes": ["-1"],
+    "set_cache_bytes": ["-1"],
     "require_keys": ["", "perhaps", "2"],
     "allowed_hosts": ["density.example.org:80", "http://density.example.org", "*"],
     "cors_origins": ["*", "dashboard.example.org", "https://dashboard.example.org/", "ftp://a.b", "null"],

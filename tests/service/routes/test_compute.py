@@ -15,7 +15,7 @@ from starlette.requests import Request
 from engine import Demand, Treatment, Window, averages, evaluate, sampling
 from service.encoders.negotiation import MEDIA_TYPES, formats_of
 from service.problems import Problem
-from service.routes.compute import _unless_gone
+from service.routes.exchange import unless_gone
 from tests.service import bodies
 from tests.service.bodies import changed
 from tests.service.problem_shape import assert_problem
@@ -433,7 +433,7 @@ def test_server_that_stops_tells_who_still_waits():
             await asyncio.Event().wait()
 
         request = Request({"type": "http"}, receive)
-        waiting = asyncio.create_task(_unless_gone(request, computing()))
+        waiting = asyncio.create_task(unless_gone(request, computing()))
         await asyncio.sleep(0.01)
         waiting.cancel()
         with pytest.raises(Problem) as caught:
