@@ -97,7 +97,7 @@ def _summary(made: CoefficientSet, facts: Facts, inspection: dict[str, Any] | No
         "coverage": None if covered is None else described_coverage(covered),
         "columns": [name for name, column in columns.items() if column is not None],
         "history": list(made.history),
-        "warnings": [*_warnings(made), *([] if inspection is None else inspection["warnings"])],
+        "warnings": [*_warnings(made, inspection is not None), *([] if inspection is None else inspection["warnings"])],
         "inspection": inspection,
     }
 
@@ -108,7 +108,7 @@ def _angles(lattice: Lattice) -> list[float]:
     return [float(np.degrees(np.arccos(np.clip(unit[i] @ unit[j], -1, 1)))) for i, j in pairs]
 
 
-def _warnings(made: CoefficientSet) -> list[str]:
+def _warnings(made: CoefficientSet, inspected: bool) -> list[str]:
     """What a reader must know before looking at a density of the set."""
     found = []
     others = made.indices.any(axis=1)
@@ -130,6 +130,7 @@ def _warnings(made: CoefficientSet) -> list[str]:
             f"Only {covered.present} of the {covered.possible} terms possible down to {covered.d_min:.3g} Å "
             f"({100 * covered.fraction:.0f} %) are there with a phase."
         )
-    if made.unit == "arbitrary":
+    if made.unit == "arbitrary" and not inspected:
+        # What is said of a file names the scale already.
         found.append("The scale is arbitrary: shapes can be compared, values with other sets cannot.")
     return found

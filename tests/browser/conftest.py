@@ -17,8 +17,8 @@ from tests import demos
 from tests.service.conftest import alone
 from tests.serving import Served
 
-CHROMIUM = Path(os.environ.get("DENSITYLOOM_TEST_CHROMIUM", "/usr/bin/chromium"))
-AXE = Path(os.environ.get("DENSITYLOOM_TEST_AXE", "axe.min.js"))
+CHROMIUM = Path(os.environ.get("TEST_CHROMIUM", "/usr/bin/chromium"))
+AXE = Path(os.environ.get("TEST_AXE", "axe.min.js"))
 """Read here, for no test sees variables with our prefix."""
 ARGUMENTS = [
     "--no-sandbox",
@@ -111,7 +111,7 @@ def browser() -> Iterator[Any]:
     except ImportError:
         missing("playwright is not installed (pip install playwright)")
     if not CHROMIUM.exists():
-        missing(f"there is no browser at {CHROMIUM}; DENSITYLOOM_TEST_CHROMIUM names another")
+        missing(f"there is no browser at {CHROMIUM}; TEST_CHROMIUM names another")
     with sync_playwright() as playwright:
         made = playwright.chromium.launch(executable_path=str(CHROMIUM), args=ARGUMENTS)
         yield made

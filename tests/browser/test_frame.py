@@ -44,7 +44,7 @@ def test_nothing_hangs_over_the_side(look_at, served, sets, size, name, tmp_path
 @pytest.mark.parametrize("name", VIEWS)
 def test_accessible(look_at, served, sets, name, theme):
     if not AXE.is_file():
-        missing("DENSITYLOOM_TEST_AXE does not name axe.min.js (npm install axe-core)")
+        missing("TEST_AXE does not name axe.min.js (npm install axe-core)")
     look = look_at(served.address, theme=theme, bypass_csp=True)
     page = look.open(fragment_of(sets, name))
     for details in page.locator("details").all():

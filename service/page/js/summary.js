@@ -7,7 +7,7 @@ import { bytes, count, fixed, short, unitText } from "./numbers.js";
 import { showProblem } from "./problem.js";
 import { askJson, productAddress } from "./service.js";
 import { spark } from "./spark.js";
-import { change } from "./state.js";
+import { DEFAULTS, change, note, now } from "./state.js";
 import { takeAlong } from "./take.js";
 import { onTheme } from "./theme.js";
 
@@ -68,6 +68,7 @@ function glance(record) {
       const [axis] = answer.axes;
       const line = record.dimension === 1 ? "Through one period" : `Averaged over the planes (${normal.join(" ")}), along their normal`;
       fill(words, `${line}, ${short(axis.step * (axis.count - 1))} Å: from ${short(minimum)} to ${short(maximum)} ${unitText(answer.unit)}.`);
+      if (record.dimension === 3) startAtTheDensest(record, answer.values);
       const draw = () => spark(canvas, answer.values);
       redraw = draw;
       return new ResizeObserver(draw).observe(canvas);
@@ -76,6 +77,14 @@ function glance(record) {
     () => section.remove(),
   );
   return section;
+}
+
+/** Nobody has chosen a height yet: the first slice shall go through what is there. */
+function startAtTheDensest(record, values) {
+  const { set, cut, axes, height } = now();
+  if (set !== record.id || cut !== DEFAULTS.cut || axes !== DEFAULTS.axes || height !== DEFAULTS.height) return;
+  const place = values.indexOf(Math.max(...values)) / (values.length - 1);
+  note({ height: Math.round(200 * place) / 200 });
 }
 
 function warnings(texts) {
