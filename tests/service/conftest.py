@@ -5,11 +5,15 @@ from __future__ import annotations
 import os
 from collections.abc import Iterator
 from contextlib import contextmanager
+from pathlib import Path
 
 import httpx
 import psutil
 import pytest
 
+from service.access.keys import Keys
+from service.store.database import Database, open_database
+from tests.service.databases import KINDS, fresh_postgresql
 from tests.serving import Served, serving
 
 SMALL = {
@@ -64,6 +68,28 @@ def small_service() -> Iterator[Served]:
 def small_client(small_service: Served) -> Iterator[httpx.Client]:
     with httpx.Client(base_url=small_service.address, timeout=60) as made:
         yield made
+
+
+@pytest.fixture(params=KINDS)
+def address(request, tmp_path) -> Iterator[tuple[Path, str | None]]:
+    """Arguments of `open_database`, for each kind of database."""
+    if request.param == "sqlite":
+        yield tmp_path / "data", None
+    else:
+        with fresh_postgresql() as url:
+            yield tmp_path / "data", url
+
+
+@pytest.fixture
+def database(address) -> Iterator[Database]:
+    made = open_database(*address)
+    yield made
+    made.close()
+
+
+@pytest.fixture
+def keys(database) -> Keys:
+    return Keys(database)
 
 
 @pytest.hookimpl(wrapper=True)

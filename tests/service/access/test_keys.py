@@ -13,18 +13,6 @@ from service.store.database import open_database
 from service.store.tables import KEYS
 
 
-@pytest.fixture
-def database(tmp_path):
-    made = open_database(tmp_path, None)
-    yield made
-    made.close()
-
-
-@pytest.fixture
-def keys(database):
-    return Keys(database)
-
-
 def test_key_is_known_by_its_digest_alone(keys, database):
     key, text = keys.create("a dashboard", ["compute", "read", "read"])
     assert PATTERN.fullmatch(text)
@@ -122,8 +110,8 @@ def test_without_a_store_nothing_passes():
         keys.any_valid()
 
 
-def test_keys_outlive_the_process(keys, tmp_path):
+def test_keys_outlive_the_process(keys, address):
     key, text = keys.create("a", ["read"])
-    again = open_database(tmp_path, None)
+    again = open_database(*address)
     assert Keys(again).check(text) == key
     again.close()

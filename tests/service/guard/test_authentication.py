@@ -9,20 +9,7 @@ from service.access.keys import Keys
 from service.guard.authentication import FIRST_KEY, Authentication, announce
 from service.guard.rates import Rates
 from service.guard.record import record_of
-from service.store.database import open_database
 from tests.service.guard.asgi import around, asked
-
-
-@pytest.fixture
-def database(tmp_path):
-    made = open_database(tmp_path, None)
-    yield made
-    made.close()
-
-
-@pytest.fixture
-def keys(database):
-    return Keys(database)
 
 
 async def within(scope, receive, send):

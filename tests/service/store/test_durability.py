@@ -21,7 +21,7 @@ from service.store.records import Quota, Sets
 from service.store.sqlite import library
 from service.store.tables import CONTENTS, SETS
 from tests.service.conftest import alone
-from tests.service.store.databases import KINDS, fresh_postgresql
+from tests.service.databases import KINDS, fresh_postgresql
 
 ROUNDS = 4
 CLIENTS = 4
