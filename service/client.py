@@ -186,12 +186,12 @@ class Client:
 
     def forget(self, identity: str) -> None:
         """Have a kept set deleted."""
-        answer = self._http.delete(f"/v1/sets/{identity}")
+        answer = self._http.delete(f"/v1/sets/{identity}", headers=self._headers)
         if answer.is_error:
             raise _error(answer)
 
     def _get(self, address: str, query: Mapping[str, Any], accept: str) -> httpx.Response:
-        answer = self._http.get(address, params=dict(query), headers={"Accept": accept})
+        answer = self._http.get(address, params=dict(query), headers={**self._headers, "Accept": accept})
         if answer.is_error:
             raise _error(answer)
         return answer

@@ -188,3 +188,37 @@ def test_key_travels_with_every_request(key):
         with pytest.raises(ServiceError):
             client.report("layers", bodies.PROFILE)
     assert sent == [key and f"Bearer {key}"] * 3
+
+
+CALLS = {
+    "compute": lambda client: client.compute("profile", bodies.PROFILE),
+    "columns beside": lambda client: client.compute("profile", bodies.bare(bodies.PROFILE), {"l": [1]}),
+    "report": lambda client: client.report("layers", {"set": bodies.FILM}),
+    "picture": lambda client: client.picture("profile", bodies.PROFILE),
+    "keep": lambda client: client.keep(bodies.FILM),
+    "sets": lambda client: list(client.sets()),
+    "columns": lambda client: client.columns("0" * 64),
+    "fetch": lambda client: client.fetch("0" * 64, "profile", {}),
+    "fetch_report": lambda client: client.fetch_report("0" * 64, "layers", {}),
+    "forget": lambda client: client.forget("0" * 64),
+}
+
+
+@pytest.mark.parametrize("call", CALLS.values(), ids=CALLS)
+def test_every_call_brings_the_key(call):
+    seen = []
+
+    def answer(request):
+        seen.append(request.headers.get("authorization"))
+        return httpx.Response(503, json={"title": "x", "status": 503})
+
+    transport = httpx.MockTransport(answer)
+    with Client("http://lab", key="dl_x", http=httpx.Client(base_url="http://lab", transport=transport)) as client:
+        with pytest.raises(ServiceError):
+            call(client)
+    assert seen == ["Bearer dl_x"]
+
+
+def test_every_public_call_is_tried_with_a_key():
+    public = {name for name in vars(Client) if not name.startswith("_")} - {"close"}
+    assert public == set(CALLS) - {"columns beside"}
