@@ -213,9 +213,9 @@ def test_every_call_brings_the_key(call):
         return httpx.Response(503, json={"title": "x", "status": 503})
 
     transport = httpx.MockTransport(answer)
-    with Client("http://lab", key="dl_x", http=httpx.Client(base_url="http://lab", transport=transport)) as client:
-        with pytest.raises(ServiceError):
-            call(client)
+    http = httpx.Client(base_url="http://lab", transport=transport)
+    with Client("http://lab", key="dl_x", http=http) as client, pytest.raises(ServiceError):
+        call(client)
     assert seen == ["Bearer dl_x"]
 
 
