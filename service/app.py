@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import asyncio
 import logging
 from collections.abc import AsyncIterator
 from contextlib import asynccontextmanager
@@ -26,7 +27,7 @@ from service.routes import compute, docs, health, page, sets, stored
 from service.routes import metrics as figures
 from service.settings import Settings, load_settings
 from service.store.known import Known
-from service.store.store import Store, open_store
+from service.store.store import Store
 from service.wall.pool import Pool
 
 log = logging.getLogger("densityloom")
@@ -48,7 +49,9 @@ def create_app(settings: Settings | None = None) -> FastAPI:
 
     @asynccontextmanager
     async def lifespan(app: FastAPI) -> AsyncIterator[dict[str, object]]:
-        app.state.store = open_store(settings)
+        opened = app.state.store = Store(settings)
+        opened.open()
+        trying = asyncio.create_task(opened.keep_trying())
         announce(keys_required(settings), keys())
         await pool.start()
         app.state.pool = pool
@@ -58,8 +61,9 @@ def create_app(settings: Settings | None = None) -> FastAPI:
                 yield {SEND_SECONDS: settings.send_seconds}
         finally:
             app.state.pool = None
+            trying.cancel()
             await pool.close()
-            app.state.store.close()
+            opened.close()
 
     def store() -> Store:
         found: Store = app.state.store
@@ -78,6 +82,7 @@ def create_app(settings: Settings | None = None) -> FastAPI:
         redirect_slashes=False,
         lifespan=lifespan,
     )
+    app.state.keys_required = keys_required(settings)
     app.include_router(compute.router(pool, settings))
     app.include_router(sets.router(pool, store, known, settings))
     app.include_router(stored.router(pool, store, known, cache))

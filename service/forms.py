@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+import re
+
 import python_multipart
 from python_multipart.exceptions import FormParserError
 from python_multipart.multipart import MultipartParser, parse_options_header
 
 from service.parts import Part
 from service.problems import Problem
+
+_MEDIA_TYPE = re.compile(r"[a-z0-9!#$&^_.+-]{1,64}/[a-z0-9!#$&^_.+-]{1,64}")
+"""RFC 6838 §4.2."""
 
 
 def split(content_type: str, body: bytes) -> dict[str, Part]:
@@ -68,7 +73,12 @@ class _Collector:
         if name in self.parts:
             raise Problem("malformed-body", f"The form has the part {name[:40]!r} twice.")
         media_type = self._headers.get(b"content-type", b"").split(b";")[0].strip().lower().decode("ascii", "replace")
-        self.parts[name] = Part(media_type, bytes(self._data), options.get(b"filename", b"").decode("utf-8", "replace"))
+        if media_type and not _MEDIA_TYPE.fullmatch(media_type):
+            raise Problem("malformed-body", f"The part {name[:40]!r} has a Content-Type that is none.")
+        file = options.get(b"filename", b"").decode("utf-8", "replace")
+        if not file.isprintable():
+            raise Problem("malformed-body", f"The part {name[:40]!r} has a file name that does not print.")
+        self.parts[name] = Part(media_type, bytes(self._data), file)
 
     def _end(self) -> None:
         self.ended = True

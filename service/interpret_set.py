@@ -36,7 +36,16 @@ def one_set(request: SetRequestIn, given: CoefficientSetIn, *, max_coefficients:
     with located("resolution"):
         made = made.within(d_min=request.resolution.d_min, d_max=request.resolution.d_max)
     with located("trust"):
-        return made.trusting(least_merit=request.trust.least_merit, largest_sigma_deg=request.trust.largest_sigma_deg)
+        trusted = made.trusting(
+            least_merit=request.trust.least_merit, largest_sigma_deg=request.trust.largest_sigma_deg
+        )
+    if request.missing_phase == "refuse" and trusted.unphased:
+        raise at(
+            ("missing_phase",),
+            f"refuses, and {trusted.unphased} phases are not trusted",
+            'trust more of them, or ask for "omit"',
+        )
+    return trusted
 
 
 def whole_set(given: CoefficientSetIn, missing: MissingPhase, *, max_coefficients: int) -> CoefficientSet:

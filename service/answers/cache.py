@@ -8,6 +8,9 @@ from dataclasses import dataclass, field
 LARGEST_SHARE = 0.25
 """An answer larger than this share of the cache is not kept: it would drive out all others."""
 
+OVERHEAD = 2048
+"""Bytes that an answer costs beside its body: headers, key, bookkeeping."""
+
 
 @dataclass(slots=True)
 class Kept:
@@ -32,7 +35,7 @@ class Kept:
 
     @property
     def size(self) -> int:
-        return len(self.body) + sum(map(len, self.coded.values()))
+        return OVERHEAD + len(self.body) + sum(map(len, self.coded.values()))
 
 
 class Cache:
@@ -46,6 +49,11 @@ class Cache:
         self.bytes = 0
         self.hits = 0
         self.misses = 0
+
+    @property
+    def largest(self) -> float:
+        """Bytes beyond which an answer is not kept."""
+        return LARGEST_SHARE * self._most
 
     def get(self, key: str) -> Kept | None:
         """The answer of a key; counts as used."""
@@ -61,7 +69,7 @@ class Cache:
         """Keep an answer, or its grown self, if it is not too large."""
         if self._kept.pop(key, None) is not None:
             self.bytes -= self._sizes.pop(key)
-        if answer.size > LARGEST_SHARE * self._most:
+        if answer.size > self.largest:
             return
         self._kept[key] = answer
         self._sizes[key] = answer.size

@@ -30,7 +30,7 @@ class Flights(Generic[T]):
         if flight is None:
             task = asyncio.ensure_future(compute())
             flight = self._under_way[key] = _Flight(task)
-            task.add_done_callback(lambda _: self._under_way.pop(key, None))
+            task.add_done_callback(lambda _: self._landed(key, flight))
         flight.waiting += 1
         try:
             return await asyncio.shield(flight.task)
@@ -38,5 +38,10 @@ class Flights(Generic[T]):
             flight.waiting -= 1
             if flight.waiting == 0 and not flight.task.done():
                 # Another client that comes now starts anew.
-                self._under_way.pop(key, None)
+                self._landed(key, flight)
                 flight.task.cancel()
+
+    def _landed(self, key: str, flight: _Flight[T]) -> None:
+        """Forget a flight, but not one of the same key that has started since."""
+        if self._under_way.get(key) is flight:
+            del self._under_way[key]

@@ -9,7 +9,7 @@ from starlette.concurrency import run_in_threadpool
 from starlette.datastructures import Headers
 from starlette.types import ASGIApp, Receive, Scope, Send
 
-from service.access.keys import Key, Keys
+from service.access.keys import PATTERN, Key, Keys
 from service.access.scopes import SCOPES, is_open, scope_needed
 from service.guard.rates import Rates
 from service.guard.record import Record, record_of
@@ -29,7 +29,7 @@ class Authentication:
     keys : callable
         The keys of the store as it is now.
     rates : Rates
-        Where keys that are none are counted, by address: whoever only tries is soon refused without a look-up.
+        Where keys that are none are counted, by address: whoever only tries is soon told to wait.
     """
 
     def __init__(self, app: ASGIApp, keys: Callable[[], Keys], rates: Rates) -> None:
@@ -52,15 +52,13 @@ class Authentication:
         await self._app(scope, receive, send)
 
     async def _known(self, header: str | None, record: Record) -> Key:
-        told = "this address"
-        self._rates.check(record.client, told)
         kind, _, text = (header or "").partition(" ")
-        key = None
-        if kind.lower() == "bearer":
+        # A key is looked up whatever others at the same address, such as a proxy's, have tried.
+        if kind.lower() == "bearer" and PATTERN.fullmatch(text.strip()):
             key = await run_in_threadpool(self._keys().check, text.strip())
-        if key is not None:
-            return key
-        self._rates.take(record.client, told)
+            if key is not None:
+                return key
+        self._rates.take(record.client, "this address")
         if header is None:
             detail = "Send an API key in the header Authorization: Bearer KEY."
             raise Problem("unauthorized", detail, headers={"WWW-Authenticate": CHALLENGE})

@@ -71,7 +71,11 @@ class Metrics:
 
     def expose(self, accept: str) -> tuple[bytes, str]:
         """All figures, and the media type they are in; takes a moment, for some are looked up."""
-        encode, media_type = choose_encoder(accept)
+        try:
+            encode, media_type = choose_encoder(accept)
+        except (ValueError, TypeError):
+            # A version that is no number.
+            encode, media_type = choose_encoder("")
         body: bytes = encode(self._registry)
         return body, media_type
 

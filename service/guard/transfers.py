@@ -73,7 +73,7 @@ class Transfers:
         if scope["path"].startswith(WORK):
             # An answer that is computed is sent; so new work must not begin while too much is being sent.
             self._in_flight.reserve(0)
-        transfer = _Transfer(self._in_flight, Headers(scope=scope), self._most_body, self._seconds)
+        transfer = _Transfer(self._in_flight, scope, self._most_body, self._seconds)
 
         async def received() -> Message:
             return await transfer.receive(receive)
@@ -81,6 +81,7 @@ class Transfers:
         async def answered(message: Message) -> None:
             transfer.note_answer(message)
             await send(message)
+            transfer.note_sent(message)
 
         try:
             await self._app(scope, received, answered)
@@ -91,9 +92,10 @@ class Transfers:
 class _Transfer:
     """One request's bytes."""
 
-    def __init__(self, in_flight: InFlight, headers: Headers, most_body: int, seconds: float) -> None:
+    def __init__(self, in_flight: InFlight, scope: Scope, most_body: int, seconds: float) -> None:
         self._in_flight = in_flight
-        declared = headers.get("content-length", "")
+        self._head = scope["method"] == "HEAD"
+        declared = Headers(scope=scope).get("content-length", "")
         self._declared = min(int(declared), most_body) if declared.isdigit() else 0
         self._seconds = seconds
         self._begun: float | None = None
@@ -132,9 +134,16 @@ class _Transfer:
         if message["type"] == "http.response.start":
             self._answered = True
             length = Headers(raw=message.get("headers", [])).get("content-length", "")
-            if length.isdigit():
+            if length.isdigit() and not self._head:
                 self._in_flight.add(int(length))
                 self.held += int(length)
+
+    def note_sent(self, message: Message) -> None:
+        """What the connection has taken is held no more."""
+        if message["type"] == "http.response.body" and self._answered:
+            gone = min(len(message.get("body", b"")), self.held)
+            self._in_flight.release(gone)
+            self.held -= gone
 
     def _hold(self, count: int) -> None:
         if count:

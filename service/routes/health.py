@@ -8,6 +8,7 @@ from fastapi import APIRouter, Request
 
 from service.problems import Problem
 from service.schemas.health import Live, Ready
+from service.store.store import Store
 
 LIBRARIES = ("numpy", "scipy", "finufft", "fastapi", "uvicorn", "pydantic", "sqlalchemy")
 
@@ -26,10 +27,18 @@ async def ready(request: Request) -> Ready:
     pool = getattr(request.app.state, "pool", None)
     if pool is None:
         raise Problem("not-ready", "The workers are starting.", headers={"Retry-After": "2"})
+    store: Store = request.app.state.store
+    if request.app.state.keys_required and store.database is None:
+        raise Problem("not-ready", "Keys cannot be checked: the store is away.", headers={"Retry-After": "5"})
     return Ready(
         status="ready",
         version=version("densityloom"),
         **pool.state(),
-        store=request.app.state.store.told(),
+        store=store.told(),
         libraries={name: version(name) for name in LIBRARIES},
     )
+
+
+# Who watches over a service often asks so; the server sends no body then.
+for _address, _endpoint in (("/live", live), ("/ready", ready)):
+    router.add_api_route(_address, _endpoint, methods=["HEAD"], include_in_schema=False)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Annotated, Any, TypeVar
 
 import orjson
@@ -14,11 +14,12 @@ from service.openapi_sets import keeping, looking
 from service.problems import at
 from service.routes.conditions import is_current
 from service.routes.exchange import GONE, answering, received_body, unless_gone
+from service.schemas.base import PRINTABLE
 from service.schemas.requests import KEEP
-from service.schemas.store import MOST_TAGS, PRINTABLE, Tag
+from service.schemas.store import MOST_TAGS, Tag
 from service.settings import Settings
 from service.store.known import Known
-from service.store.parcel import Parcel, unpack
+from service.store.parcel import unpack
 from service.store.records import Record, Sets
 from service.store.rows import columns_archive
 from service.store.shelf import ID, no_such_set
@@ -48,13 +49,13 @@ def router(pool: Pool, store: Callable[[], Store], known: Known, settings: Setti
         if answer is None:
             return Response(status_code=GONE)
         with answer.spool as packed:
-            parcel = unpack(packed.view())
-        record, new = await run_in_threadpool(_keep, sets, parcel)
-        summary = parcel.summary if new else await _found(sets.summary, record.id)
+            record, new, made = await run_in_threadpool(_keep, sets, packed.view())
+        summary = made if new else await _found(sets.summary, record.id)
         return _whole(record, summary, 201 if new else 200, {"Location": f"/v1/sets/{record.id}"})
 
     @made.get("", response_class=Response, **looking("list"))
     async def listed(
+        request: Request,
         limit: Annotated[int, Query(ge=1, le=MOST_LISTED)] = 50,
         after: Annotated[int | None, Query(ge=0, le=2**62, description="`next` of the part before")] = None,
         search: Annotated[
@@ -62,16 +63,19 @@ def router(pool: Pool, store: Callable[[], Store], known: Known, settings: Setti
         ] = "",
         tag: Annotated[list[Tag] | None, Query(max_length=MOST_TAGS, description="tags that a set has all of")] = None,
     ) -> Response:
+        _only(request, "limit", "after", "search", several=("tag",))
         page = await run_in_threadpool(store().sets.page, limit=limit, after=after, search=search, tags=tag or ())
         document = {"sets": [one.document() for one in page.records], "next": page.after, "total": page.total}
         return Response(orjson.dumps(document), media_type="application/json")
 
     async def one(request: Request, identity: Identity) -> Response:
+        _only(request)
         sets = store().sets
         record = await _found(sets.record, identity)
         return _conditional(request, _whole(record, await _found(sets.summary, identity), 200, {}))
 
     async def columns(request: Request, identity: Identity) -> Response:
+        _only(request)
         content = await _found(store().sets.content, identity)
         if content.kind == "columns":
             data = await run_in_threadpool(columns_archive, content)
@@ -86,7 +90,8 @@ def router(pool: Pool, store: Callable[[], Store], known: Known, settings: Setti
         answering(made, f"/{{identity}}{address}", endpoint, looking(name))
 
     @made.delete("/{identity}", status_code=204, response_class=Response, **looking("delete"))
-    async def delete(identity: Identity) -> Response:
+    async def delete(request: Request, identity: Identity) -> Response:
+        _only(request)
         known.forget(identity)
         await _found(lambda one: store().sets.delete(one) or None, identity)
         known.forget(identity)
@@ -101,10 +106,8 @@ FRESH = {"Cache-Control": "private, no-cache"}
 
 def _labels(request: Request) -> dict[str, Any]:
     """Name and tags from the address."""
+    _only(request, "name", several=("tag",))
     query = request.query_params
-    for name in query:
-        if name not in ("name", "tag"):
-            raise at((name,), "is no parameter of this address", "give name and tag, or put it into the body")
     found: dict[str, Any] = {}
     if "name" in query:
         found["name"] = query["name"]
@@ -113,8 +116,22 @@ def _labels(request: Request) -> dict[str, Any]:
     return found
 
 
-def _keep(sets: Sets, parcel: Parcel) -> tuple[Record, bool]:
-    return sets.keep(parcel.content, parcel.labels, parcel.facts, parcel.summary)
+def _keep(sets: Sets, packed: memoryview) -> tuple[Record, bool, bytes]:
+    """Keep what a worker has packed; also hands back the summary in it."""
+    parcel = unpack(packed)
+    return *sets.keep(parcel.content, parcel.labels, parcel.facts, parcel.summary), parcel.summary
+
+
+def _only(request: Request, *names: str, several: Sequence[str] = ()) -> None:
+    """Refuse parameters that an address does not have, and those that come twice."""
+    seen: set[str] = set()
+    for name, _ in request.query_params.multi_items():
+        if name not in (*names, *several):
+            listed = ", ".join((*names, *several)) or "none"
+            raise at((name,), "is no parameter of this address", f"it has {listed}")
+        if name in seen and name not in several:
+            raise at((name,), "is given twice", "give it once")
+        seen.add(name)
 
 
 async def _found(look: Callable[[str], T | None], identity: str) -> T:

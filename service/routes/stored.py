@@ -8,7 +8,7 @@ from typing import Annotated
 from fastapi import APIRouter, Path, Request, Response
 from starlette.concurrency import run_in_threadpool
 
-from service.answers.asked import Asked, understand
+from service.answers.asked import LONGEST, Asked, understand
 from service.answers.cache import Cache, Kept
 from service.answers.coding import CODINGS, choose_coding, encode
 from service.answers.flights import Flights
@@ -46,9 +46,14 @@ def _endpoint(
     product: str, pool: Pool, store: Callable[[], Store], known: Known, cache: Cache, flights: Flights[Kept]
 ) -> Endpoint:
     async def endpoint(request: Request, identity: Identity) -> Response:
-        asked = understand(product, identity, request.url.query, ",".join(request.headers.getlist("accept")))
         if not ID.fullmatch(identity) or not await known.has(store().sets, identity):
             raise no_such_set(identity)
+        written, accept = request.url.query, ",".join(request.headers.getlist("accept"))
+        if len(written) + len(accept) > LONGEST:
+            # Long enough to hold up others.
+            asked = await run_in_threadpool(understand, product, identity, written, accept)
+        else:
+            asked = understand(product, identity, written, accept)
         held = request.headers.get("if-none-match")
         if held is not None and held.strip() != "*":
             # Known before anything is computed, in any coding that the client may hold it in.
@@ -59,7 +64,7 @@ def _endpoint(
         if answer is None:
 
             async def compute() -> Kept:
-                made = await _computed(pool, asked)
+                made = await _computed(pool, asked, cache.largest)
                 cache.put(asked.key, made)
                 return made
 
@@ -84,12 +89,15 @@ def _headers(tag: str) -> dict[str, str]:
     }
 
 
-async def _computed(pool: Pool, asked: Asked) -> Kept:
+async def _computed(pool: Pool, asked: Asked, most: float) -> Kept:
     with Spool.unnamed() as body:
         body.append(asked.body)
         answer = await pool.run(Job(asked.product, "application/json", body, asked.form))
     with answer.spool as made:
-        return Kept(made.view(), MEDIA_TYPES[asked.form], answer.headers, answer.seconds)
+        view = made.view()
+    # A mapping costs a descriptor for as long as it lives; what may be kept for long is copied out of it.
+    held = memoryview(bytes(view)) if len(view) <= most else view
+    return Kept(held, MEDIA_TYPES[asked.form], answer.headers, answer.seconds)
 
 
 async def _response(request: Request, asked: Asked, answer: Kept, cache: Cache) -> Response:

@@ -13,6 +13,8 @@ class Strict(BaseModel):
     model_config = ConfigDict(extra="forbid", strict=True, allow_inf_nan=False, frozen=True)
 
 
+PRINTABLE = r"^[^\x00-\x1f\x7f]*$"
+"""Texts that people read: no control characters."""
 FARTHEST = 1.0e8
 """Bound of coordinates (cells or Å) and lengths (Å): beyond it a unit has been mistaken."""
 

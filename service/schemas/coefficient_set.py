@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 from pydantic import Field, PrivateAttr
 
 from engine.coefficients import CoefficientSet
-from service.schemas.base import Strict
+from service.schemas.base import PRINTABLE, Strict
 from service.schemas.columns import IndexColumn, NumberColumn, PhaseColumn
 from service.schemas.preparation import PreparationIn, ReflectionsFile, SymmetryIn
 
@@ -50,7 +50,9 @@ class ReflectionSetIn(Strict):
     density: Literal["real", "complex"] = Field(
         "real", description="a real density obeys Friedel's law, and one of each pair suffices"
     )
-    unit: str = Field("arbitrary", min_length=1, max_length=40, description="unit of the density, for the answer")
+    unit: str = Field(
+        "arbitrary", min_length=1, max_length=40, pattern=PRINTABLE, description="unit of the density, for the answer"
+    )
 
 
 class CoefficientSetIn(ReflectionSetIn):

@@ -7,11 +7,10 @@ from typing import Annotated, Literal
 from pydantic import BaseModel, Field
 
 from service.schemas.answers import CoverageOut
-from service.schemas.base import Strict
+from service.schemas.base import PRINTABLE, Strict
 from service.schemas.coefficient_set import CoefficientSetIn
 from service.schemas.summary import SummaryAnswer
 
-PRINTABLE = r"^[^\x00-\x1f\x7f]*$"
 Label = Annotated[str, Field(min_length=1, max_length=200, pattern=PRINTABLE)]
 Tag = Annotated[str, Field(min_length=1, max_length=64, pattern=r"^[^\x00-\x1f\x7f,]*$")]
 MOST_TAGS = 20

@@ -42,11 +42,14 @@ class Content:
 
     @property
     def id(self) -> str:
-        """SHA-256 over names, media types, file names, lengths and bytes, in the order of the names; hexadecimal."""
+        """SHA-256 over names of parts, lengths and bytes, in the order of the names; hexadecimal.
+
+        What a file was called, and as what it was announced, is no part of it: its bytes decide how it is read.
+        """
         total = hashlib.sha256(b"densityloom set 1\n")
         for name in sorted(self.parts):
             part = self.parts[name]
-            total.update(orjson.dumps([name, part.media_type, part.name, len(part.data)]))
+            total.update(orjson.dumps([name, len(part.data)]))
             total.update(hashlib.sha256(part.data).digest())
         return total.hexdigest()
 

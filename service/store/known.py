@@ -19,6 +19,7 @@ class Known:
 
     def __init__(self) -> None:
         self._seen: OrderedDict[str, float] = OrderedDict()
+        self._changes = 0
 
     async def has(self, sets: Sets, identity: str) -> bool:
         """Whether a set is there.
@@ -31,9 +32,13 @@ class Known:
         now = time.monotonic()
         if now - self._seen.get(identity, -SECONDS) < SECONDS:
             return True
+        changes = self._changes
         if not await run_in_threadpool(sets.holds, identity):
             self.forget(identity)
             return False
+        if changes != self._changes:
+            # Something was deleted while the database was asked.
+            return await self.has(sets, identity)
         self._seen[identity] = now
         self._seen.move_to_end(identity)
         if len(self._seen) > MOST:
@@ -42,4 +47,5 @@ class Known:
 
     def forget(self, identity: str) -> None:
         """A set has been deleted."""
+        self._changes += 1
         self._seen.pop(identity, None)

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import asyncio
 import logging
+
+from starlette.concurrency import run_in_threadpool
 
 from service.problems import Problem
 from service.settings import Settings
@@ -12,13 +15,50 @@ from service.store.records import Quota, Sets
 log = logging.getLogger("densityloom.store")
 
 
-class Store:
-    """The sets, or the problem that keeps them away."""
+RETRY_SECONDS = 5.0
+"""Between two tries to open a store that could not be opened."""
 
-    def __init__(self, database: Database | None, quota: Quota, problem: Problem | None = None) -> None:
-        self.database = database
-        self._sets = None if database is None else Sets(database, quota)
-        self._problem = problem
+
+class Store:
+    """The sets; or, as long as the database cannot be opened, the problem that keeps them away.
+
+    Parameters
+    ----------
+    settings : Settings
+    """
+
+    def __init__(self, settings: Settings) -> None:
+        self._settings = settings
+        self._quota = Quota(settings.max_sets, settings.max_store_bytes)
+        self._problem: Problem | None = None
+        self._sets: Sets | None = None
+        self.database: Database | None = None
+
+    def open(self) -> bool:
+        """Open the database; returns whether it is open. One that cannot be used costs the store, not the service.
+
+        Raises
+        ------
+        ValueError
+            The database's URL is none, or a later version of this program wrote the database.
+        """
+        try:
+            self.database = open_database(self._settings.data_dir, self._settings.database_url)
+        except Problem as problem:
+            if self._problem is None:
+                log.error("no sets can be kept: %s", problem.detail)
+            self._problem = problem
+            return False
+        self._sets = Sets(self.database, self._quota)
+        self._problem = None
+        log.info("store: %s", self.database.told)
+        return True
+
+    async def keep_trying(self) -> None:
+        """Open the database as soon as it can be opened: a server may start later than we do."""
+        while self.database is None:
+            await asyncio.sleep(RETRY_SECONDS)
+            await run_in_threadpool(self.open)
 
     @property
     def sets(self) -> Sets:
@@ -27,36 +67,18 @@ class Store:
         Raises
         ------
         Problem
-            503: the store could not be opened at start.
+            503: the store could not be opened yet.
         """
         if self._sets is None:
-            raise self._problem or Problem("store-unavailable", "The service runs without a store.")
+            raise self._problem or Problem("store-unavailable", "The store is not open yet.")
         return self._sets
 
     def told(self) -> str:
-        """What it is, in words, for the health answer and the log."""
+        """What it is, in words, for the health answer."""
         if self.database is None:
-            return f"not available: {self._problem.detail if self._problem else 'there is none'}"
+            return f"not available: {self._problem.detail if self._problem else 'it is not open yet'}"
         return self.database.told
 
     def close(self) -> None:
         if self.database is not None:
             self.database.close()
-
-
-def open_store(settings: Settings) -> Store:
-    """Open the store of the settings; a folder that cannot be used costs the store, not the service.
-
-    Raises
-    ------
-    ValueError
-        The database's URL is none, or a later version of this program wrote the database.
-    """
-    quota = Quota(settings.max_sets, settings.max_store_bytes)
-    try:
-        made = Store(open_database(settings.data_dir, settings.database_url), quota)
-    except Problem as problem:
-        log.error("no sets can be kept: %s", problem.detail)
-        return Store(None, quota, problem)
-    log.info("store: %s", made.told())
-    return made

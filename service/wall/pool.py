@@ -26,6 +26,9 @@ log = logging.getLogger("densityloom.pool")
 START_SECONDS = 60.0
 """A worker that has not reported by then is broken."""
 
+GRACE_SECONDS = 1.0
+"""What nobody waits for any more may go on for so long."""
+
 
 @dataclass(frozen=True, slots=True)
 class Job:
@@ -82,7 +85,7 @@ class Pool:
         return {"workers": len(self._workers), "busy": self._busy, "waiting": self._waiting}
 
     async def run(self, job: Job) -> Answer:
-        """Have a job computed; if the caller is cancelled, so is the computation.
+        """Have a job computed; if the caller is cancelled, the computation ends soon too.
 
         Raises
         ------
@@ -103,7 +106,8 @@ class Pool:
         finally:
             self._waiting -= 1
         self._busy += 1
-        work = asyncio.get_running_loop().run_in_executor(self._threads, worker.call, job, CURRENT_ID.get())
+        loop = asyncio.get_running_loop()
+        work = loop.run_in_executor(self._threads, worker.call, job, CURRENT_ID.get())
         try:
             answer = await asyncio.shield(work)
             self.computed += 1
@@ -111,7 +115,8 @@ class Pool:
             self._seconds += 0.2 * (answer.seconds - self._seconds)
             return answer
         except asyncio.CancelledError:
-            worker.kill()
+            # Most computations end sooner than a new process starts; a long one is cut short.
+            loop.call_later(GRACE_SECONDS, lambda: None if work.done() else worker.kill())
             work.add_done_callback(_discard)
             raise
         finally:
@@ -135,6 +140,7 @@ class _Worker:
         self._settings = settings
         self._process: subprocess.Popen[bytes] | None = None
         self._channel: socket.socket | None = None
+        self._killed = False
 
     def start(self) -> None:
         """Start the process and wait until it is ready."""
@@ -164,7 +170,8 @@ class _Worker:
 
     def call(self, job: Job, request_id: str | None = None) -> Answer:
         """Have one job computed, in a new process if the last one has died; `request_id` is for its log."""
-        if self._process is None or self._process.poll() is not None or self._channel is None:
+        # One that was killed a moment ago may still look alive.
+        if self._killed or self._process is None or self._process.poll() is not None or self._channel is None:
             self.end()
             self.start()
         process, channel = self._process, self._channel
@@ -190,8 +197,10 @@ class _Worker:
                 f"The computation took longer than the limit of {limit:g} s. Ask for fewer samples or coefficients.",
             ) from fault
         except (wire.Closed, OSError) as fault:
+            wanted = self._killed
             code = self.end()
-            log.error("a worker died with code %s, %.1f s before its deadline", code, deadline - time.monotonic())
+            level = logging.DEBUG if wanted else logging.ERROR
+            log.log(level, "a worker died with code %s, %.1f s before its deadline", code, deadline - time.monotonic())
             raise Problem(
                 "internal", "The process that computed this request died; others are not affected."
             ) from fault
@@ -203,6 +212,7 @@ class _Worker:
 
     def kill(self) -> None:
         """End the process from any thread; a call under way fails."""
+        self._killed = True
         if self._process is not None:
             self._process.kill()
 
@@ -216,4 +226,5 @@ class _Worker:
         self._process.kill()
         code = self._process.wait()
         self._process = None
+        self._killed = False
         return code

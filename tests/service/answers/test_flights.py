@@ -106,3 +106,29 @@ def test_who_comes_after_the_last_has_left_starts_anew():
         assert await flights.share("k", compute) == 2
 
     asyncio.run(scenario())
+
+
+def test_the_end_of_an_old_flight_is_not_that_of_a_new_one():
+    async def scenario():
+        flights: Flights[int] = Flights()
+        begun = []
+
+        async def compute():
+            begun.append(1)
+            try:
+                await asyncio.sleep(0.03)
+            except asyncio.CancelledError:
+                await asyncio.sleep(0.01)
+                raise
+            return len(begun)
+
+        gone = asyncio.ensure_future(flights.share("k", compute))
+        await asyncio.sleep(0.005)
+        gone.cancel()
+        await asyncio.sleep(0)
+        second = asyncio.ensure_future(flights.share("k", compute))
+        await asyncio.sleep(0.02)
+        third = asyncio.ensure_future(flights.share("k", compute))
+        assert await asyncio.gather(second, third) == [2, 2]
+
+    asyncio.run(scenario())

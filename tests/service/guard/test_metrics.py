@@ -86,7 +86,10 @@ def test_the_process_is_described_and_each_has_its_own():
             assert "of this server process" in line
 
 
-@pytest.mark.parametrize("accept", ["application/openmetrics-text; version=1.0.0", "text/plain", "*/*"])
+@pytest.mark.parametrize(
+    "accept",
+    ["application/openmetrics-text; version=1.0.0", "application/openmetrics-text;version=abc", "text/plain", "*/*"],
+)
 def test_forms(accept):
     body, media_type = Metrics().expose(accept)
     assert media_type.split(";")[0] in ("text/plain", "application/openmetrics-text")

@@ -74,16 +74,17 @@ def test_answers_count_until_they_are_out():
         going = asyncio.Event()
 
         async def slow():
-            yield b"x" * 600
+            yield b"x" * 100
             await going.wait()
-            yield b"x" * 600
+            yield b"x" * 1100
 
         async def answering(scope, receive, send):
             await StreamingResponse(slow(), headers={"Content-Length": "1200"})(scope, receive, send)
 
         first = asyncio.create_task(ask(layer(answering, held)))
         await asyncio.sleep(0.05)
-        assert held.bytes == 1200
+        # What the connection has taken is held no more.
+        assert held.bytes == 1100
         # New work waits until there is room; what watches over the service does not.
         assert (await ask(layer(in_flight=held))).status == 503
         assert (await ask(layer(in_flight=held), path="/health/ready")).status == 200
@@ -140,3 +141,15 @@ def test_waiting_for_a_client_to_leave_has_no_end():
         await send({"type": "http.response.body", "body": b"waited"})
 
     assert asked(layer(begun, body_seconds=0.1), 30, b"abc", method="POST").body == b"waited"
+
+
+def test_an_answer_to_head_has_no_bytes():
+    held = InFlight(1000)
+    seen = []
+
+    async def answering(scope, receive, send):
+        await Response(b"", headers={"Content-Length": "900"})(scope, receive, send)
+        seen.append(held.bytes)
+
+    assert asked(layer(answering, held), method="HEAD").status == 200
+    assert seen == [0]

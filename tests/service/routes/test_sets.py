@@ -193,6 +193,48 @@ def test_the_example_is_kept(client, kept):
     KeptOut.model_validate(kept(EXAMPLES["keep"]).json())
 
 
+@pytest.mark.parametrize(
+    ("address", "pointer"),
+    [
+        ("/v1/sets?tags=film", "/tags"),
+        ("/v1/sets?limit=3&limit=4", "/limit"),
+        ("/v1/sets/{id}?columns=true", "/columns"),
+        ("/v1/sets/{id}/columns?format=csv", "/format"),
+    ],
+)
+def test_parameters_that_an_address_does_not_have_are_named(client, kept, address, pointer):
+    identity = kept().json()["id"]
+    assert_problem(client.get(address.format(id=identity)), 422, pointer)
+    twice = client.post("/v1/sets?name=a&name=b", json={"set": bodies.FILM})
+    assert_problem(twice, 422, "/name")
+
+
+@pytest.mark.parametrize(
+    ("file", "media_type"), [("a\x00b.csv", "text/csv"), ("a.csv", "text/\xff"), ("a.csv", "a\x00b"), ("a.csv", "text")]
+)
+def test_a_file_that_could_not_be_handed_back_is_not_kept(client, file, media_type):
+    told = f'name="reflections"; filename="{file}"\r\nContent-Type: {media_type}'
+    head = f"--frontier\r\nContent-Disposition: form-data; {told}\r\n\r\n"
+    body = head.encode("latin-1") + TABLE + b"\r\n--frontier--\r\n"
+    headers = {"Content-Type": "multipart/form-data; boundary=frontier"}
+    assert_problem(client.post("/v1/sets", content=body, headers=headers), 400)
+
+
+def test_a_unit_that_does_not_print_is_refused(client):
+    answer = client.post("/v1/sets", json={"set": {**bodies.FILM, "unit": "e\x00"}})
+    assert_problem(answer, 422, "/set/unit")
+
+
+def test_a_file_is_the_same_whatever_it_is_called(client):
+    labels = json.dumps({"set": {"values": "structure_factor", "cell": bodies.TRICLINIC}})
+    ids = set()
+    for name, media_type in (("a.csv", "text/csv"), ("b.txt", "text/plain")):
+        files = {"request": ("", labels, "application/json"), "reflections": (name, TABLE, media_type)}
+        ids.add(client.post("/v1/sets", files=files).json()["id"])
+    assert len(ids) == 1
+    client.delete(f"/v1/sets/{ids.pop()}")
+
+
 def test_quotas_are_told(client):
     with alone(compute_workers=1, max_sets=1) as served, httpx.Client(base_url=served.address, timeout=60) as small:
         assert small.post("/v1/sets", json={"set": bodies.FILM}).status_code == 201

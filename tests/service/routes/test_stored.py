@@ -9,6 +9,7 @@ import threading
 
 import httpx
 import numpy as np
+import psutil
 import pytest
 import zstandard
 
@@ -290,3 +291,27 @@ def test_clients_of_one_set_do_not_disturb_each_other(client, service, identitie
     for thread in threads:
         thread.join(60)
     assert not wrong
+
+
+def test_answers_in_memory_hold_no_descriptors(client, service, identities):
+    process = psutil.Process(service.process.pid)
+    get(client, identities, "profile", format="f32")
+    before = process.num_fds()
+    for number in range(60):
+        positions = {"positions": f"[[{number / 100}]]"}
+        assert client.get(address(identities, "points"), params=positions).status_code == 200
+    assert process.num_fds() < before + 20
+
+
+def test_what_is_refused_without_a_phase_is_refused_with_one_that_is_not_trusted(client):
+    body = {**bodies.FILM, "merit": [0.9, 0.2, 0.8, 0.99]}
+    where = {"from": [0], "to": [1], "samples": 7, "missing_phase": "refuse"}
+    assert client.post("/v1/profile", json={"set": body, **where}).status_code == 200
+    answer = client.post("/v1/profile", json={"set": body, **where, "trust": {"least_merit": 0.5}})
+    assert_problem(answer, 422, "/missing_phase")
+
+
+def test_a_long_query_is_answered_too(client, identities):
+    positions = json.dumps([[round(0.0001 * number, 4)] for number in range(1000)])
+    answer = client.get(address(identities, "points"), params={"positions": positions})
+    assert answer.json()["shape"] == [1000]

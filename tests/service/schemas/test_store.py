@@ -5,7 +5,8 @@ import re
 import pytest
 from pydantic import ValidationError
 
-from service.schemas.store import MOST_TAGS, PRINTABLE, KeepIn, RecordOut
+from service.schemas.base import PRINTABLE
+from service.schemas.store import MOST_TAGS, KeepIn, RecordOut
 from service.store.records import Facts
 from service.store.shelf import ID
 from tests.service import bodies

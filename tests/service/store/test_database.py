@@ -7,6 +7,7 @@ import pytest
 from sqlalchemy import insert, select
 
 from service.problems import Problem
+from service.store import database as module
 from service.store.database import FILE, attach_database, open_database
 from service.store.tables import KEYS
 
@@ -50,6 +51,7 @@ def test_a_folder_that_cannot_be_made_is_a_problem(tmp_path):
         open_database(tmp_path / "file" / "data", None)
     assert caught.value.status == 503
     assert "DENSITYLOOM_DATA_DIR" in caught.value.detail
+    assert str(tmp_path) not in caught.value.detail
 
 
 @pytest.fixture
@@ -110,3 +112,15 @@ def test_a_server_that_does_not_answer_is_a_problem(tmp_path):
         open_database(tmp_path, "postgresql://nobody@127.0.0.1:9/none")
     assert caught.value.status == 503
     assert caught.value.headers["Retry-After"]
+
+
+def test_more_questions_than_connections_are_a_problem_and_no_fault(address, monkeypatch):
+    if address[1] is None:
+        pytest.skip("every thread has its connection to the embedded database")
+    monkeypatch.setattr(module, "PATIENCE", 1)
+    monkeypatch.setattr(module, "CONNECTIONS", 1)
+    database = attach_database(*address)
+    with database.reading(), pytest.raises(Problem) as caught, database.reading():
+        pass
+    assert caught.value.status == 503
+    database.close()

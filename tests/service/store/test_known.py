@@ -61,3 +61,23 @@ def test_no_more_than_so_many_are_remembered(sets, monkeypatch):
         assert len(known._seen) == 2
 
     asyncio.run(scenario())
+
+
+def test_a_deletion_while_it_is_asked_is_not_missed(sets, monkeypatch):
+    record, _ = keep(sets)
+
+    async def scenario():
+        known = Known()
+        original = sets.holds
+
+        def slow(identity):
+            found = original(identity)
+            if found:
+                sets.delete(identity)
+                known.forget(identity)
+            return found
+
+        monkeypatch.setattr(sets, "holds", slow)
+        assert not await known.has(sets, record.id)
+
+    asyncio.run(scenario())

@@ -5,6 +5,7 @@ import json
 import subprocess
 import sys
 import time
+from contextlib import suppress
 
 import pytest
 
@@ -146,3 +147,44 @@ def test_worker_that_ends_before_it_reads_its_settings(monkeypatch):
         worker.start()
     assert worker._process is None
     assert worker._channel is None
+
+
+def test_a_client_that_leaves_at_the_end_harms_nobody():
+    """Its computation is over, or nearly so; the next client's is not cut short for it."""
+
+    async def scenario(pool):
+        for wait in (0.0, 0.002, 0.005, 0.01, 0.02, 0.03):
+            leaving = asyncio.create_task(pool.run(job(*QUICK)))
+            await asyncio.sleep(wait)
+            leaving.cancel()
+            with suppress(asyncio.CancelledError):
+                (await leaving).spool.close()
+            (await pool.run(job(*QUICK))).spool.close()
+
+    with_pool(scenario)
+
+
+def test_a_worker_that_was_killed_is_not_trusted_to_be_alive():
+    async def scenario(pool):
+        (await pool.run(job(*QUICK))).spool.close()
+        worker = pool._workers[0]
+        worker.kill()
+        (await pool.run(job(*QUICK))).spool.close()
+        assert not worker._killed
+
+    with_pool(scenario, Settings(compute_workers=1))
+
+
+def test_long_work_that_nobody_waits_for_is_cut_short(monkeypatch):
+    monkeypatch.setattr(module, "GRACE_SECONDS", 0.05)
+
+    async def scenario(pool):
+        leaving = asyncio.create_task(pool.run(job(*HEAVY)))
+        await asyncio.sleep(0.1)
+        before = pool._workers[0]._process.pid
+        leaving.cancel()
+        await asyncio.sleep(0.4)
+        (await pool.run(job(*QUICK))).spool.close()
+        assert pool._workers[0]._process.pid != before
+
+    with_pool(scenario, Settings(**{**bodies.HEAVY_LIMITS, "compute_workers": 1}, request_seconds=30))
