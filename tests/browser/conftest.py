@@ -88,13 +88,13 @@ class Look:
         return dict(httpx.QueryParams(self.page.evaluate("location.hash.slice(1)")))
 
 
-@pytest.fixture(scope="session")
+@pytest.fixture(scope="package")
 def served(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Served]:
     with alone(data_dir=tmp_path_factory.mktemp("page"), compute_workers=2, compute_threads=1) as made:
         yield made
 
 
-@pytest.fixture(scope="session")
+@pytest.fixture(scope="package")
 def sets(served: Served) -> dict[str, str]:
     """Ids of the demonstrations, kept in the service: stack, planar, crystal."""
     with httpx.Client(base_url=served.address, timeout=60) as client:
@@ -104,7 +104,8 @@ def sets(served: Served) -> dict[str, str]:
         }
 
 
-@pytest.fixture(scope="session")
+# Of this package alone: as long as it lives no other event loop can be run in this thread.
+@pytest.fixture(scope="package")
 def browser() -> Iterator[Any]:
     try:
         from playwright.sync_api import sync_playwright

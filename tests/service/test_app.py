@@ -37,7 +37,7 @@ def test_long_address_is_not_echoed(client):
 
 @pytest.mark.parametrize(
     ("method", "address", "allowed"),
-    [("GET", "/v1/profile", "POST"), ("DELETE", "/v1/grid", "POST"), ("POST", "/health/live", "GET")],
+    [("GET", "/v1/profile", "POST"), ("DELETE", "/v1/grid", "POST"), ("POST", "/health/live", "GET, HEAD")],
 )
 def test_unknown_method(client, method, address, allowed):
     answer = client.request(method, address)

@@ -25,6 +25,7 @@ from service.problems import (
 )
 from service.settings import Settings
 from service.spool import Spool
+from service.store.shelf import Shelf
 from service.wall.worker import _serve
 from tests.service import bodies
 
@@ -49,7 +50,8 @@ def test_every_fault_of_the_engine_is_mapped(monkeypatch, kind):
     monkeypatch.setattr(pipeline, "prepare", fails)
     with Spool.unnamed() as body:
         body.append(json.dumps(bodies.PROFILE).encode())
-        message, made = _serve({"product": "profile", "content_type": JSON, "form": "npy"}, body, Settings())
+        asked = {"product": "profile", "content_type": JSON, "form": "npy", "members": {}}
+        message, made = _serve(asked, body, Shelf(Settings()), Settings())
     made.close()
     problem = Problem.from_message(message["problem"])
     assert (problem.status, problem.kind) == expected(kind)

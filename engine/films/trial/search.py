@@ -12,7 +12,6 @@ from dataclasses import dataclass
 
 import numpy as np
 from scipy import optimize
-from scipy.stats import qmc
 
 from engine.arrays import FloatArray
 from engine.films.orders import FilmOrders
@@ -56,6 +55,9 @@ def places(names: tuple[str, ...], begin: FloatArray, low: FloatArray, high: Flo
     room = np.where(np.array(spread) > 0, spread, 1.0)
     lower = np.where(np.isfinite(low) & np.isfinite(high), low, np.maximum(low, begin - room))
     upper = np.where(np.isfinite(low) & np.isfinite(high), high, np.minimum(high, begin + room))
+    # Half a second of every process's start is too much for what is seldom wanted.
+    from scipy.stats import qmc
+
     shares = qmc.Halton(len(names), scramble=False).random(count)
     made = lower + shares * (upper - lower)
     made[0] = begin

@@ -33,7 +33,9 @@ def test_app_whose_address_is_not_known_asks_for_keys(setting, required):
     answer = asked(create_app(settings), path="/v1/none")
     # Without a store, as before the start, nothing can be checked and nothing opens.
     assert answer.status == (401 if required else 404)
-    with_key = asked(create_app(settings), path="/v1/none", headers={"Authorization": "Bearer x"})
+    with_key = asked(
+        create_app(settings), path="/v1/none", headers={"Authorization": f"Bearer dl_{'0' * 16}_{'0' * 64}"}
+    )
     assert with_key.status == (503 if required else 404)
 
 
