@@ -67,4 +67,4 @@ def test_python_samples_run(capsys):
 def test_readme_names_the_test_command_for_ci():
     match = re.search(r"<!-- test command -->\n```sh\n(.+)\n```", README)
     assert match is not None
-    assert match[1].endswith("pytest -q")
+    assert "pytest -q" in match[1]

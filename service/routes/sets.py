@@ -61,10 +61,13 @@ def router(pool: Pool, store: Callable[[], Store], known: Known, settings: Setti
         search: Annotated[
             str, Query(max_length=200, pattern=PRINTABLE, description="text in name, file name or id")
         ] = "",
-        tag: Annotated[list[Tag] | None, Query(max_length=MOST_TAGS, description="tags that a set has all of")] = None,
+        *,
+        tag: Annotated[
+            list[Tag], Query(default_factory=list, max_length=MOST_TAGS, description="tags that a set has all of")
+        ],
     ) -> Response:
         _only(request, "limit", "after", "search", several=("tag",))
-        page = await run_in_threadpool(store().sets.page, limit=limit, after=after, search=search, tags=tag or ())
+        page = await run_in_threadpool(store().sets.page, limit=limit, after=after, search=search, tags=tag)
         document = {"sets": [one.document() for one in page.records], "next": page.after, "total": page.total}
         return Response(orjson.dumps(document), media_type="application/json")
 
