@@ -53,7 +53,10 @@ SUMMARIES = {
 DESCRIPTION = """Send Fourier coefficients, get the density they stand for, n(r) = Σ n_G exp(iG·r), on a line, a
 plane, the whole cell, a box or at free points.
 
-* Answers are JSON, NumPy `.npy` or `.npz`, and CSV for profiles and points: by `Accept` or `?format=`.
+* Answers are JSON, NumPy `.npy` or `.npz`, CSV for profiles and points, pictures (`png`, `svg`), bare samples for a
+  browser (`f32`, `u16`, `u8`), and for a surface a mesh (`glb`): by `Accept` or `?format=`.
+* Sets can be kept (`POST /v1/sets`): then every product and analysis of one can be had by GET, with the members of a
+  request as parameters, and cached; in bodies `set_id` stands for `set`.
 * Bodies are JSON; or a form (`multipart/form-data`) with the parts `request` (JSON without columns) and
   `columns` (CSV or `.npz` with the columns of the set) or `reflections` (a laboratory's CIF, delimited text or
   `.npz`, prepared as `set.preparation` says).
