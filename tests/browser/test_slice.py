@@ -59,7 +59,6 @@ def test_pointer_reads_and_marks_the_colour_bar(look, sets):
 
 def test_slider_shows_the_next_picture(look, sets):
     page = look.open(f"set={sets['crystal']}&view=slice")
-    before = page.inner_text("h1")
     times = []
     for step in range(1, 21):
         page.evaluate("performance.clearMeasures('slice-shown')")
@@ -68,8 +67,7 @@ def test_slider_shows_the_next_picture(look, sets):
         look.until("performance.getEntriesByName('slice-shown').length > 0")
         times.append(page.evaluate("performance.getEntriesByName('slice-shown').at(-1).duration"))
     print(f"slider to the next picture: median {statistics.median(times):.0f} ms, longest {max(times):.0f} ms")
-    look.until("(before) => document.querySelector('h1').textContent !== before", arg=before)
-    assert "0.9 of c" in page.inner_text("h1")
+    look.until("document.querySelector('h1').textContent.includes('0.9 of c')")
     look.until("location.hash.includes('height=0.9')")
 
 
