@@ -11,6 +11,9 @@ from engine.coefficients import CoefficientSet
 from engine.errors import InputError
 from engine.lattice import Lattice
 from engine.phases import coefficient_set as coefficients_of
+from engine.preparation import Prepared
+from engine.readers import ReadTable
+from engine.readers.table import LeftOut
 from engine.reflections import Reflections
 from engine.symmetry import Group, expand
 from engine.symmetry.invariance import related
@@ -48,13 +51,23 @@ def one_set(request: SetRequestIn, given: CoefficientSetIn, *, max_coefficients:
     return trusted
 
 
-def whole_set(given: CoefficientSetIn, missing: MissingPhase, *, max_coefficients: int) -> CoefficientSet:
-    """A set expanded by its symmetry, not yet cut; raises as `one_set`. A stored one is interpreted once."""
+def whole_set(
+    given: CoefficientSetIn, missing: MissingPhase, *, max_coefficients: int, file: Prepared | None = None
+) -> CoefficientSet:
+    """A set expanded by its symmetry, not yet cut; raises as `one_set`. A stored one is interpreted once.
+
+    Parameters
+    ----------
+    file : Prepared, optional
+        What `prepared_file` has made of its file of reflections, where the caller has it already.
+    """
     stored = given if isinstance(given, StoredSetIn) else None
     if stored is not None and (kept := stored.kept(missing)) is not None:
         return kept
-    read = _of_columns if given.reflections is None else _of_file
-    made = read(given, missing, max_coefficients)
+    if given.reflections is None:
+        made = _of_columns(given, missing, max_coefficients)
+    else:
+        made = _of_file(given, missing, file or prepared_file(given, max_coefficients=max_coefficients)[1])
     largest = max(float(np.abs(column).max(initial=0.0)) for column in (made.values, made.sigma) if column is not None)
     if not largest <= LARGEST:
         raise at(
@@ -92,7 +105,10 @@ def lattice_of(cell: Cell) -> Lattice:
     )
 
 
-def _of_file(given: CoefficientSetIn, missing_phase: MissingPhase, max_coefficients: int) -> CoefficientSet:
+def prepared_file(
+    given: CoefficientSetIn, *, max_coefficients: int
+) -> tuple[tuple[ReadTable, tuple[LeftOut, ...]], Prepared]:
+    """The file of reflections of a set, read and prepared; returns and raises as `interpret_file.prepared`."""
     for name in COLUMN_NAMES:
         if getattr(given, name) is not None:
             raise at(("set", name), "is given beside a file of reflections", "leave it out, or send no file")
@@ -103,7 +119,10 @@ def _of_file(given: CoefficientSetIn, missing_phase: MissingPhase, max_coefficie
     if given.scale_sigma:
         raise at(("set", "scale_sigma"), "is given beside a file of reflections", "the scale found there has its own")
     lattice = None if given.cell is None else lattice_of(given.cell)
-    _, made = prepared(given, lattice, max_rows=max_coefficients)
+    return prepared(given, lattice, max_rows=max_coefficients)
+
+
+def _of_file(given: CoefficientSetIn, missing_phase: MissingPhase, made: Prepared) -> CoefficientSet:
     with located("set"):
         coefficients = made.coefficients(unit=given.unit)
     if missing_phase == "refuse" and coefficients.unphased:

@@ -10,12 +10,11 @@ import orjson
 from engine.coefficients import CoefficientSet
 from engine.lattice import Lattice
 from engine.preparation import summarize_set
-from engine.resolution.coverage import coverage
-from service import interpret_file, interpret_set
+from engine.resolution.coverage import Coverage, coverage
+from service import interpret_set
 from service.encoders.describe import described_coverage
 from service.encoders.summary import summary_document
 from service.problems import located
-from service.schemas.coefficient_set import CoefficientSetIn
 from service.schemas.store import KeepIn
 from service.settings import Settings
 from service.store.content import Content, content_of
@@ -36,8 +35,15 @@ def parcel(request: KeepIn, settings: Settings) -> Parcel:
     """
     given = request.set
     content = content_of(given)
-    made = interpret_set.whole_set(given, "omit", max_coefficients=settings.max_coefficients)
-    inspection = None if given.reflections is None else _inspection(given, settings)
+    most = settings.max_coefficients
+    if given.reflections is None:
+        made = interpret_set.whole_set(given, "omit", max_coefficients=most)
+        inspection = None
+    else:
+        (table, left), file = interpret_set.prepared_file(given, max_coefficients=most)
+        made = interpret_set.whole_set(given, "omit", max_coefficients=most, file=file)
+        with located("set", "reflections"):
+            inspection = summary_document(table, left, summarize_set(file))
     limits = made.resolution()
     facts = Facts(
         kind=content.kind,
@@ -51,13 +57,6 @@ def parcel(request: KeepIn, settings: Settings) -> Parcel:
     )
     labels = Labels(name=request.name or _name(content, made.lattice), tags=tuple(request.tags))
     return Parcel(content, labels, facts, orjson.dumps(_summary(made, facts, inspection)))
-
-
-def _inspection(given: CoefficientSetIn, settings: Settings) -> dict[str, Any]:
-    lattice = None if given.cell is None else interpret_set.lattice_of(given.cell)
-    (table, left), prepared = interpret_file.prepared(given, lattice, max_rows=settings.max_coefficients)
-    with located("set", "reflections"):
-        return summary_document(table, left, summarize_set(prepared))
 
 
 def _name(content: Content, lattice: Lattice) -> str:
@@ -97,7 +96,10 @@ def _summary(made: CoefficientSet, facts: Facts, inspection: dict[str, Any] | No
         "coverage": None if covered is None else described_coverage(covered),
         "columns": [name for name, column in columns.items() if column is not None],
         "history": list(made.history),
-        "warnings": [*_warnings(made, inspection is not None), *([] if inspection is None else inspection["warnings"])],
+        "warnings": [
+            *_warnings(made, covered, inspection is not None),
+            *([] if inspection is None else inspection["warnings"]),
+        ],
         "inspection": inspection,
     }
 
@@ -108,7 +110,7 @@ def _angles(lattice: Lattice) -> list[float]:
     return [float(np.degrees(np.arccos(np.clip(unit[i] @ unit[j], -1, 1)))) for i, j in pairs]
 
 
-def _warnings(made: CoefficientSet, inspected: bool) -> list[str]:
+def _warnings(made: CoefficientSet, covered: Coverage | None, inspected: bool) -> list[str]:
     """What a reader must know before looking at a density of the set."""
     found = []
     others = made.indices.any(axis=1)
@@ -124,7 +126,6 @@ def _warnings(made: CoefficientSet, inspected: bool) -> list[str]:
         found.append("The set has no standard uncertainties: no error can be given for its densities.")
     elif made.phase_sigma is None and made.merit is None:
         found.append("Phases are taken as exact: the set has neither their uncertainties nor figures of merit.")
-    covered = coverage(made)
     if covered is not None and covered.fraction < SPARSE:
         found.append(
             f"Only {covered.present} of the {covered.possible} terms possible down to {covered.d_min:.3g} Å "
