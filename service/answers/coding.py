@@ -46,6 +46,11 @@ def _weight(item: str) -> tuple[str, float]:
         return name.strip(), 0.0
 
 
+def entity_tag(name: str, coding: str | None) -> str:
+    """A strong entity tag, which differs by the coding (RFC 9110 §8.8.3)."""
+    return f'"{name}"' if coding is None else f'"{name}-{coding}"'
+
+
 def encode(body: memoryview, coding: str) -> bytes:
     """The body in a coding; the same bytes each time."""
     if coding == "zstd":

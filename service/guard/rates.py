@@ -49,11 +49,6 @@ class Rates:
             raise self._refusal(tokens, told)
         self._put(client, tokens - 1)
 
-    def check(self, client: str, told: str) -> None:
-        """Refuse as `take` does, but count nothing."""
-        if self._per_minute and (tokens := self._tokens(client)) < 1:
-            raise self._refusal(tokens, told)
-
     def _tokens(self, client: str) -> float:
         tokens, then = self._buckets.get(client, (float(self._per_minute), 0.0))
         return min(float(self._per_minute), tokens + (self._clock() - then) * self._per_minute / 60)

@@ -10,7 +10,7 @@ from pathlib import Path
 from fastapi import APIRouter, Request, Response
 from starlette.concurrency import run_in_threadpool
 
-from service.answers.coding import choose_coding, encode
+from service.answers.coding import CODINGS, choose_coding, encode, entity_tag
 from service.problems import Problem
 from service.routes.conditions import is_current
 from service.routes.exchange import answering
@@ -39,7 +39,6 @@ HEADERS = {
     "Cache-Control": "no-cache",
     "Vary": "Accept-Encoding",
 }
-CODINGS = (None, "zstd", "gzip")
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,9 +82,9 @@ async def _answer(request: Request, path: Path) -> Response:
     media_type = MEDIA_TYPES[path.suffix]
     coding = choose_coding(",".join(request.headers.getlist("accept-encoding")), media_type, status.st_size)
     made = await run_in_threadpool(_asset, path, status.st_mtime_ns, coding)
-    headers = {**HEADERS, "ETag": f'"{made.tag}"' if coding is None else f'"{made.tag}-{coding}"'}
+    headers = {**HEADERS, "ETag": entity_tag(made.tag, coding)}
     held = request.headers.get("if-none-match")
-    if any(is_current(held, f'"{made.tag}"' if one is None else f'"{made.tag}-{one}"') for one in CODINGS):
+    if any(is_current(held, entity_tag(made.tag, one)) for one in (None, *CODINGS)):
         return Response(status_code=304, headers=headers)
     if coding is not None:
         headers["Content-Encoding"] = coding

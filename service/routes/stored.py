@@ -10,7 +10,7 @@ from starlette.concurrency import run_in_threadpool
 
 from service.answers.asked import LONGEST, Asked, understand
 from service.answers.cache import Cache, Kept
-from service.answers.coding import CODINGS, choose_coding, encode
+from service.answers.coding import CODINGS, choose_coding, encode, entity_tag
 from service.answers.flights import Flights
 from service.encoders.negotiation import MEDIA_TYPES
 from service.openapi_sets import stored_operation
@@ -58,7 +58,7 @@ def _endpoint(
         if held is not None and held.strip() != "*":
             # Known before anything is computed, in any coding that the client may hold it in.
             for coding in (None, *CODINGS):
-                if is_current(held, tag := _tag(asked.key, coding)):
+                if is_current(held, tag := entity_tag(asked.key, coding)):
                     return Response(status_code=304, headers=_headers(tag))
         answer = cache.get(asked.key)
         if answer is None:
@@ -74,11 +74,6 @@ def _endpoint(
         return await _response(request, asked, answer, cache)
 
     return endpoint
-
-
-def _tag(key: str, coding: str | None) -> str:
-    """A strong entity tag, which differs by the coding."""
-    return f'"{key}"' if coding is None else f'"{key}-{coding}"'
 
 
 def _headers(tag: str) -> dict[str, str]:
@@ -106,7 +101,7 @@ async def _response(request: Request, asked: Asked, answer: Kept, cache: Cache) 
     view = answer.body
     headers = {
         **answer.headers,
-        **_headers(_tag(asked.key, coding)),
+        **_headers(entity_tag(asked.key, coding)),
         "Server-Timing": f"compute;dur={1000 * answer.seconds:.1f}",
         "Content-Disposition": f'inline; filename="{asked.product}.{asked.form}"',
     }

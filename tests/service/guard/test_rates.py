@@ -59,15 +59,6 @@ def test_refusal_says_when():
     rates.take("a")
 
 
-def test_checking_counts_nothing():
-    rates = Rates(1, Clock())
-    for _ in range(5):
-        rates.check("a", "a")
-    rates.take("a")
-    with pytest.raises(Problem):
-        rates.check("a", "a")
-
-
 def test_no_limit():
     assert taken(Rates(0, Clock()), "a", 1000) == 1000
 
